@@ -1,0 +1,1 @@
+"""The experiment: contour, stream, coefficients, integration; nothing of probability."""

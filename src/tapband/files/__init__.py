@@ -1,0 +1,1 @@
+"""Reading campaigns and writing results."""

@@ -1,0 +1,1 @@
+"""What both sides of the program share: errors, sources, campaigns, symbols."""

@@ -1,0 +1,1 @@
+"""Distributions, propagation and coverage; nothing of pressures."""

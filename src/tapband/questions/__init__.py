@@ -1,0 +1,1 @@
+"""Answers to questions put to a reduced campaign."""
