@@ -13,6 +13,7 @@ from typing import Literal
 import numpy as np
 from numpy.typing import NDArray
 
+from tapband.nouns.plan import Plan
 from tapband.nouns.source import Source
 
 Array = NDArray[np.float64]
@@ -151,8 +152,7 @@ class Campaign:
     reduction: Reduction
     intervals: Intervals
     sources: tuple[Source, ...]
-    plan: Mapping[str, object] = field(default_factory=dict)
-    """polar, limit, forecast, target, slot, layout, wiring as checked tables, SI, angles in radians."""
+    plan: Plan = Plan()
     warnings: tuple[str, ...] = ()
     inputs: Mapping[str, str] = field(default_factory=dict)
     """SHA-256 of each file read, by its path relative to the campaign's folder."""

@@ -7,7 +7,6 @@ from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
-from math import inf
 from typing import Protocol
 
 import numpy as np
@@ -82,5 +81,3 @@ class Problem(Protocol):
         Σ_k(∂y/∂ξ_k)² it adds, (Pb, T, m), exact for the outputs marked affine."""
         ...
 
-
-INFINITE = inf
