@@ -32,8 +32,7 @@ class Inputs:
 
     ``shift`` (…, n) how far each tap sits along the contour from its nominal place; ``extra`` (…, n) added to
     Cp; ``length`` relative error of the chord; ``edge_common`` and ``edge_loading`` added to the closing
-    values; ``spacing`` (…, 3) and ``rule`` the variates of finite tap spacing and of the rule, within ±1;
-    ``added`` (…, m) added to the coefficients.
+    values; ``added`` (…, m) added to the coefficients.
     """
 
     reading: Values
@@ -47,8 +46,6 @@ class Inputs:
     centre: Values | None = None
     edge_common: Values | None = None
     edge_loading: Values | None = None
-    spacing: Values | None = None
-    rule: Values | None = None
     added: Values | None = None
 
 
@@ -65,7 +62,7 @@ class Equation:
     compressibility: str = "none"
     reference_mach: float = 0.0
     tap_weights: Array
-    """(12, n): rows cn, ct, cm₀ of the rule and of the three spacing differences."""
+    """(3, n): cn, ct, cm₀ per unit tap coefficient, closure included."""
     constant: Array
     edge_common: Array
     edge_loading: Array
@@ -76,7 +73,7 @@ class Equation:
         in_lengths: bool, compressibility: str = "none", reference_mach: float = 0.0,
     ) -> Equation:
         """The equation of a set of live taps, its weights gathered on the taps."""
-        rows = quadrature.node_weights.reshape(12, -1)
+        rows = quadrature.node_weights[0]
         return cls(
             quadrature=quadrature, arrangement=arrangement, pressures=pressures, moment_centre=moment_centre,
             in_lengths=in_lengths, compressibility=compressibility, reference_mach=reference_mach,
@@ -107,11 +104,10 @@ def tap_coefficients(reading: Values, stream: Stream) -> Values:
     return np.asarray((reading + stream.offset[..., None]) / stream.q[..., None])
 
 
-def evaluate(equation: Equation, inputs: Inputs, rule_spread: Values | None = None) -> Values:
+def evaluate(equation: Equation, inputs: Inputs) -> Values:
     """Coefficients (…, m).
 
-    ``rule_spread`` (…, 3) is what one unit of the rule variate adds to cn, ct, cm of the reference result.
-    A state in which the rule does not hold gives NaN reference coefficients.
+    A state in which the compressibility rule does not hold gives NaN reference coefficients.
     """
     stream = stream_of(equation, inputs)
     cp = tap_coefficients(inputs.reading, stream)
@@ -120,23 +116,20 @@ def evaluate(equation: Equation, inputs: Inputs, rule_spread: Values | None = No
     if inputs.shift is not None:
         cp = at_nominal(cp, inputs.shift, equation.quadrature)
     if equation.on_coefficients:
-        body = _spread(equation, integrals(equation, cp, inputs), inputs)
-        parts = [body]
+        rows = integrals(equation, cp, inputs)
+        parts = [rows]
         if equation.compressibility != "none":
-            parts.append(body * prandtl_glauert(equation, stream.mach)[..., None])
+            parts.append(rows * prandtl_glauert(equation, stream.mach)[..., None])
     else:
         nodes = _nodes(equation, cp, inputs)
-        rows = equation.quadrature.node_weights.reshape(12, -1)
         after = moved_nodes(equation, nodes, stream.mach)
-        parts = [_spread(equation, values @ rows.T, inputs) for values in (nodes, after)]
-    if inputs.rule is not None and rule_spread is not None and len(parts) > 1:
-        parts[1] = parts[1] + inputs.rule[..., None] * rule_spread
-    y = np.concatenate([_outputs(equation, body, inputs) for body in parts], axis=-1)
+        parts = [values @ equation.quadrature.node_weights[0].T for values in (nodes, after)]
+    y = np.concatenate([_coefficients(equation, rows, inputs) for rows in parts], axis=-1)
     return y if inputs.added is None else np.asarray(y + inputs.added)
 
 
 def integrals(equation: Equation, cp: Values, inputs: Inputs) -> Values:
-    """(…, 12) integrals of the rule and of the spacing differences, from placed Cp (…, n)."""
+    """cn, ct, cm₀ (…, 3) from placed Cp (…, n)."""
     rows = cp @ equation.tap_weights.T + equation.constant
     if inputs.edge_common is not None:
         rows = rows + inputs.edge_common[..., None] * equation.edge_common
@@ -169,37 +162,23 @@ def _nodes(equation: Equation, cp: Values, inputs: Inputs) -> Values:
     return np.asarray(nodes)
 
 
-def _spread(equation: Equation, rows: Values, inputs: Inputs) -> Values:
-    """cn, ct, cm about the moment centre (…, 3) from the twelve integrals."""
-    body = rows[..., :3]
-    if inputs.spacing is not None:
-        parts = rows[..., 3:].reshape(*rows.shape[:-1], 3, 3)
-        body = body + np.sum(inputs.spacing[..., None] * parts, axis=-2)
-    cn, ct, cm0 = body[..., 0], body[..., 1], body[..., 2]
+def _coefficients(equation: Equation, rows: Values, inputs: Inputs) -> Values:
+    """cn, ct, cm, cl, cd_pressure (…, 5) from the integrals cn, ct, cm₀ (…, 3)."""
+    cn, ct, cm0 = rows[..., 0], rows[..., 1], rows[..., 2]
     if equation.in_lengths and inputs.length is not None:
         g = 1.0 / (1.0 + inputs.length)
         cn, ct, cm0 = cn * g, ct * g, cm0 * g * g
     centre = equation.moment_centre + (0.0 if inputs.centre is None else inputs.centre)
-    return np.stack(np.broadcast_arrays(cn, ct, cm0 + centre * cn), axis=-1)
-
-
-def _outputs(equation: Equation, body: Values, inputs: Inputs) -> Values:
-    """cn, ct, cm, cl, cd_pressure (…, 5) from cn, ct, cm."""
-    cn, ct, cm = body[..., 0], body[..., 1], body[..., 2]
     cl, cd = wind_axes(cn, ct, inputs.alpha)
-    return np.stack(np.broadcast_arrays(cn, ct, cm, cl, cd), axis=-1)
+    return np.stack(np.broadcast_arrays(cn, ct, cm0 + centre * cn, cl, cd), axis=-1)
 
 
-def rule_half_width(equation: Equation, cp: Array, mach: Array) -> Array:
-    """(P, 3) cn, ct, cm of the chosen rule minus those of Kármán-Tsien (chosen: Prandtl-Glauert)."""
-    other = "prandtl-glauert" if equation.compressibility == "karman-tsien" else "karman-tsien"
-    nodes = cp @ equation.quadrature.nodes_of.T + equation.quadrature.nodes_constant
-    bodies = []
-    for name in (equation.compressibility, other):
-        values = moved(nodes, mach[:, None], np.asarray(equation.reference_mach), name)
-        bad = refused(nodes, mach[:, None], equation.reference_mach, name).any(axis=1, keepdims=True)
-        rows = np.where(bad, np.nan, values) @ equation.quadrature.node_weights[0].T
-        rows[:, 2] += equation.moment_centre * rows[:, 0]
-        bodies.append(rows)
-    return np.asarray(bodies[0] - bodies[1])
-
+def turn(equation: Equation, alpha: Array) -> Array:
+    """(P, 5, 3) from the integrals cn, ct, cm₀ to cn, ct, cm, cl, cd_pressure; alpha (P,) [rad]."""
+    matrix = np.zeros((alpha.size, 5, 3))
+    matrix[:, 0, 0] = matrix[:, 1, 1] = matrix[:, 2, 2] = 1.0
+    matrix[:, 2, 0] = equation.moment_centre
+    matrix[:, 3, 0] = matrix[:, 4, 1] = np.cos(alpha)
+    matrix[:, 4, 0] = np.sin(alpha)
+    matrix[:, 3, 1] = -matrix[:, 4, 0]
+    return matrix

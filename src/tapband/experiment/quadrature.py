@@ -76,11 +76,12 @@ def quadrature(
     closure: str | float = "rear taps",
     full_arm: bool = True,
     spacing: bool = True,
+    edge_correction: float = 0.0,
 ) -> Quadrature:
     """The weights of one set of live taps.
 
     ``s`` (n,) arc length of all taps [chords], ``live`` (n,); ``closure`` "rear taps", "extrapolate" or a
-    trailing-edge coefficient. *Assumes* five live taps or more, one at least on each surface.
+    trailing-edge coefficient; ``edge_correction`` is added to the closing value. *Assumes* five live taps or more, one at least on each surface.
     """
     order = np.flatnonzero(live)[np.argsort(s[live], kind="stable")]
     edge = _Edge.of(contour, s, order, closure)
@@ -96,6 +97,7 @@ def quadrature(
             thin = np.zeros_like(chosen)
             thin[:, kept] = _rule_weights(contour, nodes[kept], rule, full_arm)
             node_weights[2 + half] = (chosen - thin) / 3.0
+    constant = edge.constant + edge_correction * edge.common
     cubic = CubicSpline(nodes, np.eye(nodes.size))
     derivatives = []
     for nu in (1, 2):
@@ -104,10 +106,10 @@ def quadrature(
         derivatives.append(at_taps)
     return Quadrature(
         live=live, order=order, node_weights=node_weights,
-        nodes_of=edge.nodes_of, nodes_constant=edge.constant,
+        nodes_of=edge.nodes_of, nodes_constant=constant,
         edge_common=edge.common, edge_loading=edge.loading,
-        slope=derivatives[0] @ edge.nodes_of, slope_constant=derivatives[0] @ edge.constant,
-        curvature=derivatives[1] @ edge.nodes_of, curvature_constant=derivatives[1] @ edge.constant,
+        slope=derivatives[0] @ edge.nodes_of, slope_constant=derivatives[0] @ constant,
+        curvature=derivatives[1] @ edge.nodes_of, curvature_constant=derivatives[1] @ constant,
         rear=edge.rear, rear_mean=edge.rear_mean, rear_extrapolated=edge.rear_extrapolated,
     )
 
