@@ -1,0 +1,68 @@
+"""Options that several commands share, each described once."""
+
+from __future__ import annotations
+
+import re
+from enum import StrEnum
+from pathlib import Path
+from typing import Annotated
+
+import typer
+
+from tapband.nouns.errors import QuestionError
+
+
+class FigureKind(StrEnum):
+    """File kinds of ``--figures``."""
+
+    SVG = "svg"
+    PNG = "png"
+    PDF = "pdf"
+
+
+def _show_version(asked: bool) -> None:
+    if asked:
+        from tapband import __version__
+
+        typer.echo(f"tapband {__version__}")
+        raise typer.Exit
+
+
+def _checked_trials(text: str | None) -> str | None:
+    if text is None or re.fullmatch(r"auto|(plain:)?[1-9][0-9]*", text):
+        return text
+    rule = "--trials: must be auto, a whole number, or plain: and a whole number"
+    raise QuestionError(f'{rule}; got "{text}"; write --trials auto, 200000 or plain:1000000')
+
+
+CampaignFile = Annotated[Path, typer.Argument(metavar="CAMPAIGN", help="The campaign file (TOML).")]
+Version = Annotated[
+    bool, typer.Option("--version", callback=_show_version, is_eager=True, help="Print the version and stop.")
+]
+Quiet = Annotated[bool, typer.Option("--quiet", "-q", help="Print nothing but errors.")]
+Trials = Annotated[
+    str | None,
+    typer.Option(
+        callback=_checked_trials, metavar="auto|N|plain:N",
+        help="Monte Carlo trials: as many as the tolerance asks, N, or N plain ones. Default: as declared.",
+    ),
+]  # fmt: skip
+Seed = Annotated[
+    int | None,
+    typer.Option(min=0, metavar="N", help="Seed of the Monte Carlo draws. Default: as declared."),
+]
+Out = Annotated[
+    Path | None,
+    typer.Option(
+        metavar="DIR",
+        help="Folder of the results. Default: <campaign name>-results beside the campaign. An existing folder"
+        " is replaced only if tapband wrote it; files of your own in it stay.",
+    ),
+]
+Excel = Annotated[bool, typer.Option("--excel", help="Also one workbook, a sheet a table (results.xlsx).")]
+Parquet = Annotated[bool, typer.Option("--parquet", help="Also every table as Parquet.")]
+Figures = Annotated[FigureKind | None, typer.Option(help="Also every figure as a file, in folder figures.")]
+Scheduler = Annotated[
+    str | None,
+    typer.Option(metavar="ADDRESS", help="Spread the points over the Dask cluster there (tcp://host:8786)."),
+]
