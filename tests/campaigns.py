@@ -19,26 +19,44 @@ TWELVE = section_of(0.12, 0.02)
 
 
 def size(
-    half: float, shape: Shape = Shape.NORMAL, scale: Scale = Scale.ABSOLUTE, *, top: float = 0.0,
-    dof: float = inf, reliability: float = 0.0, middle: float = 0.0,
+    half: float,
+    shape: Shape = Shape.NORMAL,
+    scale: Scale = Scale.ABSOLUTE,
+    *,
+    top: float = 0.0,
+    dof: float = inf,
+    reliability: float = 0.0,
+    middle: float = 0.0,
 ) -> Size:
     """±half about a middle, or a standard uncertainty where the shape is normal."""
     return Size(
         terms=(Term(lower=middle - half, upper=middle + half, scale=scale),),
         divisor=1.0 if shape is Shape.NORMAL else divisor_of(shape, top),
-        shape=shape, top=top, dof=dof, reliability=reliability,
+        shape=shape,
+        top=top,
+        dof=dof,
+        reliability=reliability,
     )
 
 
 def source(
-    name: str, acts_on: str | Sequence[str], of: Size, across_points: str = COMMON, across_taps: str = "",
+    name: str,
+    acts_on: str | Sequence[str],
+    of: Size,
+    across_points: str = COMMON,
+    across_taps: str = "",
     **more: object,
 ) -> Source:
     """A source with the defaults tests want."""
     acts = (acts_on,) if isinstance(acts_on, str) else tuple(acts_on)
     return Source(
-        name=name, group=str(more.pop("group", name)), acts_on=acts, size=of, across_points=across_points,
-        across_taps=across_taps, **more,  # type: ignore[arg-type]
+        name=name,
+        group=str(more.pop("group", name)),
+        acts_on=acts,
+        size=of,
+        across_points=across_points,
+        across_taps=across_taps,
+        **more,  # type: ignore[arg-type]
     )
 
 
@@ -102,12 +120,18 @@ def campaign(
     q = 0.7 * static * mach**2
     ones = np.ones(size_)
     values = {
-        "p_total": p_total * ones, "p_static": static * ones, "p_difference": (p_total - static) * ones,
-        "q": q * ones, "mach": mach * ones, "p_ambient": (static + 300.0) * ones,
+        "p_total": p_total * ones,
+        "p_static": static * ones,
+        "p_difference": (p_total - static) * ones,
+        "q": q * ones,
+        "mach": mach * ones,
+        "p_ambient": (static + 300.0) * ones,
     }
     wanted = {
-        "total and static": ["p_total", "p_static"], "difference and static": ["p_difference", "p_static"],
-        "dynamic and mach": ["q", "mach", "p_static"], "mach": ["mach"],
+        "total and static": ["p_total", "p_static"],
+        "difference and static": ["p_difference", "p_static"],
+        "dynamic and mach": ["q", "mach", "p_static"],
+        "mach": ["mach"],
     }[stream]
     if pressures == "relative to p_ambient":
         wanted = [*wanted, "p_ambient"]
@@ -120,20 +144,37 @@ def campaign(
     run = tuple(runs) if runs is not None else ("R1",) * size_
     labels = tuple(f"P{i + 1}" for i in range(size_))
     return Campaign(
-        name="campaign", title="exact flow", folder="",
+        name="campaign",
+        title="exact flow",
+        folder="",
         section=Section(
             x=x, y=y, chord=0.4, contour_in_lengths=in_lengths, moment_centre=0.25, full_arm=True
         ),
         taps=Taps(
-            names=names, s=s, x=places.x, y=places.y, upper=places.upper,
-            excluded=np.zeros(count, dtype=np.bool_), full_scale=np.full(count, 20_000.0),
-            columns={"module": wired}, placed_in_lengths=in_lengths,
+            names=names,
+            s=s,
+            x=places.x,
+            y=places.y,
+            upper=places.upper,
+            excluded=np.zeros(count, dtype=np.bool_),
+            full_scale=np.full(count, 130_000.0),
+            columns={"module": wired},
+            placed_in_lengths=in_lengths,
         ),
-        pressures=pressures, stream=stream,
+        pressures=pressures,
+        stream=stream,
         points=Points(
-            names=labels, runs=run, columns={"point": labels, "run": run}, alpha=alpha, channels=used,
-            readings=readings, counts=np.ones(size_, dtype=np.int64), t_total=np.full(size_, 293.0),
+            names=labels,
+            runs=run,
+            columns={"point": labels, "run": run},
+            alpha=alpha,
+            channels=used,
+            readings=readings,
+            counts=np.ones(size_, dtype=np.int64),
+            t_total=np.full(size_, 293.0),
         ),
-        channels=channels or {}, reduction=Reduction(**reduction),  # type: ignore[arg-type]
-        intervals=Intervals(level=level, trials=trials, seed=seed), sources=tuple(sources),
+        channels=channels or {},
+        reduction=Reduction(**reduction),  # type: ignore[arg-type]
+        intervals=Intervals(level=level, trials=trials, seed=seed),
+        sources=tuple(sources),
     )

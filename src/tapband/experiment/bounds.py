@@ -29,7 +29,9 @@ def spacing_half_widths(equation: Equation, cp: Array, mach: Array, alpha: Array
     elif equation.compressibility != "none":
         results.append(moved_nodes(equation, nodes, mach))
     to_five = turn(equation, alpha)
-    rows = [np.einsum("pmk,jkn,pn->pmj", to_five, rule.node_weights[1:], part, optimize=True) for part in results]
+    rows = [
+        np.einsum("pmk,jkn,pn->pmj", to_five, rule.node_weights[1:], part, optimize=True) for part in results
+    ]
     return np.concatenate(rows, axis=1)
 
 

@@ -69,16 +69,30 @@ class Equation:
 
     @classmethod
     def of(
-        cls, quadrature: Quadrature, *, arrangement: str, pressures: str, moment_centre: float,
-        in_lengths: bool, compressibility: str = "none", reference_mach: float = 0.0,
+        cls,
+        quadrature: Quadrature,
+        *,
+        arrangement: str,
+        pressures: str,
+        moment_centre: float,
+        in_lengths: bool,
+        compressibility: str = "none",
+        reference_mach: float = 0.0,
     ) -> Equation:
         """The equation of a set of live taps, its weights gathered on the taps."""
         rows = quadrature.node_weights[0]
         return cls(
-            quadrature=quadrature, arrangement=arrangement, pressures=pressures, moment_centre=moment_centre,
-            in_lengths=in_lengths, compressibility=compressibility, reference_mach=reference_mach,
-            tap_weights=rows @ quadrature.nodes_of, constant=rows @ quadrature.nodes_constant,
-            edge_common=rows @ quadrature.edge_common, edge_loading=rows @ quadrature.edge_loading,
+            quadrature=quadrature,
+            arrangement=arrangement,
+            pressures=pressures,
+            moment_centre=moment_centre,
+            in_lengths=in_lengths,
+            compressibility=compressibility,
+            reference_mach=reference_mach,
+            tap_weights=rows @ quadrature.nodes_of,
+            constant=rows @ quadrature.nodes_constant,
+            edge_common=rows @ quadrature.edge_common,
+            edge_loading=rows @ quadrature.edge_loading,
         )
 
     @property
@@ -94,9 +108,7 @@ class Equation:
 
 def stream_of(equation: Equation, inputs: Inputs) -> Stream:
     """The stream that the channels and the shifts give."""
-    return solve(
-        equation.arrangement, equation.pressures, inputs.channels, inputs.mach_shift, inputs.q_shift
-    )
+    return solve(equation.arrangement, equation.pressures, inputs.channels, inputs.mach_shift, inputs.q_shift)
 
 
 def tap_coefficients(reading: Values, stream: Stream) -> Values:

@@ -62,8 +62,10 @@ class Contour:
         nose = _nose(x_of)
         knots = knots - nose
         return cls(
-            x_of=CubicSpline(knots, surface[:, 0]), y_of=CubicSpline(knots, surface[:, 1]),
-            knots=knots, base=base,
+            x_of=CubicSpline(knots, surface[:, 0]),
+            y_of=CubicSpline(knots, surface[:, 1]),
+            knots=knots,
+            base=base,
         )
 
     def point(self, s: Array) -> tuple[Array, Array]:

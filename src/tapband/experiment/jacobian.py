@@ -52,12 +52,13 @@ def stream_slopes(
     """Derivatives of the stream by each of its scalars, by complex step."""
     direct = equation.arrangement in ("mach", "dynamic and mach")
     base = {name: np.asarray(value, dtype=np.complex128) for name, value in (shifts or {}).items()}
+    zero = np.zeros_like(next(iter(channels.values())), dtype=np.complex128)
     result = {}
     for name in (*channels, *(() if direct else SHIFTS)):
         varied = {k: v + 1j * STEP * (k == name) for k, v in channels.items()}
         moved = dict(base)
         if name in SHIFTS:
-            moved[name] = base.get(name, 0.0) + 1j * STEP
+            moved[name] = base.get(name, zero) + 1j * STEP
         state = solve(equation.arrangement, equation.pressures, varied, **moved)
         result[name] = StreamSlopes(
             q=np.imag(state.q) / STEP, mach=np.imag(state.mach) / STEP, offset=np.imag(state.offset) / STEP
@@ -85,10 +86,12 @@ def jacobian(
         )
     finished = [block.finish(equation, alpha, stream.q, cp, cp_slope, slopes) for block in blocks]
     return Jacobian(
-        reading=_join([f[0] for f in finished]), extra=_join([f[1] for f in finished]),
+        reading=_join([f[0] for f in finished]),
+        extra=_join([f[1] for f in finished]),
         shift=_join([f[2] for f in finished]),
         scalars={name: _join([f[3][name] for f in finished]) for name in finished[0][3]},
-        stream=slopes, cp_slope=cp_slope,
+        stream=slopes,
+        cp_slope=cp_slope,
     )
 
 
@@ -113,7 +116,12 @@ class _Body:
     edge_loading: Array
 
     def finish(
-        self, equation: Equation, alpha: Array, q: Array, cp: Array, cp_slope: Array,
+        self,
+        equation: Equation,
+        alpha: Array,
+        q: Array,
+        cp: Array,
+        cp_slope: Array,
         slopes: Mapping[str, StreamSlopes],
     ) -> Finished:
         """Derivatives of the five coefficients by every input."""
@@ -142,8 +150,11 @@ def _measured(equation: Equation, cp: Array, mach: Array) -> _Body:
     rows = cp @ equation.tap_weights.T + equation.constant
     one = np.ones((mach.size, 1))
     return _Body(
-        value=rows, by_cp=equation.tap_weights[None], by_mach=np.zeros((mach.size, 3)),
-        edge_common=one * equation.edge_common, edge_loading=one * equation.edge_loading,
+        value=rows,
+        by_cp=equation.tap_weights[None],
+        by_mach=np.zeros((mach.size, 3)),
+        edge_common=one * equation.edge_common,
+        edge_loading=one * equation.edge_loading,
     )
 
 
@@ -153,8 +164,11 @@ def _scaled(equation: Equation, body: _Body, mach: Array) -> _Body:
     slope = np.imag(prandtl_glauert(equation, mach + 1j * STEP)) / STEP
     f = factor[:, None]
     return _Body(
-        value=body.value * f, by_cp=body.by_cp * f[:, :, None], by_mach=body.value * slope[:, None],
-        edge_common=body.edge_common * f, edge_loading=body.edge_loading * f,
+        value=body.value * f,
+        by_cp=body.by_cp * f[:, :, None],
+        by_mach=body.value * slope[:, None],
+        edge_common=body.edge_common * f,
+        edge_loading=body.edge_loading * f,
     )
 
 
@@ -169,6 +183,9 @@ def _moved(equation: Equation, cp: Array, mach: Array) -> _Body:
     rows = after @ weights.T
     bent = weights[None] * by_node[:, None, :]
     return _Body(
-        value=rows, by_cp=bent @ rule.nodes_of, by_mach=by_mach @ weights.T,
-        edge_common=bent @ rule.edge_common, edge_loading=bent @ rule.edge_loading,
+        value=rows,
+        by_cp=bent @ rule.nodes_of,
+        by_mach=by_mach @ weights.T,
+        edge_common=bent @ rule.edge_common,
+        edge_loading=bent @ rule.edge_loading,
     )

@@ -105,12 +105,20 @@ def quadrature(
         at_taps[order] = cubic(s[order], nu)
         derivatives.append(at_taps)
     return Quadrature(
-        live=live, order=order, node_weights=node_weights,
-        nodes_of=edge.nodes_of, nodes_constant=constant,
-        edge_common=edge.common, edge_loading=edge.loading,
-        slope=derivatives[0] @ edge.nodes_of, slope_constant=derivatives[0] @ constant,
-        curvature=derivatives[1] @ edge.nodes_of, curvature_constant=derivatives[1] @ constant,
-        rear=edge.rear, rear_mean=edge.rear_mean, rear_extrapolated=edge.rear_extrapolated,
+        live=live,
+        order=order,
+        node_weights=node_weights,
+        nodes_of=edge.nodes_of,
+        nodes_constant=constant,
+        edge_common=edge.common,
+        edge_loading=edge.loading,
+        slope=derivatives[0] @ edge.nodes_of,
+        slope_constant=derivatives[0] @ constant,
+        curvature=derivatives[1] @ edge.nodes_of,
+        curvature_constant=derivatives[1] @ constant,
+        rear=edge.rear,
+        rear_mean=edge.rear_mean,
+        rear_extrapolated=edge.rear_extrapolated,
     )
 
 
@@ -150,8 +158,13 @@ class _Edge:
         return cls(
             lower_s=np.array([contour.s_lower][: int(gap[0])]),
             upper_s=np.array([contour.s_upper][: int(gap[1])]),
-            nodes_of=nodes_of, constant=constant, common=common, loading=loading,
-            rear=(int(upper), int(lower)), rear_mean=mean, rear_extrapolated=beyond,
+            nodes_of=nodes_of,
+            constant=constant,
+            common=common,
+            loading=loading,
+            rear=(int(upper), int(lower)),
+            rear_mean=mean,
+            rear_extrapolated=beyond,
         )
 
 

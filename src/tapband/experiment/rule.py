@@ -44,13 +44,13 @@ def factors(mach: Values, rule: str) -> tuple[Values, Values]:
 def to_incompressible(cp: Values, mach: Values, rule: str) -> Values:
     """Cp₀ from Cp at a Mach number; arrays broadcast."""
     beta, kappa = factors(mach, rule)
-    return beta * cp / (1.0 - kappa * cp)
+    return np.asarray(beta * cp / (1.0 - kappa * cp))
 
 
 def to_mach(cp0: Values, mach: Values, rule: str) -> Values:
     """Cp at a Mach number from Cp₀; arrays broadcast."""
     beta, kappa = factors(mach, rule)
-    return cp0 / (beta + kappa * cp0)
+    return np.asarray(cp0 / (beta + kappa * cp0))
 
 
 def moved(cp: Values, mach: Values, reference: Values, rule: str) -> Values:
@@ -83,7 +83,11 @@ def concerns(cp: Values, mach: float, reference: float, rule: str) -> tuple[str,
         if m <= 0.0:
             continue
         if np.nanmax(values) > stagnation_cp(np.asarray(m)) + 1e-9:
-            said.append(f"a Cp of {np.nanmax(values):.3f} lies above stagnation at the {name} Mach number {m:.3f}")
+            said.append(
+                f"a Cp of {np.nanmax(values):.3f} lies above stagnation at the {name} Mach number {m:.3f}"
+            )
         if np.nanmin(values) < critical_cp(np.asarray(m)):
-            said.append(f"a Cp of {np.nanmin(values):.3f} is locally supersonic at the {name} Mach number {m:.3f}")
+            said.append(
+                f"a Cp of {np.nanmin(values):.3f} is locally supersonic at the {name} Mach number {m:.3f}"
+            )
     return tuple(said)

@@ -79,7 +79,9 @@ def _given(pressures: str, channels: Mapping[str, Values]) -> Stream:
     q, mach = channels["q"], channels["mach"]
     static = channels.get("p_static", q / (0.7 * mach * mach))
     gap = q * total_excess(mach) / (0.7 * mach * mach)
-    return Stream(q=q, mach=mach, p_static=static, offset=_reference(pressures, channels, static, gap) - static)
+    return Stream(
+        q=q, mach=mach, p_static=static, offset=_reference(pressures, channels, static, gap) - static
+    )
 
 
 def _reference(pressures: str, channels: Mapping[str, Values], static: Values, gap: Values) -> Values:
@@ -96,8 +98,12 @@ def _reference(pressures: str, channels: Mapping[str, Values], static: Values, g
 
 
 def _shifted(
-    m2: Values, static: Values, total: Values, fixed_total: bool,
-    mach_shift: Values | None, q_shift: Values | None,
+    m2: Values,
+    static: Values,
+    total: Values,
+    fixed_total: bool,
+    mach_shift: Values | None,
+    q_shift: Values | None,
 ) -> tuple[Values, Values]:
     """M² and p_static after the derived Mach number, then the derived q, are moved."""
     if mach_shift is not None:

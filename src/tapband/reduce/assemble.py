@@ -76,28 +76,48 @@ def assemble(campaign: Campaign) -> Assembled:
         estimate[i] = _estimate(one.equation, points, corrected, nominal, i)
         channels = {k: v[i] for k, v in points.channels.items()}
         slope = jacobian(
-            one.equation, cp[i], _rows(stream, i), points.alpha[i], channels,
+            one.equation,
+            cp[i],
+            _rows(stream, i),
+            points.alpha[i],
+            channels,
             {k: v[i] for k, v in corrected.shifts.items()},
         )
         slopes.append(At(points=i, live=one.equation.quadrature.live, cp=cp[i], q=stream.q[i], slopes=slope))
-    estimate[~ok, len(MEASURED):] = np.nan
+    estimate[~ok, len(MEASURED) :] = np.nan
     if raw.blocks is not None:
         factor, batches, said = sample_scatter(campaign, corrected, sets, raw, len(outputs))
         loaded.append(scatter(factor, batches, points.keys))
         warnings += said
     parts = [sensitivities(one, slopes, len(outputs), cp.shape) for one in loaded]
     problem = CampaignProblem(
-        sets=sets, loaded=loaded, reading=np.where(nominal.live, points.readings, 0.0),
-        extra=corrected.extra if np.any(corrected.extra) else None, alpha=points.alpha,
-        channels=points.channels, shifts=corrected.shifts, added=corrected.added, outputs=outputs,
-        estimate=estimate, sensitivity=[p.coefficients for p in parts],
+        sets=sets,
+        loaded=loaded,
+        reading=np.where(nominal.live, points.readings, 0.0),
+        extra=corrected.extra if np.any(corrected.extra) else None,
+        alpha=points.alpha,
+        channels=points.channels,
+        shifts=corrected.shifts,
+        added=corrected.added,
+        outputs=outputs,
+        estimate=estimate,
+        sensitivity=[p.coefficients for p in parts],
     )
     return Assembled(
-        campaign=campaign, contour=contour, s=s, points=points, corrected=corrected, nominal=nominal,
-        sets=sets, loaded=tuple(loaded), problem=problem, stream=stream,
+        campaign=campaign,
+        contour=contour,
+        s=s,
+        points=points,
+        corrected=corrected,
+        nominal=nominal,
+        sets=sets,
+        loaded=tuple(loaded),
+        problem=problem,
+        stream=stream,
         cp=np.where(nominal.live, cp, np.nan),
         cp_variance=np.stack([p.cp_variance for p in parts], axis=-1),
-        condition_variance=np.stack([p.condition_variance for p in parts], axis=-1), warnings=warnings,
+        condition_variance=np.stack([p.condition_variance for p in parts], axis=-1),
+        warnings=warnings,
     )
 
 
@@ -111,9 +131,12 @@ def _estimate(
     equation: Equation, points: Points, corrected: Corrected, nominal: Nominal, rows: NDArray[np.int64]
 ) -> Array:
     inputs = Inputs(
-        reading=np.where(nominal.live[rows], points.readings[rows], 0.0), alpha=points.alpha[rows],
-        channels={k: v[rows] for k, v in points.channels.items()}, extra=corrected.extra[rows],
-        mach_shift=_of(corrected.shifts, "mach_shift", rows), q_shift=_of(corrected.shifts, "q_shift", rows),
+        reading=np.where(nominal.live[rows], points.readings[rows], 0.0),
+        alpha=points.alpha[rows],
+        channels={k: v[rows] for k, v in points.channels.items()},
+        extra=corrected.extra[rows],
+        mach_shift=_of(corrected.shifts, "mach_shift", rows),
+        q_shift=_of(corrected.shifts, "q_shift", rows),
         added=corrected.added[rows],
     )
     with np.errstate(invalid="ignore", divide="ignore"):
@@ -141,7 +164,9 @@ def _rule_holds(
             for name in dict.fromkeys((rule, "karman-tsien")):
                 if bool(np.any(refused(values, np.asarray(m), reference, name))):
                     ok[point] = False
-                    why = "does not hold" if name == rule else "bounds the choice of the rule and does not hold"
+                    why = (
+                        "does not hold" if name == rule else "bounds the choice of the rule and does not hold"
+                    )
                     said.append(
                         f"{keys[point]}: {name} {why} at Mach {m:.3f} with a least Cp of {values.min():.3f} "
                         "(near its pole, past vacuum or supersonic); the reference columns are empty"

@@ -65,8 +65,14 @@ def scatter(loads: Array, batches: Array, keys: tuple[str, ...]) -> Loaded:
     """
     count = loads.shape[2]
     family = Family(
-        source=SCATTER, members=tuple(str(i + 1) for i in range(count)), point_group=keys, scale_group=keys,
-        shape=Shape.NORMAL, dof=np.where(batches > 1, batches - 1.0, np.inf), systematic=False, linear=True,
+        source=SCATTER,
+        members=tuple(str(i + 1) for i in range(count)),
+        point_group=keys,
+        scale_group=keys,
+        shape=Shape.NORMAL,
+        dof=np.where(batches > 1, batches - 1.0, np.inf),
+        systematic=False,
+        linear=True,
     )
     entry = Entry(slot="added", member=np.arange(count), load=loads)
     return Loaded(
@@ -84,8 +90,13 @@ def _scalar(slot: str, half_width: Array) -> Entry:
 
 def _loaded(name: str, groups: tuple[str, ...], entry: Entry, shape: Shape = Shape.RECTANGULAR) -> Loaded:
     family = Family(
-        source=name, members=tuple(str(i + 1) for i in range(entry.member.size)), point_group=groups,
-        scale_group=("",) * len(groups), shape=shape, dof=np.full(len(groups), np.inf), linear=True,
+        source=name,
+        members=tuple(str(i + 1) for i in range(entry.member.size)),
+        point_group=groups,
+        scale_group=("",) * len(groups),
+        shape=shape,
+        dof=np.full(len(groups), np.inf),
+        linear=True,
     )
     one_number = entry.load.ndim == 1
     standard = np.abs(entry.load) if one_number else np.full(len(entry.load), np.nan)

@@ -84,9 +84,15 @@ def correct(campaign: Campaign, points: Points, nominal: Nominal, outputs: int) 
             else:
                 added += nominal.added_rows(slot, amount)[:, :, 0]
     return Corrected(
-        points=replace(points, readings=readings, channels=channels, alpha=alpha), extra=extra,
-        location=location, shifts=shifts, chord=single["length"], centre=single["centre"],
-        edge=single["edge_common"], added=added, made=tuple(made),
+        points=replace(points, readings=readings, channels=channels, alpha=alpha),
+        extra=extra,
+        location=location,
+        shifts=shifts,
+        chord=single["length"],
+        centre=single["centre"],
+        edge=single["edge_common"],
+        added=added,
+        made=tuple(made),
     )
 
 
@@ -101,7 +107,9 @@ def _amounts(source: Source, campaign: Campaign, nominal: Nominal) -> list[tuple
             continue
         own = campaign.channels.get(slot)
         full = source.full_scale if source.full_scale is not None else own.full_scale if own else np.nan
-        result.append((act, slot if act not in MEASURED else act, middle(source.size, reading, np.asarray(full))))
+        result.append(
+            (act, slot if act not in MEASURED else act, middle(source.size, reading, np.asarray(full)))
+        )
     for name, _, full_scale in ports_of(source, campaign):
         if name in nominal.channels:
             reading = nominal.channels[name]
@@ -112,5 +120,9 @@ def _amounts(source: Source, campaign: Campaign, nominal: Nominal) -> list[tuple
 def _said(source: str, act: str, amount: Array) -> Correction:
     scaled = amount * PER_UNIT.get(act, 1.0)
     return Correction(
-        source=source, act=act, lowest=float(scaled.min()), highest=float(scaled.max()), unit="Pa" if act.startswith("reading of") else unit_of(act)
+        source=source,
+        act=act,
+        lowest=float(scaled.min()),
+        highest=float(scaled.max()),
+        unit="Pa" if act.startswith("reading of") else unit_of(act),
     )

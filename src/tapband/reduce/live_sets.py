@@ -43,14 +43,23 @@ def equation_of(
     reduction, section = campaign.reduction, campaign.section
     closure = reduction.trailing_edge
     rule = quadrature(
-        contour, s, live, rule=reduction.integration,
+        contour,
+        s,
+        live,
+        rule=reduction.integration,
         closure=float(closure.cp) if isinstance(closure, Closure) else closure,
-        full_arm=section.full_arm, spacing=reduction.spacing, edge_correction=edge,
+        full_arm=section.full_arm,
+        spacing=reduction.spacing,
+        edge_correction=edge,
     )
     return Equation.of(
-        rule, arrangement=campaign.stream, pressures=campaign.pressures,
-        moment_centre=section.moment_centre + centre, in_lengths=section.contour_in_lengths,
-        compressibility=reduction.compressibility, reference_mach=reduction.reference_mach,
+        rule,
+        arrangement=campaign.stream,
+        pressures=campaign.pressures,
+        moment_centre=section.moment_centre + centre,
+        in_lengths=section.contour_in_lengths,
+        compressibility=reduction.compressibility,
+        reference_mach=reduction.reference_mach,
     )
 
 

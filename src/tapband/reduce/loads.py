@@ -15,10 +15,22 @@ from tapband.reduce.nominal import Nominal
 Array = NDArray[np.float64]
 Indices = NDArray[np.int64]
 
-TAP_SLOTS = {"tap pressure": "reading", "tap location": "shift", "tap row": "shift", "tap coefficient": "extra"}
-CHANNEL_OF = {"total pressure": "p_total", "static pressure": "p_static", "pressure difference": "p_difference"}
+TAP_SLOTS = {
+    "tap pressure": "reading",
+    "tap location": "shift",
+    "tap row": "shift",
+    "tap coefficient": "extra",
+}
+CHANNEL_OF = {
+    "total pressure": "p_total",
+    "static pressure": "p_static",
+    "pressure difference": "p_difference",
+}
 SCALAR_SLOTS = {
-    "angle": "alpha", "chord": "length", "moment centre": "centre", "trailing-edge coefficient": "edge_common",
+    "angle": "alpha",
+    "chord": "length",
+    "moment centre": "centre",
+    "trailing-edge coefficient": "edge_common",
 }
 PER_UNIT = {"angle": 180.0 / np.pi}
 LINEAR_SLOTS = frozenset({"reading", "extra", "edge_common", "edge_loading", "added"})
@@ -51,6 +63,27 @@ class Loaded:
     """(P,) standard uncertainty in the source's unit; NaN where it differs between taps."""
     unit: str
 
+    @property
+    def nu(self) -> Array:
+        """(P,) degrees of freedom, a relative doubt counted in (JCGM 100, G.4.2)."""
+        doubt = self.family.reliability
+        return np.minimum(self.family.dof, 0.5 / doubt**2 if doubt > 0.0 else np.inf)
+
+    def part(self, points: slice) -> Loaded:
+        """The same at a block of points."""
+        family = self.family
+        return replace(
+            self,
+            standard=self.standard[points],
+            family=replace(
+                family,
+                point_group=family.point_group[points],
+                scale_group=family.scale_group[points],
+                dof=family.dof[points],
+            ),
+            entries=tuple(replace(entry, load=entry.load[points]) for entry in self.entries),
+        )
+
 
 def point_groups(points: Points, across: str) -> tuple[str, ...]:
     """Key of the group in which each point shares its draws (P,)."""
@@ -71,16 +104,25 @@ def load(source: Source, campaign: Campaign, points: Points, nominal: Nominal) -
     entries = [entry for entry, _ in pairs]
     entries += _ports(source, campaign, nominal)
     family = Family(
-        source=source.name, members=members, point_group=point_groups(points, source.across_points),
-        scale_group=("",) * len(points.names), shape=source.size.shape, top=source.size.top,
-        dof=np.full(len(points.names), source.size.dof), reliability=_doubt(source.size),
-        systematic=source.systematic, linear=all(e.slot in LINEAR_SLOTS for e in entries),
+        source=source.name,
+        members=members,
+        point_group=point_groups(points, source.across_points),
+        scale_group=("",) * len(points.names),
+        shape=source.size.shape,
+        top=source.size.top,
+        dof=np.full(len(points.names), source.size.dof),
+        reliability=_doubt(source.size),
+        systematic=source.systematic,
+        linear=all(e.slot in LINEAR_SLOTS for e in entries),
     )
     if source.size.shape is Shape.NORMAL and source.size.reliability > 0.0:
         family = replace(family, dof=np.full(len(points.names), source.size.nu))
     return Loaded(
-        family=family, group=source.group, entries=tuple(entries),
-        standard=_one_number(pairs[0][1]) * PER_UNIT.get(source.acts_on[0], 1.0), unit=unit_of(source.acts_on[0]),
+        family=family,
+        group=source.group,
+        entries=tuple(entries),
+        standard=_one_number(pairs[0][1]) * PER_UNIT.get(source.acts_on[0], 1.0),
+        unit=unit_of(source.acts_on[0]),
     )
 
 
@@ -131,7 +173,9 @@ def _entry(
     scale = source.full_scale if source.full_scale is not None else own.full_scale if own else np.nan
     half = spread(source.size, reading, np.asarray(scale))
     if act in ("cn", "ct", "cm", "cl", "cd_pressure"):
-        return Entry(slot="added", member=np.zeros(1, dtype=np.int64), load=nominal.added_rows(act, half)), half
+        return Entry(
+            slot="added", member=np.zeros(1, dtype=np.int64), load=nominal.added_rows(act, half)
+        ), half
     relative = half / campaign.section.chord if act == "chord" else half
     return Entry(slot=slot, member=np.zeros(1, dtype=np.int64), load=relative), half
 
@@ -157,7 +201,9 @@ def ports_of(source: Source, campaign: Campaign) -> list[tuple[str, int, float]]
         else:
             continue
         if name not in stated:
-            ports.append((name, index, channel.full_scale if source.full_scale is None else source.full_scale))
+            ports.append(
+                (name, index, channel.full_scale if source.full_scale is None else source.full_scale)
+            )
     return ports
 
 
@@ -165,7 +211,8 @@ def _ports(source: Source, campaign: Campaign, nominal: Nominal) -> list[Entry]:
     """A stream channel on a module is one more port of it."""
     return [
         Entry(
-            slot=name, member=np.array([index]),
+            slot=name,
+            member=np.array([index]),
             load=spread(source.size, nominal.channels[name], np.asarray(full_scale)),
         )
         for name, index, full_scale in ports_of(source, campaign)

@@ -16,9 +16,17 @@ Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
 
 SLOT_OF = {
-    "tap pressure": "reading", "tap location": "shift", "tap row": "shift", "tap coefficient": "extra",
-    "total pressure": "p_total", "static pressure": "p_static", "pressure difference": "p_difference",
-    "angle": "alpha", "chord": "length", "moment centre": "centre", "trailing-edge coefficient": "edge_common",
+    "tap pressure": "reading",
+    "tap location": "shift",
+    "tap row": "shift",
+    "tap coefficient": "extra",
+    "total pressure": "p_total",
+    "static pressure": "p_static",
+    "pressure difference": "p_difference",
+    "angle": "alpha",
+    "chord": "length",
+    "moment centre": "centre",
+    "trailing-edge coefficient": "edge_common",
 }
 
 
@@ -85,8 +93,16 @@ def nominal_of(campaign: Campaign, points: Points, tangent_x: Array) -> Nominal:
         factor = np.sqrt((1.0 - stream.mach**2) / (1.0 - reduction.reference_mach**2))
     reference = campaign.pressures.removeprefix("relative to ")
     return Nominal(
-        reading=np.where(live, points.readings, np.nan), live=live, channels=points.channels,
-        alpha=points.alpha, mach=stream.mach, q=stream.q, cp=np.where(live, cp, np.nan), tangent_x=tangent_x,
-        x=campaign.taps.x, reference_channel=reference if reference in points.channels else None,
-        arrangement=campaign.stream, factor=factor,
+        reading=np.where(live, points.readings, np.nan),
+        live=live,
+        channels=points.channels,
+        alpha=points.alpha,
+        mach=stream.mach,
+        q=stream.q,
+        cp=np.where(live, cp, np.nan),
+        tangent_x=tangent_x,
+        x=campaign.taps.x,
+        reference_channel=reference if reference in points.channels else None,
+        arrangement=campaign.stream,
+        factor=factor,
     )

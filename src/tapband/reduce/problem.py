@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterator, Mapping, Sequence
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, fields, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -15,6 +15,7 @@ from tapband.reduce.loads import Entry, Loaded
 
 Array = NDArray[np.float64]
 Indices = NDArray[np.int64]
+OPTIONAL = tuple(f.name for f in fields(Inputs) if f.name not in ("reading", "alpha", "channels"))
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
@@ -47,6 +48,28 @@ class CampaignProblem:
         """A rule that acts on Cp bends the reference coefficients; all others are affine in tap errors."""
         bent = not self.sets[0].equation.on_coefficients
         return np.array([not (bent and name.endswith("_ref")) for name in self.outputs])
+
+    def part(self, points: slice) -> CampaignProblem:
+        """The problem of a block of points alone."""
+        start, stop, _ = points.indices(len(self.alpha))
+        sets = []
+        for one in self.sets:
+            low, high = np.searchsorted(one.points, [start, stop])
+            if high > low:
+                sets.append(replace(one, points=one.points[low:high] - start))
+        return replace(
+            self,
+            sets=sets,
+            loaded=[one.part(points) for one in self.loaded],
+            reading=self.reading[points],
+            extra=None if self.extra is None else self.extra[points],
+            alpha=self.alpha[points],
+            channels={k: v[points] for k, v in self.channels.items()},
+            shifts={k: v[points] for k, v in self.shifts.items()},
+            added=self.added[points],
+            estimate=self.estimate[points],
+            sensitivity=[s[points] for s in self.sensitivity],
+        )
 
     def evaluate(self, points: slice, draws: Draws) -> Array:
         """y (Pb, T, m) of a block of points; see :class:`Problem`."""
@@ -94,9 +117,7 @@ class CampaignProblem:
             for entry in self.loaded[f].entries:
                 error = _error(entry, mine, rows)
                 values[entry.slot] = values[entry.slot] + error if entry.slot in values else error
-        channels = {
-            name: value[rows, None] + values.pop(name, 0.0) for name, value in self.channels.items()
-        }
+        channels = {name: value[rows, None] + values.pop(name, 0.0) for name, value in self.channels.items()}
         for name, value in self.shifts.items():
             values[name] = value[rows, None] + values.get(name, 0.0)
         if self.extra is not None:
@@ -105,14 +126,19 @@ class CampaignProblem:
             values["added"] = self.added[rows, None, :] + values.get("added", 0.0)
         reading = self.reading[rows, None, :] + values.pop("reading", 0.0)
         alpha = self.alpha[rows, None] + values.pop("alpha", 0.0)
-        return replace(Inputs(reading=reading, alpha=alpha, channels=channels), **values)
+        return Inputs(
+            reading=reading,
+            alpha=alpha,
+            channels=channels,
+            **{slot: values.get(slot) for slot in OPTIONAL},
+        )
 
 
 def _error(entry: Entry, draws: Array, rows: Indices) -> Array:
     """What drawn latents (Pb or 1, T, G) add to the entry's quantity: (Pb, T, n), (Pb, T, m) or (Pb, T)."""
     load = entry.load[rows]
     if entry.slot == "added":
-        return np.matmul(draws[..., entry.member], load.transpose(0, 2, 1))
+        return np.asarray(np.matmul(draws[..., entry.member], load.transpose(0, 2, 1)))
     if not entry.on_taps:
         return np.asarray(draws[..., entry.member[0]] * load[:, None])
     if draws.shape[2] == 1:
@@ -152,8 +178,12 @@ class _Response:
         centre = equation.moment_centre + (0.0 if inputs.centre is None else inputs.centre)
         factor = None if equation.compressibility == "none" else prandtl_glauert(equation, stream.mach)
         return cls(
-            by_cp=_about(by_cp, centre, length), q=stream.q, cos=np.cos(inputs.alpha),
-            sin=np.sin(inputs.alpha), factor=factor, outputs=len(equation.outputs),
+            by_cp=_about(by_cp, centre, length),
+            q=stream.q,
+            cos=np.cos(inputs.alpha),
+            sin=np.sin(inputs.alpha),
+            factor=factor,
+            outputs=len(equation.outputs),
             edges={k: _about(v[None, None, :, None], centre, length)[..., 0] for k, v in rows.items()},
         )
 

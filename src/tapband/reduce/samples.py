@@ -50,7 +50,9 @@ def _evaluate(one: LiveSet, block: Rows, rows: NDArray[np.int64], corrected: Cor
     inputs = Inputs(
         reading=np.where(live, reading, 0.0),
         alpha=block.alpha[rows] + (moved.alpha - raw.alpha)[point],
-        channels={k: v[rows] + (moved.channels[k] - raw.channels[k])[point] for k, v in block.channels.items()},
+        channels={
+            k: v[rows] + (moved.channels[k] - raw.channels[k])[point] for k, v in block.channels.items()
+        },
         extra=corrected.extra[point],
         mach_shift=corrected.shifts["mach_shift"][point] if "mach_shift" in corrected.shifts else None,
         q_shift=corrected.shifts["q_shift"][point] if "q_shift" in corrected.shifts else None,

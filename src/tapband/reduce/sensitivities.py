@@ -36,9 +36,7 @@ class Sensitivities:
     condition_variance: Array
 
 
-def sensitivities(
-    loaded: Loaded, sets: Sequence[At], outputs: int, shape: tuple[int, ...]
-) -> Sensitivities:
+def sensitivities(loaded: Loaded, sets: Sequence[At], outputs: int, shape: tuple[int, ...]) -> Sensitivities:
     """Of one family at all points; ``shape`` is (P, n)."""
     count = len(loaded.family.members)
     coefficients = np.zeros((shape[0], outputs, count))
@@ -59,7 +57,8 @@ def sensitivities(
                 conditions[i, :, k] += _conditions(entry.slot, at.slopes, part)
         cp_variance[i] = np.where(at.live, _cp_variance(loaded.entries, at), np.nan)
     return Sensitivities(
-        coefficients=coefficients, cp_variance=cp_variance,
+        coefficients=coefficients,
+        cp_variance=cp_variance,
         condition_variance=np.sum(conditions**2, axis=2),
     )
 

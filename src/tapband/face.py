@@ -1,0 +1,224 @@
+"""The Python face: load a campaign, reduce it, ask the results.
+
+results = tapband.reduce(tapband.load("demo/campaign.toml"))
+results.coefficients[["point", "cl", "cl_U"]]
+"""
+
+from __future__ import annotations
+
+import sys
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass, field
+from functools import cached_property
+from importlib.metadata import version
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from tapband import __version__
+from tapband.files.load import load
+from tapband.nouns.campaign import Campaign
+from tapband.nouns.errors import QuestionError
+from tapband.questions.latents import Latents, from_arrays, latents_of, to_arrays
+from tapband.questions.statement import statements
+from tapband.reduce import Reduced, reduce_campaign
+from tapband.reduce.undeclared import NO_WALL_CORRECTION, NOT_TOTAL_DRAG, undeclared
+
+if TYPE_CHECKING:
+    import pandas as pd
+    from distributed import Client
+    from uncertainties import UFloat
+
+__all__ = ["Campaign", "Results", "load", "reduce"]
+
+Array = NDArray[np.float64]
+Progress = Callable[[int, int], None]
+CAUTIONS = (
+    NO_WALL_CORRECTION,
+    NOT_TOTAL_DRAG,
+    "An interval covers the sources that are declared, and no others.",
+    "Loads that anyone's safety depends on need the review of a competent person, and local rules come first.",
+)
+
+
+@dataclass(frozen=True, kw_only=True, eq=False)
+class Results:
+    """Tables, warnings and correlations of a reduced campaign.
+
+    ``tables`` by file name without its ending; each is an attribute too. ``campaign`` is None for results
+    that were read back from a folder.
+    """
+
+    tables: Mapping[str, pd.DataFrame]
+    meta: Mapping[str, Any]
+    arrays: Mapping[str, NDArray[Any]] = field(default_factory=dict)
+    campaign: Campaign | None = None
+    reduced: Reduced | None = None
+
+    @property
+    def coefficients(self) -> pd.DataFrame:
+        """One row a point."""
+        return self._table("coefficients")
+
+    @property
+    def cp(self) -> pd.DataFrame:
+        """One row a point and tap."""
+        return self._table("cp")
+
+    @property
+    def budget(self) -> pd.DataFrame:
+        """One row a point, coefficient and source."""
+        return self._table("budget")
+
+    @property
+    def correlation(self) -> pd.DataFrame:
+        """One row a point and pair of coefficients."""
+        return self._table("correlation")
+
+    @property
+    def warnings(self) -> tuple[str, ...]:
+        """Everything the reader should know before quoting a number."""
+        return tuple(self.meta.get("warnings", ()))
+
+    @property
+    def exit_status(self) -> int:
+        """What the command line exits with: 1 where a target or decision fails or results are empty."""
+        return int(self.meta.get("exit_status", 0))
+
+    def _table(self, name: str) -> pd.DataFrame:
+        if name not in self.tables:
+            raise QuestionError(f"{name}: these results hold no such table; got {', '.join(self.tables)}")
+        return self.tables[name]
+
+    @cached_property
+    def latents(self) -> Latents:
+        """What correlates points."""
+        return latents_of(self.reduced) if self.reduced is not None else from_arrays(self.arrays)
+
+    def covariance(self, a: str, b: str) -> pd.DataFrame:
+        """Covariance of the coefficients of point ``a`` (rows) with those of ``b`` (columns), linearised."""
+        import pandas as pd
+
+        latents = self.latents
+        names = list(latents.outputs)
+        return pd.DataFrame(
+            latents.covariance(latents.index(a), latents.index(b)), index=names, columns=names
+        )
+
+    @cached_property
+    def _variables(self) -> dict[tuple[str, int, int], UFloat]:
+        return {}
+
+    def ufloats(self, point: str) -> dict[str, UFloat]:
+        """The coefficients of a point as ``uncertainties`` numbers, correlated with those of all other points."""
+        from uncertainties import ufloat
+
+        latents = self.latents
+        p = latents.index(point)
+        numbers = {
+            name: value + 0.0 * ufloat(0.0, 1.0)
+            for name, value in zip(latents.outputs, latents.estimate[p].tolist(), strict=True)
+        }
+        for s, (source, codes) in enumerate(zip(latents.sources, latents.group, strict=True)):
+            by_latent = latents.sensitivity[s][p]
+            for g in np.flatnonzero(np.any(by_latent != 0.0, axis=0)).tolist():
+                key = (source, g, int(codes[p]))
+                variable = self._variables.setdefault(key, ufloat(0.0, 1.0, tag=source))
+                for j, name in enumerate(latents.outputs):
+                    if by_latent[j, g] != 0.0:
+                        numbers[name] = numbers[name] + by_latent[j, g] * variable
+        return numbers
+
+    def write(self, folder: str | Path, *, excel: bool = False, figures: str | None = None) -> Path:
+        """Write every table, ``results.json`` and the report; whole or not at all."""
+        from tapband.report.publish import publish
+
+        publish(self, Path(folder), excel=excel, parquet=False, figures=figures)
+        return Path(folder)
+
+    @classmethod
+    def read(cls, folder: str | Path) -> Results:
+        """Results written before, with their correlations."""
+        from tapband.files.read_results import read
+
+        parts = read(folder)
+        return cls(tables=parts.tables, meta=parts.meta, arrays=parts.arrays)
+
+    def __repr__(self) -> str:
+        """A short table of estimates and expanded uncertainties."""
+        return f"tapband results: {self.meta.get('title', '')}\n{self._short().to_string(index=False)}"
+
+    def _repr_html_(self) -> str:
+        return str(self._short().to_html(index=False, escape=True))
+
+    def _short(self) -> pd.DataFrame:
+        table = self.coefficients
+        wanted = ["point", "run", "alpha", "mach"]
+        for name in ("cl", "cd_pressure", "cm"):
+            wanted += [name, f"{name}_U", f"{name}_agrees"]
+        return table[[name for name in wanted if name in table]].round(6)
+
+
+def reduce(
+    campaign: Campaign,
+    trials: str | int | None = None,
+    seed: int | None = None,
+    progress: Progress | None = None,
+    client: Client | None = None,
+) -> Results:
+    """The main job: coefficients with intervals by both propagators.
+
+    ``trials`` "auto", a number, or "plain:N"; both default to the campaign's. ``progress`` is called with
+    points done and points in all. ``client`` of a running Dask cluster spreads the points over its workers;
+    the rows are the same.
+    """
+    from tapband.files.frames import frames
+
+    reduced = reduce_campaign(
+        campaign, None if trials is None else str(trials), seed, progress, client=client
+    )
+    tables = frames(reduced)
+    return Results(
+        tables=tables,
+        meta=_meta(reduced),
+        arrays=to_arrays(latents_of(reduced)),
+        campaign=reduced.campaign,
+        reduced=reduced,
+    )
+
+
+def _meta(reduced: Reduced) -> dict[str, Any]:
+    campaign, drawn = reduced.campaign, reduced.montecarlo
+    empty = bool(np.any(~np.isfinite(reduced.linear.estimate)))
+    names = ("numpy", "scipy", "pandas")
+    return {
+        "format": 1,
+        "kind": "reduce",
+        "title": campaign.title,
+        "name": campaign.name,
+        "level": campaign.intervals.level,
+        "seed": campaign.intervals.seed,
+        "trials": campaign.intervals.trials,
+        "trials_used": np.max(drawn.trials, axis=-1).tolist()
+        if drawn.trials.ndim > 1
+        else drawn.trials.tolist(),
+        "refused": drawn.refused.tolist(),
+        "method": list(drawn.method),
+        "versions": {
+            "tapband": __version__,
+            "python": sys.version.split()[0],
+            **{n: version(n) for n in names},
+        },
+        "inputs": dict(campaign.inputs),
+        "integration": campaign.reduction.integration,
+        "compressibility": campaign.reduction.compressibility,
+        "reference_mach": campaign.reduction.reference_mach,
+        "corrections": [str(c) for c in reduced.assembled.corrected.made],
+        "warnings": list(reduced.warnings),
+        "undeclared": list(undeclared(campaign)),
+        "cautions": list(CAUTIONS),
+        "stated": statements(reduced),
+        "exit_status": int(empty),
+    }
