@@ -258,5 +258,5 @@ def limits_said(flow: Flow, mach: float = 0.0) -> tuple[str, ...]:
 
 
 def _angles(alpha: Array) -> str:
-    """ "alpha 8, 10 deg" of angles [rad]."""
+    """Angles [rad] in words: alpha 8, 10 deg."""
     return "alpha " + ", ".join(f"{a:g}" for a in np.round(np.degrees(alpha), 3)) + " deg"
