@@ -39,7 +39,7 @@ CAUTIONS = (
     NO_WALL_CORRECTION,
     NOT_TOTAL_DRAG,
     "An interval covers the sources that are declared, and no others.",
-    "Loads that anyone's safety depends on need the review of a competent person, and local rules come first.",
+    "Loads that safety depends on need the review of a competent person; local rules come first.",
 )
 
 
@@ -112,7 +112,7 @@ class Results:
         return {}
 
     def ufloats(self, point: str) -> dict[str, UFloat]:
-        """The coefficients of a point as ``uncertainties`` numbers, correlated with those of all other points."""
+        """The coefficients of a point as ``uncertainties`` numbers, correlated across points too."""
         from uncertainties import ufloat
 
         latents = self.latents

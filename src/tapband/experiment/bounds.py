@@ -48,7 +48,7 @@ def edge_half_widths(equation: Equation, cp: Array) -> tuple[Array, Array]:
 
 
 def rule_half_widths(equation: Equation, cp: Array, mach: Array, alpha: Array) -> Array:
-    """(P, m, 1) the chosen rule minus Kármán-Tsien (chosen: minus Prandtl-Glauert); NaN where one is refused."""
+    """(P, m, 1) the chosen rule minus Kármán-Tsien (chosen: Prandtl-Glauert); NaN where one is refused."""
     chosen = equation.compressibility
     other = "prandtl-glauert" if chosen == "karman-tsien" else "karman-tsien"
     nodes = cp @ equation.quadrature.nodes_of.T + equation.quadrature.nodes_constant

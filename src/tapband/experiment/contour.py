@@ -58,9 +58,7 @@ class Contour:
         base = np.vstack([points[last:], points[: first + 1]])
         surface = points[first : last + 1]
         knots = _arc_length_knots(surface)
-        x_of, y_of = (CubicSpline(knots, surface[:, i]) for i in (0, 1))
-        nose = _nose(x_of)
-        knots = knots - nose
+        knots = knots - _nose(CubicSpline(knots, surface[:, 0]))
         return cls(
             x_of=CubicSpline(knots, surface[:, 0]),
             y_of=CubicSpline(knots, surface[:, 1]),

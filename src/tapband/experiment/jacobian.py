@@ -74,7 +74,7 @@ def jacobian(
     channels: Mapping[str, Array],
     shifts: Mapping[str, Array] | None = None,
 ) -> Jacobian:
-    """Derivatives for P points: cp (P, n) with zeros at dead taps, alpha (P,) [rad], channels and shifts (P,)."""
+    """Derivatives for P points: cp (P, n) zero at dead taps, alpha (P,) [rad], channels and shifts (P,)."""
     live = equation.quadrature.live
     slopes = stream_slopes(equation, channels, shifts)
     cp_slope = np.where(live, cp @ equation.quadrature.slope.T + equation.quadrature.slope_constant, 0.0)

@@ -81,7 +81,8 @@ def quadrature(
     """The weights of one set of live taps.
 
     ``s`` (n,) arc length of all taps [chords], ``live`` (n,); ``closure`` "rear taps", "extrapolate" or a
-    trailing-edge coefficient; ``edge_correction`` is added to the closing value. *Assumes* five live taps or more, one at least on each surface.
+    trailing-edge coefficient; ``edge_correction`` is added to the closing value. *Assumes* five live taps or
+    more, two at least on each surface.
     """
     order = np.flatnonzero(live)[np.argsort(s[live], kind="stable")]
     edge = _Edge.of(contour, s, order, closure)

@@ -61,7 +61,7 @@ def moved(cp: Values, mach: Values, reference: Values, rule: str) -> Values:
 def refused(cp: Values, mach: Values, reference: float, rule: str) -> Values:
     """Where the rule does not hold: supersonic, near its pole, or past vacuum at either Mach number."""
     with np.errstate(invalid="ignore", divide="ignore"):
-        beta, kappa = factors(mach, rule)
+        kappa = factors(mach, rule)[1]
         bad = ~(mach < 1.0) | (1.0 - kappa * cp < POLE) | (1.0 - kappa * cp > 1.0 / POLE)
         cp0 = to_incompressible(cp, mach, rule)
         beta_r, kappa_r = factors(np.asarray(reference, dtype=np.float64), rule)

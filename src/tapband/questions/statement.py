@@ -32,8 +32,8 @@ def _sentence(reduced: Reduced, p: int, j: int) -> str:
         low, high = drawn.low[p, j], drawn.high[p, j]
         d = decimals(0.5 * (high - low))
         return (
-            f"{name} = {value:.{d}f} with a {percent} coverage interval from {low:.{d}f} to {high:.{d}f} by Monte "
-            f"Carlo (JCGM 101); the linearised interval ±{linear.U[p, j]:.{d}f} is not confirmed."
+            f"{name} = {value:.{d}f} with a {percent} coverage interval from {low:.{d}f} to {high:.{d}f} by "
+            f"Monte Carlo (JCGM 101); the linearised interval ±{linear.U[p, j]:.{d}f} is not confirmed."
         )
     if u == 0.0:
         return f"{name} = {value:.6g}; no declared error acts on it."
@@ -42,9 +42,9 @@ def _sentence(reduced: Reduced, p: int, j: int) -> str:
     known = "the t-distribution" if np.isfinite(dof) and dof < 100 else "the normal distribution"
     freedom = f" for ν = {dof:.0f} degrees of freedom" if np.isfinite(dof) and dof < 100 else ""
     return (
-        f"{name} = {value:.{d}f} ± {linear.U[p, j]:.{d}f}, where the number after ± is an expanded uncertainty "
-        f"U = k·u with u = {u:.{decimals(u)}f} and k = {linear.k[p, j]:.2f} from {known}{freedom}, and defines an "
-        f"interval with a level of confidence of about {percent}."
+        f"{name} = {value:.{d}f} ± {linear.U[p, j]:.{d}f}, where the number after ± is an expanded "
+        f"uncertainty U = k·u with u = {u:.{decimals(u)}f} and k = {linear.k[p, j]:.2f} from {known}{freedom}, "
+        f"and defines an interval with a level of confidence of about {percent}."
     )
 
 

@@ -80,7 +80,7 @@ def reduce_campaign(
     threads: int | None = None,
     client: Client | None = None,
 ) -> Reduced:
-    """The main job: every coefficient of every point, by both propagators; see :func:`tapband.reduce`."""
+    """The main job: every coefficient of every point, by both propagators."""
     intervals = campaign.intervals
     intervals = replace(
         intervals,
@@ -155,9 +155,8 @@ def _said(assembled: Assembled, drawn: MonteCarlo) -> tuple[str, ...]:
         names = ", ".join(np.array(taps.names)[lost[p]])
         said.append(f"{points.keys[p]}: left out for want of a reading: {names}")
     for p in np.flatnonzero(drawn.refused > 0):
-        said.append(
-            f"{points.keys[p]}: {int(drawn.refused[p])} trials were refused (no valid state); counted, not replaced"
-        )
+        count = int(drawn.refused[p])
+        said.append(f"{points.keys[p]}: {count} trials had no valid state; they are counted, not replaced")
     short = ~drawn.reached & np.isfinite(assembled.problem.estimate)
     for p in np.flatnonzero(short.any(axis=1)):
         names = ", ".join(np.array(assembled.problem.outputs)[short[p]])

@@ -39,7 +39,7 @@ LINEAR_SLOTS = frozenset({"reading", "extra", "edge_common", "edge_loading", "ad
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
 class Entry:
-    """One quantity a family moves. For tap slots ``member`` (n,) is the latent of each tap and ``load`` (P, n);
+    """One quantity a family moves. For tap slots ``member`` (n,) is each tap's latent and ``load`` (P, n);
     for the slot "added" ``load`` is (P, m, G); else ``member`` (1,) and ``load`` (P,)."""
 
     slot: str
@@ -181,7 +181,7 @@ def _entry(
 
 
 def ports_of(source: Source, campaign: Campaign) -> list[tuple[str, int, float]]:
-    """Stream channels that hang on a module and so share a tap-pressure source: name, latent, full scale [Pa].
+    """Stream channels on a module, which share a tap-pressure source: name, latent, full scale [Pa].
 
     A channel that the source names itself is not moved twice.
     """

@@ -81,7 +81,7 @@ class CampaignProblem:
         return y
 
     def given(self, points: slice, draws: Draws, out: Sequence[int]) -> tuple[Array, Mapping[int, Array]]:
-        """As :meth:`evaluate`, with the variances that the linear families in ``out`` add; see :class:`Problem`."""
+        """As :meth:`evaluate`, with the variances that the linear families in ``out`` add."""
         trials = max((d.shape[1] for d in draws.values()), default=1)
         size = len(range(*points.indices(len(self.alpha))))
         y = np.empty((size, trials, len(self.outputs)))

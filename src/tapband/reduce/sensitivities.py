@@ -18,7 +18,7 @@ CONDITIONS = ("alpha", "mach", "q")
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
 class At:
-    """The points of one live set, where the chain is differentiated: cp (P, n) zero at dead taps, q (P,) [Pa]."""
+    """Where the chain is differentiated: the points of one live set, cp (P, n) zero at dead taps, q (P,)."""
 
     points: Indices
     live: NDArray[np.bool_]
