@@ -23,8 +23,8 @@ from tapband.nouns.campaign import Campaign
 from tapband.nouns.errors import QuestionError
 from tapband.questions.latents import Latents, from_arrays, latents_of, to_arrays
 from tapband.questions.statement import statements
-from tapband.reduce import Reduced, reduce_campaign
-from tapband.reduce.undeclared import NO_WALL_CORRECTION, NOT_TOTAL_DRAG, undeclared
+from tapband.reduction import Reduced, reduce_campaign
+from tapband.reduction.undeclared import NO_WALL_CORRECTION, NOT_TOTAL_DRAG, undeclared
 
 if TYPE_CHECKING:
     import pandas as pd

@@ -6,7 +6,7 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
-from tapband.reduce import Reduced
+from tapband.reduction import Reduced
 
 Array = NDArray[np.float64]
 

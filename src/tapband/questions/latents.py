@@ -12,7 +12,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from tapband.nouns.errors import QuestionError
-from tapband.reduce import Reduced
+from tapband.reduction import Reduced
 
 Array = NDArray[np.float64]
 

@@ -7,7 +7,7 @@ from __future__ import annotations
 
 import numpy as np
 
-from tapband.reduce import Reduced
+from tapband.reduction import Reduced
 
 STATED = ("cn", "ct", "cm", "cl", "cd_pressure")
 

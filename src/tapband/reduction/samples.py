@@ -10,8 +10,8 @@ from numpy.typing import NDArray
 from tapband.experiment.chain import Inputs, evaluate
 from tapband.nouns.campaign import Campaign, Points, Rows
 from tapband.probability.series import batch_covariance
-from tapband.reduce.corrections import Corrected
-from tapband.reduce.live_sets import LiveSet
+from tapband.reduction.corrections import Corrected
+from tapband.reduction.live_sets import LiveSet
 
 Array = NDArray[np.float64]
 

@@ -13,7 +13,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from tapband.probability.montecarlo import MonteCarlo, run
-from tapband.reduce.problem import CampaignProblem
+from tapband.reduction.problem import CampaignProblem
 
 if TYPE_CHECKING:
     from distributed import Client

@@ -14,14 +14,14 @@ from tapband.experiment.jacobian import jacobian
 from tapband.experiment.rule import concerns, refused
 from tapband.experiment.stream import Stream, solve
 from tapband.nouns.campaign import Campaign, Points
-from tapband.reduce.automatic import automatic, scatter
-from tapband.reduce.corrections import Corrected, correct
-from tapband.reduce.live_sets import LiveSet, contour_of, live_sets
-from tapband.reduce.loads import Loaded, load
-from tapband.reduce.nominal import Nominal, nominal_of
-from tapband.reduce.problem import CampaignProblem
-from tapband.reduce.samples import sample_scatter
-from tapband.reduce.sensitivities import At, sensitivities
+from tapband.reduction.automatic import automatic, scatter
+from tapband.reduction.corrections import Corrected, correct
+from tapband.reduction.live_sets import LiveSet, contour_of, live_sets
+from tapband.reduction.loads import Loaded, load
+from tapband.reduction.nominal import Nominal, nominal_of
+from tapband.reduction.problem import CampaignProblem
+from tapband.reduction.samples import sample_scatter
+from tapband.reduction.sensitivities import At, sensitivities
 
 Array = NDArray[np.float64]
 

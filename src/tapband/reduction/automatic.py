@@ -11,8 +11,8 @@ from tapband.experiment.bounds import edge_half_widths, rule_half_widths, spacin
 from tapband.nouns.campaign import Campaign, Closure
 from tapband.nouns.problem import Family
 from tapband.nouns.source import Shape
-from tapband.reduce.live_sets import LiveSet
-from tapband.reduce.loads import Entry, Loaded
+from tapband.reduction.live_sets import LiveSet
+from tapband.reduction.loads import Entry, Loaded
 
 Array = NDArray[np.float64]
 

@@ -10,8 +10,8 @@ from numpy.typing import NDArray
 from tapband.experiment.chain import MEASURED
 from tapband.nouns.campaign import Campaign, Points
 from tapband.nouns.source import Source
-from tapband.reduce.loads import PER_UNIT, middle, ports_of, unit_of
-from tapband.reduce.nominal import Nominal
+from tapband.reduction.loads import PER_UNIT, middle, ports_of, unit_of
+from tapband.reduction.nominal import Nominal
 
 Array = NDArray[np.float64]
 

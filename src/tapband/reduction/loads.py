@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 from tapband.nouns.campaign import Campaign, Points
 from tapband.nouns.problem import Family
 from tapband.nouns.source import COMMON, INDEPENDENT, Scale, Shape, Size, Source
-from tapband.reduce.nominal import Nominal
+from tapband.reduction.nominal import Nominal
 
 Array = NDArray[np.float64]
 Indices = NDArray[np.int64]

@@ -15,8 +15,8 @@ from tapband.nouns.campaign import Campaign
 from tapband.probability.coverage import agreement
 from tapband.probability.linearised import Linearised, coverage_factor, propagate
 from tapband.probability.montecarlo import MonteCarlo, run
-from tapband.reduce.assemble import Assembled, assemble
-from tapband.reduce.cluster import run_on
+from tapband.reduction.assemble import Assembled, assemble
+from tapband.reduction.cluster import run_on
 
 if TYPE_CHECKING:
     from distributed import Client

@@ -9,7 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from tapband.experiment.jacobian import Jacobian
-from tapband.reduce.loads import Entry, Loaded
+from tapband.reduction.loads import Entry, Loaded
 
 Array = NDArray[np.float64]
 Indices = NDArray[np.int64]

@@ -10,8 +10,8 @@ from numpy.typing import NDArray
 
 from tapband.experiment.chain import Equation, Inputs, evaluate, prandtl_glauert, stream_of
 from tapband.nouns.problem import Draws, Family
-from tapband.reduce.live_sets import LiveSet
-from tapband.reduce.loads import Entry, Loaded
+from tapband.reduction.live_sets import LiveSet
+from tapband.reduction.loads import Entry, Loaded
 
 Array = NDArray[np.float64]
 Indices = NDArray[np.int64]
