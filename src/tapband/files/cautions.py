@@ -20,8 +20,8 @@ def warn_of_sources(
     for source in sources:
         if "chord" in source.acts_on and not (section.contour_in_lengths or taps.placed_in_lengths):
             findings.warn(
-                f"source {shown(source.name)} acts on the Reynolds number alone: contour and taps are stated in "
-                "fractions of the chord"
+                f"source {shown(source.name)} acts on the Reynolds number alone: contour and taps are "
+                "stated in fractions of the chord"
             )
         if points is not None:
             _warn_of_gauge(source, taps, points, channels, arrangement, findings)
@@ -51,9 +51,9 @@ def _warn_of_gauge(
         past = np.abs(values) > scales
         if np.any(past):
             findings.warn(
-                f"source {shown(source.name)} is per cent of the reading, and {act} readings stand in the table as "
-                "absolute pressures beyond the full scale: a gauge instrument reads the difference from its "
-                "reference; state the size per cent of full scale, or give gauge readings"
+                f"source {shown(source.name)} is per cent of the reading, and {act} readings stand in the "
+                "table as absolute pressures beyond the full scale: a gauge instrument reads the difference "
+                "from its reference; state the size per cent of full scale, or give gauge readings"
             )
 
 
@@ -68,8 +68,8 @@ def _warn_of_noise(sources: Sequence[Source], findings: Findings) -> None:
     ]
     if noise:
         findings.warn(
-            "points have samples, whose scatter is counted; noise from point to point declared beside them is "
-            f"counted twice: {listed(shown(name) for name in noise)}"
+            "points have samples, whose scatter is counted; noise from point to point declared beside them "
+            f"is counted twice: {listed(shown(name) for name in noise)}"
         )
 
 
@@ -84,5 +84,6 @@ def warn_of_reduction(reduction: Reduction, sources: Sequence[Source], findings:
     stated = any("trailing-edge coefficient" in source.acts_on for source in sources)
     if stated and isinstance(reduction.trailing_edge, Closure) and reduction.trailing_edge.standard > 0.0:
         findings.warn(
-            "reduction.trailing_edge.standard is set aside: a declared source acts on the trailing-edge coefficient"
+            "reduction.trailing_edge.standard is set aside: a declared source acts on the "
+            "trailing-edge coefficient"
         )

@@ -25,7 +25,7 @@ def text_of(value: object) -> str:
 
 
 def numbers_of(
-    columns: Sequence[Sequence[object]], names: Sequence[str], lines: NDArray[np.int64], file: str,
+    columns: Sequence[Sequence[object] | Array], names: Sequence[str], lines: NDArray[np.int64], file: str,
     findings: Findings,
 ) -> Array:  # fmt: skip
     """Typed cells of some columns as numbers (R, k), NaN where missing; what is no finite number is noted."""

@@ -60,17 +60,14 @@ def _columns(channel: ChannelPart, where: str, taps: TapList | None, folder: Fol
             )  # fmt: skip
         elif value not in taps.columns[key]:
             folder.findings.warn(
-                f"{folder.at(where)}: no tap has {key} {shown(value)}, so this channel shares no error by {key}"
+                f"{folder.at(where)}: no tap has {key} {shown(value)}, so it shares no error by {key}"
             )
     return columns
 
 
 def _scale_of_module(module: str, taps: TapList) -> float:
     """The full scale that all taps of a module have [Pa], NaN where they have none or several."""
-    modules = taps.columns.get("module", ())
-    scales = {
-        scale
-        for name, scale, dead in zip(modules, taps.full_scale.tolist(), taps.excluded.tolist(), strict=bool(modules))
-        if name == module and not dead and not isnan(scale)
-    } if modules else set()  # fmt: skip
+    modules = taps.columns.get("module", ("",) * len(taps.names))
+    live = zip(modules, taps.full_scale.tolist(), taps.excluded.tolist(), strict=True)
+    scales = {scale for name, scale, dead in live if name == module and not dead and not isnan(scale)}
     return scales.pop() if len(scales) == 1 else nan

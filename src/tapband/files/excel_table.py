@@ -5,6 +5,7 @@ from __future__ import annotations
 import warnings
 from collections.abc import Iterator, Sequence
 from functools import partial
+from importlib.util import find_spec
 from itertools import islice
 from pathlib import Path
 from typing import Any
@@ -21,9 +22,7 @@ Row = tuple[int, tuple[object, ...]]
 
 def open_excel(path: Path, name: str, findings: Findings) -> Table | None:
     """The table on the first sheet of a workbook, its header read."""
-    try:
-        import openpyxl  # noqa: F401 - asked for here so that its absence gets a message
-    except ImportError:
+    if find_spec("openpyxl") is None:
         findings.add(name, 'needs the extra "excel"', "no openpyxl", "run pip install 'tapband[excel]'")
         return None
     try:

@@ -76,6 +76,6 @@ def _check_angles(
             got = shown(f"{np.degrees(angle):g} deg")
             span = f"{np.degrees(values[0]):g} to {np.degrees(values[-1]):g} deg"
             findings.add(
-                setting.folder.at(f"forecast.alpha[{i + 1}]"), f"must lie within the angles of {name} ({span})", got,
-                "remove the angle or extend the table",
+                setting.folder.at(f"forecast.alpha[{i + 1}]"),
+                f"must lie within the angles of {name} ({span})", got, "remove the angle or extend the table",
             )  # fmt: skip

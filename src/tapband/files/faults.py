@@ -1,6 +1,6 @@
 """Gathers every fault and warning of one pass over an input, so that a user sees them all at once.
 
-A reader of one value knows the rule but not the place: it raises :class:`Refusal`. Whoever knows the place
+A reader of one value knows the rule but not the place: it raises :class:`RuleError`. Whoever knows the place
 catches it through :meth:`Findings.take`.
 """
 
@@ -19,8 +19,8 @@ ALIKE = 8
 """Faults of one kind that are listed; the rest of the kind are counted."""
 
 
-class Refusal(Exception):  # noqa: N818 - it never leaves this package: a fault still without its place
-    """A value that breaks a rule: the rule, what stood there and what to do."""
+class RuleError(Exception):
+    """A value that breaks a rule: the rule, what stood there and what to do. It never leaves this package."""
 
     def __init__(self, rule: str, got: str = "", do: str = "") -> None:
         self.rule, self.got, self.do = rule, got, do
@@ -36,7 +36,7 @@ class Findings:
         self._warnings: list[str] = []
 
     def add(self, where: str, rule: str, got: str = "", do: str = "", *, kind: str = "") -> None:
-        """Note a fault. Of one ``kind`` (where the many belong, say a column) only the first few are listed."""
+        """Note a fault. Of one ``kind`` (a column, say) only the first few are listed."""
         count = self._counts.get((kind, rule), 0)
         if kind:
             self._counts[kind, rule] = count + 1
@@ -53,8 +53,8 @@ class Findings:
         """Give every refusal of the block its place."""
         try:
             yield
-        except Refusal as refusal:
-            self.add(where, refusal.rule, refusal.got, refusal.do, kind=kind)
+        except RuleError as error:
+            self.add(where, error.rule, error.got, error.do, kind=kind)
 
     def take(self, where: str, read: Callable[[], T], default: T) -> T:
         """What ``read`` returns, or ``default`` with its refusal noted at ``where``."""

@@ -187,7 +187,8 @@ def _intervals(part: IntervalsPart, folder: Folder) -> Intervals:
     match = re.fullmatch(r"(plain:)?(\d{1,15})", trials)
     if trials != "auto" and (match is None or int(match[2]) < FEWEST_TRIALS):
         folder.findings.add(
-            folder.at("intervals.trials"), f'must be "auto", a whole number from {FEWEST_TRIALS} up, or "plain:N"',
+            folder.at("intervals.trials"),
+            f'must be "auto", a whole number from {FEWEST_TRIALS}, or "plain:N"',
             shown(part.trials), 'write "auto"',
         )  # fmt: skip
     return Intervals(level=part.level, trials=trials, seed=part.seed)

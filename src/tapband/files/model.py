@@ -49,7 +49,10 @@ class ReadingsPart(Part):
 
 
 class ChannelPart(Part):
-    """A stream channel that hangs on a module, as one more port of it. Other keys: grouping columns of taps."""
+    """A stream channel that hangs on a module, as one more port of it.
+
+    Further keys are grouping columns of the tap table.
+    """
 
     model_config = ConfigDict(strict=True, extra="allow", frozen=True)
 

@@ -11,7 +11,7 @@ import numpy as np
 
 from tapband.files.cells import numbers_of, text_of
 from tapband.files.faults import Findings, shown
-from tapband.files.tables import Block, Table, read_header
+from tapband.files.tables import Array, Block, Table, read_header
 
 ROWS = 4096
 
@@ -59,13 +59,13 @@ def _blocks(
             yield Block(lines=lines, numbers=found, texts=cells)
 
 
-def _numeric(column: Any) -> Sequence[object]:
+def _numeric(column: Any) -> Sequence[object] | Array:
     """A column as an array of floats where it is numeric, else its values."""
     import pyarrow
 
     kind = column.type
     if pyarrow.types.is_floating(kind) or pyarrow.types.is_integer(kind):
         values: Any = column.cast(pyarrow.float64(), safe=False).to_numpy(zero_copy_only=False)
-        return np.asarray(values, dtype=np.float64)  # type: ignore[return-value]
+        return np.asarray(values, dtype=np.float64)
     cells: list[object] = column.to_pylist()
     return cells

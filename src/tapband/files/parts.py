@@ -69,8 +69,9 @@ def read_parts(text: CampaignText, findings: Findings) -> Parts:
 
     return Parts(
         title=document["title"] if isinstance(document.get("title"), str) else "",
-        section=one(SectionPart, "section"), taps=one(TapsPart, "taps"), readings=one(ReadingsPart, "readings"),
-        stream=one(StreamPart, "stream"), reduction=one(ReductionPart, "reduction") or ReductionPart(),
+        section=one(SectionPart, "section"), taps=one(TapsPart, "taps"),
+        readings=one(ReadingsPart, "readings"), stream=one(StreamPart, "stream"),
+        reduction=one(ReductionPart, "reduction") or ReductionPart(),
         intervals=one(IntervalsPart, "intervals") or IntervalsPart(),
         sources=_many(SourcePart, "source", text, findings), source_names=_names(document),
         polar=one(PolarPart, "polar") or PolarPart(), limits=many(LimitPart, "limit"),

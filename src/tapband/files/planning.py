@@ -4,11 +4,12 @@ from __future__ import annotations
 
 import re
 from collections.abc import Sequence
+from functools import partial
 from math import inf, nan, pi, radians
 
 import numpy as np
 
-from tapband.files.faults import Refusal, nearest, offer, shown
+from tapband.files.faults import RuleError, nearest, offer, shown
 from tapband.files.model_plan import ForecastPart, LayoutPart, LimitPart, PolarPart, TargetPart, WiringPart
 from tapband.files.sources import Setting
 from tapband.files.units import ANGLE, PRESSURE, TEMPERATURE, TIME, bare, chords, fraction, quantity, split
@@ -103,7 +104,7 @@ def _range(
         return None
     findings = setting.folder.findings
     ends = [
-        findings.take(setting.folder.at(f"{place}[{i + 1}]"), lambda end=end: quantity(end, ANGLE), nan)  # type: ignore[misc]
+        findings.take(setting.folder.at(f"{place}[{i + 1}]"), partial(quantity, end, ANGLE), nan)
         for i, end in enumerate(value)
     ]
     low, high = ends
@@ -135,7 +136,7 @@ def read_forecast(part: ForecastPart, setting: Setting) -> Forecast | None:
     findings, at = setting.folder.findings, setting.folder.at
     before = len(findings)
     alpha = [
-        findings.take(at(f"forecast.alpha[{i + 1}]"), lambda v=v: quantity(v, ANGLE), nan)  # type: ignore[misc]
+        findings.take(at(f"forecast.alpha[{i + 1}]"), partial(quantity, v, ANGLE), nan)
         for i, v in enumerate(part.alpha)
     ]
     for i, angle in enumerate(alpha):
@@ -175,13 +176,13 @@ def _fluctuation(text: str | None, setting: Setting) -> float | None:
     def read() -> float:
         number, name = split(text)
         if not re.fullmatch(r"%\s*of\s+(the\s+)?dynamic\s+pressure", name):
-            raise Refusal(
+            raise RuleError(
                 "must be per cent of dynamic pressure",
                 shown(text),
                 f'write "{bare(number)} % of dynamic pressure"',
             )
         if number < 0.0:
-            raise Refusal("must not be negative", shown(text), "write it without the sign")
+            raise RuleError("must not be negative", shown(text), "write it without the sign")
         return number / 100.0
 
     return setting.folder.findings.take(setting.folder.at("forecast.fluctuation"), read, None)
@@ -198,8 +199,8 @@ def read_layout(part: LayoutPart, setting: Setting) -> Layout:
         )
     if spacing * part.taps > 2.0 * part.rearmost:
         findings.add(
-            at("layout.smallest_spacing"), f"must leave room for {part.taps} taps on both surfaces", shown(value),
-            "write a smaller spacing or fewer taps",
+            at("layout.smallest_spacing"), f"must leave room for {part.taps} taps on both surfaces",
+            shown(value), "write a smaller spacing or fewer taps",
         )  # fmt: skip
     if len(part.fixed) > part.taps:
         findings.add(

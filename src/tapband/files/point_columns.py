@@ -10,7 +10,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from tapband.files.acts import Arrangement
-from tapband.files.faults import Findings, Refusal, listed
+from tapband.files.faults import Findings, RuleError, listed
 from tapband.files.tables import Array, Column, Table, column_unit, need
 from tapband.files.taps import TapList
 from tapband.files.units import ANGLE, NUMBER, PRESSURE, TEMPERATURE, unit
@@ -109,7 +109,8 @@ def _tap_columns(table: Table, taps: TapList | None, findings: Findings) -> list
         elif not excluded and name:
             findings.add(
                 table.file, f"needs the column {name} (a tap of {taps.table.file})", "none of that name",
-                f"add the column {name}, or list the tap in taps.excluded", kind=f"{table.file}, columns of taps",
+                f"add the column {name}, or list the tap in taps.excluded",
+                kind=f"{table.file}, columns of taps",
             )  # fmt: skip
     return found
 
@@ -143,5 +144,5 @@ def _warn_of_strays(
 def _is_pressure(column: Column) -> bool:
     try:
         return bool(column.unit) and unit(column.unit).dimension == PRESSURE
-    except Refusal:
+    except RuleError:
         return False

@@ -8,11 +8,12 @@ from __future__ import annotations
 import re
 from collections.abc import Callable
 from dataclasses import dataclass
+from functools import partial
 from math import inf, sqrt
 from statistics import NormalDist
 
 from tapband.files.acts import ACTS, CHORDS, Arrangement
-from tapband.files.faults import Findings, Refusal, shown
+from tapband.files.faults import Findings, RuleError, shown
 from tapband.files.model import StatedPart
 from tapband.files.units import PRESSURE, bare, chords, fraction, quantity, split
 from tapband.nouns.source import Scale, Shape, Size, Term, divisor_of
@@ -43,7 +44,7 @@ class Measured:
         """A symmetric term of this half-width (or standard uncertainty)."""
         size, scale = self.size(value)
         if size < 0.0:
-            raise Refusal("must not be negative", shown(value), "write it without the sign")
+            raise RuleError("must not be negative", shown(value), "write it without the sign")
         return Term(lower=-size, upper=size, scale=scale)
 
     def size(self, value: object) -> tuple[float, Scale]:
@@ -61,12 +62,12 @@ class Measured:
         if scale is None:
             do = f'write "{bare(number)} % of reading"'
             do += f' or "{bare(number)} % of full scale"' if self.dimension == PRESSURE else " or a size"
-            raise Refusal("must say per cent of what", shown(value), do)
+            raise RuleError("must say per cent of what", shown(value), do)
         unread = [act for act in self.acts if not self.arrangement.channel(act)]
         if scale is Scale.READING and unread:
-            raise Refusal(f"{unread[0]} has no reading here", shown(value), "write an absolute size")
+            raise RuleError(f"{unread[0]} has no reading here", shown(value), "write an absolute size")
         if scale is Scale.FULL_SCALE and self.dimension != PRESSURE:
-            raise Refusal(f"{self.acts[0]} has no full scale", shown(value), "write an absolute size")
+            raise RuleError(f"{self.acts[0]} has no full scale", shown(value), "write an absolute size")
         return scale
 
 
@@ -165,8 +166,8 @@ def _terms(
         return (term,) if term else ()
     places = [f"{at(name)}[{i + 1}]" for i in range(len(value))]
     found = [
-        findings.take(place, lambda v=v: of.term(v), None) for place, v in zip(places, value, strict=True)
-    ]  # type: ignore[misc]
+        findings.take(place, partial(of.term, item), None) for place, item in zip(places, value, strict=True)
+    ]
     return tuple(term for term in found if term is not None)
 
 

@@ -98,8 +98,8 @@ def _option(
     for name in slot.replaces:
         if name not in given:
             findings.add(
-                setting.folder.at(whole), f"needs a source {shown(name)}, which the slot replaces", shown(given),
-                f"add {{ name = {shown(name)}, ... }}; size zero where it has none",
+                setting.folder.at(whole), f"needs a source {shown(name)}, which the slot replaces",
+                shown(given), f"add {{ name = {shown(name)}, ... }}; size zero where it has none",
             )  # fmt: skip
     sources: list[Source] = []
     for i, part in enumerate(option.sources):

@@ -7,7 +7,7 @@ from dataclasses import dataclass, field
 from math import isfinite, nan
 
 from tapband.files.acts import ACTS, AUTOMATIC, Arrangement
-from tapband.files.faults import Refusal, listed, offer, shown
+from tapband.files.faults import RuleError, listed, offer, shown
 from tapband.files.folder import Folder
 from tapband.files.model import StatedPart
 from tapband.files.points import PointList
@@ -137,7 +137,7 @@ def _sharing(text: str) -> str:
         return text
     column = text[3:].strip() if text.startswith("by ") else ""
     if not column or column in {INDEPENDENT, COMMON}:
-        raise Refusal('must be "independent", "common" or "by COLUMN"', shown(text), offer(text, _KINDS))
+        raise RuleError('must be "independent", "common" or "by COLUMN"', shown(text), offer(text, _KINDS))
     return column
 
 
@@ -161,8 +161,8 @@ def _across_taps(
     found = findings.take(place.at("across_taps"), lambda: _sharing(stated), "")
     if found == INDEPENDENT and len(acts) > 1:
         findings.add(
-            place.at("across_taps"), "a list of quantities needs one error that its taps share", shown(stated),
-            'write "common" or "by module", or split the source',
+            place.at("across_taps"), "a list of quantities needs one error that its taps share",
+            shown(stated), 'write "common" or "by module", or split the source',
         )  # fmt: skip
     taps = setting.taps
     if found in {"", INDEPENDENT, COMMON} or taps is None:
@@ -179,8 +179,8 @@ def _across_taps(
         for line, cell, dead in zip(taps.lines, taps.columns[found], taps.excluded.tolist(), strict=True):
             if not cell and not dead:
                 findings.add(
-                    taps.table.at(line, found), f"must not be blank: {shown(part.name)} is shared by it", "nothing",
-                    "write the group of the tap", kind=taps.table.of(found),
+                    taps.table.at(line, found), f"must not be blank: {shown(part.name)} is shared by it",
+                    "nothing", "write the group of the tap", kind=taps.table.of(found),
                 )  # fmt: skip
     return found
 
@@ -221,16 +221,17 @@ def _across_points(part: StatedPart, place: Place, setting: Setting) -> str:
         )  # fmt: skip
     elif found in points.varying:
         findings.add(
-            table.at(points.varying[found], found), f"must stay the same in all rows of a point: {shown(part.name)} "
-            "is shared by it", "another value than in the rows above", "correct it, or share by another column",
+            table.at(points.varying[found], found),
+            f"must stay the same in all rows of a point: {shown(part.name)} is shared by it",
+            "another value than in the rows above", "correct it, or share by another column",
         )  # fmt: skip
     elif table.file + found not in setting.blanks:
         setting.blanks.add(table.file + found)
         for line, cell in zip(points.lines, points.groups[found], strict=True):
             if not cell:
                 findings.add(
-                    table.at(line, found), f"must not be blank: {shown(part.name)} is shared by it", "nothing",
-                    "write the group of the point", kind=table.of(found),
+                    table.at(line, found), f"must not be blank: {shown(part.name)} is shared by it",
+                    "nothing", "write the group of the point", kind=table.of(found),
                 )  # fmt: skip
     return found
 
@@ -290,6 +291,7 @@ def _check_ports_scale(source: Source, place: Place, setting: Setting) -> None:
         shares = source.across_taps == COMMON or source.across_taps in channel.columns
         if shares and not isfinite(channel.full_scale):
             setting.folder.findings.add(
-                place.whole, "needs the full scale that its per cent are of", f"none for {name}, a port of the same module",
+                place.whole, "needs the full scale that its per cent are of",
+                f"none for {name}, a port of the same module",
                 f'write {name} = {{ ..., full_scale = "..." }} in [stream.channels]',
             )  # fmt: skip

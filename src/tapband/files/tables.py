@@ -11,7 +11,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from tapband.files.campaign_text import is_readable
-from tapband.files.faults import Findings, Refusal, nearest, shown
+from tapband.files.faults import Findings, RuleError, nearest, shown
 from tapband.files.units import EXAMPLE, NUMBER, Unit, unit
 
 Array = NDArray[np.float64]
@@ -152,16 +152,16 @@ def column_unit(table: Table, column: Column, dimension: str, findings: Findings
     with findings.at(table.of(column.name), kind=kind):
         if dimension == NUMBER:
             if column.unit not in {"", "-", "1"}:
-                raise Refusal(
+                raise RuleError(
                     "takes no unit", shown(f"{column.name} [{column.unit}]"), f'write "{column.name}"'
                 )
             return plain
         sample = f'write "{column.name} [{EXAMPLE[dimension]}]"'
         if not column.unit:
-            raise Refusal("needs a unit", shown(column.name), sample)
+            raise RuleError("needs a unit", shown(column.name), sample)
         found = unit(column.unit)
         if found.dimension != dimension:
             article = "an" if dimension[0] in "aeiou" else "a"
-            raise Refusal(f"must be {article} {dimension}", shown(f"{column.name} [{column.unit}]"), sample)
+            raise RuleError(f"must be {article} {dimension}", shown(f"{column.name} [{column.unit}]"), sample)
         return found
     return plain

@@ -74,7 +74,8 @@ def read_taps(
     x, y = contour.point(s)
     taps = Taps(
         names=names, s=frozen(s), x=frozen(x), y=frozen(y), upper=upper, excluded=excluded,
-        full_scale=full_scale, columns=columns, placed_in_lengths=any(in_lengths(column) for column in places),
+        full_scale=full_scale, columns=columns,
+        placed_in_lengths=any(in_lengths(column) for column in places),
     )  # fmt: skip
     return found, taps
 
@@ -129,8 +130,8 @@ def _check_names(
             )  # fmt: skip
         elif name in taken:
             findings.add(
-                table.at(line, "tap"), "must not be the name of another column of the points table", shown(name),
-                "rename the tap",
+                table.at(line, "tap"), "must not be the name of another column of the points table",
+                shown(name), "rename the tap",
             )  # fmt: skip
         seen.setdefault(name, line)
 
@@ -245,7 +246,8 @@ def _check_agreement(
         for row in np.flatnonzero(clear & np.isfinite(s) & (upper != (s > 0.0))):
             findings.add(
                 table.at(int(block.lines[row]), "surface"), "must agree with the place of the tap",
-                shown("upper" if upper[row] else "lower"), "correct the surface or the place", kind=table.file,
+                shown("upper" if upper[row] else "lower"), "correct the surface or the place",
+                kind=table.file,
             )  # fmt: skip
     if way != "s" and "s" in at:
         for row in np.flatnonzero(np.abs(at["s"] - s) > 5.0 * REACH):

@@ -15,7 +15,7 @@ from functools import cache
 from math import isfinite, pi
 from typing import Any
 
-from tapband.files.faults import Refusal, nearest, shown
+from tapband.files.faults import RuleError, nearest, shown
 
 PRESSURE, LENGTH, ANGLE, TEMPERATURE, TIME, NUMBER = (
     "pressure",
@@ -90,12 +90,12 @@ _GRAMMAR = re.compile(
 def unit(text: str) -> Unit:
     """The unit of this name.
 
-    Raises :class:`Refusal` for an unknown unit, and for an inch of water that does not say which.
+    Raises :class:`RuleError` for an unknown unit, and for an inch of water that does not say which.
     """
     if text in TABLE:
         return TABLE[text]
     if _WATER.fullmatch(text):
-        raise Refusal(
+        raise RuleError(
             "must say which inch of water: three in use differ by up to 0.1 %",
             shown(text),
             'write "inH2O_4C" (249.082 Pa), "inH2O_60F" (248.84 Pa) or "inH2O_conventional" (249.0889 Pa)',
@@ -104,7 +104,7 @@ def unit(text: str) -> Unit:
     if found is None:
         near = nearest(text, TABLE)
         do = f'write "{near}"' if near else 'write a unit such as "Pa", "kPa", "mm", "deg" or "K"'
-        raise Refusal("is no unit that is known", shown(text), do)
+        raise RuleError("is no unit that is known", shown(text), do)
     return found
 
 
@@ -145,11 +145,11 @@ _NUMBER = re.compile(r"\s*([+-]?(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?)\s*(.*?)\s*
 def split(value: object) -> tuple[float, str]:
     """The number and the unit text (may be empty) of a value such as ``"35 Pa"`` or ``35``."""
     if isinstance(value, bool) or not isinstance(value, (int, float, str)):
-        raise Refusal("must be a number with its unit in quotes", shown(value), 'write for example "35 Pa"')
+        raise RuleError("must be a number with its unit in quotes", shown(value), 'write for example "35 Pa"')
     if isinstance(value, str):
         match = _NUMBER.fullmatch(value)
         if match is None or match[2][:1] in {",", "±"} or value.strip()[:1] == "±":
-            raise Refusal(
+            raise RuleError(
                 "must begin with a number (decimal point, no ± sign)",
                 shown(value),
                 'write for example "35 Pa"',
@@ -158,7 +158,7 @@ def split(value: object) -> tuple[float, str]:
     else:
         number, rest = _as_float(value), ""
     if not isfinite(number):
-        raise Refusal("must be finite", shown(value), "write a finite number")
+        raise RuleError("must be finite", shown(value), "write a finite number")
     return number, rest
 
 
@@ -180,19 +180,19 @@ def quantity(value: object, dimension: str, *, also: str = "") -> float:
     number, name = split(value)
     if dimension == NUMBER:
         if name:
-            raise Refusal("takes a plain number", shown(value), f'write "{bare(number)}"')
+            raise RuleError("takes a plain number", shown(value), f'write "{bare(number)}"')
         return number
     example = f'"{bare(number)} {EXAMPLE[dimension]}"' + (f" or {also}" if also else "")
     if not name:
-        raise Refusal("needs a unit", shown(value), f"write {example}")
+        raise RuleError("needs a unit", shown(value), f"write {example}")
     if name.startswith("%"):
-        raise Refusal(f"must be {_PHRASE[dimension]}", shown(value), f"write {example}")
+        raise RuleError(f"must be {_PHRASE[dimension]}", shown(value), f"write {example}")
     try:
         found = unit(name)
-    except Refusal as refusal:
-        raise Refusal(refusal.rule, shown(value), refusal.do) from None
+    except RuleError as error:
+        raise RuleError(error.rule, shown(value), error.do) from None
     if found.dimension != dimension:
-        raise Refusal(f"must be {_PHRASE[dimension]}", shown(value), f"write {example}")
+        raise RuleError(f"must be {_PHRASE[dimension]}", shown(value), f"write {example}")
     return found.si(number)
 
 
@@ -200,7 +200,7 @@ def fraction(value: object) -> float:
     """A fraction: ``"25 %"`` or ``0.25``."""
     number, name = split(value)
     if name not in {"", "%"}:
-        raise Refusal("takes per cent or a plain fraction", shown(value), f'write "{bare(number)} %"')
+        raise RuleError("takes per cent or a plain fraction", shown(value), f'write "{bare(number)} %"')
     return number / 100.0 if name else number
 
 

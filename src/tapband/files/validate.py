@@ -9,7 +9,7 @@ from typing import Any, Generic, TypeVar
 
 from pydantic import BaseModel, ValidationError
 
-from tapband.files.faults import Findings, Refusal, nearest, offer, shown
+from tapband.files.faults import Findings, RuleError, nearest, offer, shown
 from tapband.files.fields import Part
 
 M = TypeVar("M", bound=Part)
@@ -86,20 +86,20 @@ def _note(
         said.add(loc)
         owner = _plain(loc[:-1])
         whole = label if label and not owner else dotted((*path, *owner))
-        refusal = _refusal(model, loc, item["type"], item.get("ctx", {}), item["input"], item["msg"])
+        found = _rule_broken(model, loc, item["type"], item.get("ctx", {}), item["input"], item["msg"])
         where = whole if item["type"] == "missing" else dotted((*path, *loc))
-        findings.add(file + (where or "top level"), refusal.rule, refusal.got, refusal.do)
+        findings.add(file + (where or "top level"), found.rule, found.got, found.do)
 
 
-def _refusal(
+def _rule_broken(
     model: type[Part], loc: Path, kind: str, ctx: Mapping[str, Any], got: object, text: str
-) -> Refusal:
+) -> RuleError:
     key = str(loc[-1]) if loc else ""
     if kind == "extra_forbidden":
-        return Refusal("unknown key", shown(key), _offer_key(key, _keys(model, loc[:-1])))
+        return RuleError("unknown key", shown(key), _offer_key(key, _keys(model, loc[:-1])))
     sample = _example(model, loc)
     if kind == "missing":
-        return Refusal(f"needs {key}", "nothing", f"write {key} = {sample}")
+        return RuleError(f"needs {key}", "nothing", f"write {key} = {sample}")
     do = f"write {sample}" if sample else ""
     match kind:
         case "literal_error":
@@ -107,28 +107,28 @@ def _refusal(
                 word.strip().strip("'") for word in str(ctx["expected"]).replace(" or ", ", ").split(", ")
             ]
             if all(word.isdigit() for word in known):
-                return Refusal(f"must be {' or '.join(known)}", shown(got), f"write {known[0]}")
+                return RuleError(f"must be {' or '.join(known)}", shown(got), f"write {known[0]}")
             one = ", ".join(shown(word) for word in known)
-            return Refusal(f"must be one of {one}", shown(got), offer(str(got), known))
+            return RuleError(f"must be one of {one}", shown(got), offer(str(got), known))
         case "string_type" | "string_too_short" | "list_type" if kind != "list_type" or "Text" in text:
-            return Refusal("must be text in quotes", shown(got), do)
+            return RuleError("must be text in quotes", shown(got), do)
         case "list_type":
-            return Refusal("must be a list", shown(got), do)
+            return RuleError("must be a list", shown(got), do)
         case "float_type" | "int_type" | "int_from_float":
             whole = "whole " if kind.startswith("int") else ""
-            return Refusal(f"must be a {whole}number", shown(got), do)
+            return RuleError(f"must be a {whole}number", shown(got), do)
         case "finite_number":
-            return Refusal("must be finite", shown(got), do)
+            return RuleError("must be finite", shown(got), do)
         case "too_short" | "too_long":
             most = ctx.get("min_length", ctx.get("max_length"))
-            return Refusal(f"must hold {'at least ' if kind == 'too_short' else ''}{most}", shown(got), do)
+            return RuleError(f"must hold {'at least ' if kind == 'too_short' else ''}{most}", shown(got), do)
         case "greater_than" | "greater_than_equal" | "less_than" | "less_than_equal":
             word = {"greater_than": "above", "greater_than_equal": "at least", "less_than": "below"}
             bound = next(iter(ctx.values()))
-            return Refusal(f"must be {word.get(kind, 'at most')} {bound:g}", shown(got), do)
+            return RuleError(f"must be {word.get(kind, 'at most')} {bound:g}", shown(got), do)
         case "model_type" | "dict_type" | "model_attributes_type":
-            return Refusal("must be a table", shown(got), do)
-    return Refusal(text[:1].lower() + text[1:], shown(got), do)
+            return RuleError("must be a table", shown(got), do)
+    return RuleError(text[:1].lower() + text[1:], shown(got), do)
 
 
 def _offer_key(key: str, known: Sequence[str]) -> str:
