@@ -10,16 +10,18 @@ from __future__ import annotations
 import hashlib
 from collections.abc import Sequence
 from dataclasses import dataclass, field
+from functools import lru_cache
 from math import inf, radians
 
 import numpy as np
 import pandas as pd
 from scipy.special import stdtrit
 
-from exact_sections import section_of
+from exact_sections import KarmanTrefftz, section_of
 from tapband.nouns.campaign import Campaign, Intervals, Points, Reduction, Section, Taps
 from tapband.nouns.plan import Plan, Target
 from tapband.nouns.source import Size, Source, Term
+from tapband.report.headline import keys
 
 COEFFICIENTS = ("cn", "ct", "cm", "cl", "cd_pressure")
 LEVEL = 0.95
@@ -46,6 +48,7 @@ class Synthetic:
     meta: dict[str, object]
     arrays: dict[str, np.ndarray] = field(default_factory=dict)
     exit_status: int = 0
+    reduced: None = None
 
 
 def synthetic(
@@ -80,14 +83,20 @@ def synthetic(
     )
 
 
+@lru_cache
+def _shape() -> KarmanTrefftz:
+    return section_of(0.12, 0.02)
+
+
 def _source_names(campaign: Campaign) -> list[str]:
     return [source.name for source in campaign.sources] + list(AUTOMATIC)
 
 
 def _campaign(alpha: np.ndarray, half: int, taps: int, count: int, names: list[str]) -> Campaign:
-    shape = section_of(0.12, 0.02)
+    shape = _shape()
     x, y = shape.contour(201)
-    places = shape.taps(taps, "cosine", 0.97)
+    places = shape.taps(taps | 1, "cosine", 0.97)  # an odd number: one at the nose
+    taps = len(places.x)
     declared = [SOURCES[i % len(SOURCES)] for i in range(count - len(AUTOMATIC))]
     labels = [name if i < len(SOURCES) else f"{name} {i}" for i, (name, *_) in enumerate(declared)]
     labels[: min(len(names), len(labels))] = names[: len(labels)]
@@ -164,7 +173,7 @@ def _coefficients(
     frame = labels.assign(
         alpha=alpha, alpha_u=0.031, mach=0.15, mach_u=0.0004, q=1560.0, q_u=4.2, reynolds=1.37e6, taps_used=41
     )
-    exact = section_of(0.12, 0.02).coefficients(np.radians(alpha))
+    exact = _shape().coefficients(np.radians(alpha))
     u = np.sqrt((c**2).sum(-1))
     nu = u**4 / (c**4 / dof).sum(-1)
     k = stdtrit(nu, 0.5 + 0.5 * LEVEL)
@@ -187,7 +196,7 @@ def _coefficients(
 
 
 def _cp(campaign: Campaign, labels: pd.DataFrame, alpha: np.ndarray) -> pd.DataFrame:
-    shape = section_of(0.12, 0.02)
+    shape = _shape()
     theta = shape.theta_at(campaign.taps.x, campaign.taps.upper)
     cp = shape.cp(theta, np.radians(alpha))
     n, p = cp.shape[1], cp.shape[0]
@@ -237,5 +246,8 @@ def _meta(campaign: Campaign, frame: pd.DataFrame) -> dict[str, object]:
         "warnings": ["points.csv, point P001: tap T03 has no reading; left out of this point's integration"],
         "undeclared": ["hole size", "contour as built", "spanwise uniformity", "walls"],
         "cautions": ["nothing is corrected for walls", "cd_pressure holds no friction"],
-        "stated": [f"cl = {v:.4f} ± {u:.4f}" for v, u in zip(frame["cl"], frame["cl_U"], strict=True)],
+        "stated": {
+            key: [f"cl = {v:.4f} ± {u:.4f}, an expanded uncertainty."]
+            for key, v, u in zip(keys(frame), frame["cl"], frame["cl_U"], strict=True)
+        },
     }  # fmt: skip

@@ -11,7 +11,7 @@ import numpy as np
 from tapband.files.write_columns import COEFFICIENTS
 from tapband.files.write_text import one_line
 from tapband.report.headline import Headline, Verdict, coefficients_of, headline, keys, verdicts
-from tapband.report.numbers import decimals, fixed, plus_minus, significant
+from tapband.report.rounding import decimals, fixed, plus_minus, significant
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -35,7 +35,8 @@ def print_summary(results: Outcome, folder: Path, console: Console) -> None:
     others = [name for name in COEFFICIENTS if name in shown and name not in FIRST]
     level = results.meta.get("level", 0.95)
     kind = "forecast" if results.meta.get("kind") == "forecast" else "reduced"
-    title = one_line(results.campaign.title or results.campaign.name)
+    campaign = results.campaign
+    title = one_line(campaign.title or campaign.name) if campaign else "results"
     _say(console, f"{title}: {len(frame)} points {kind}, {100 * float(str(level)):g} % intervals")
     console.print(_table(frame, first))
     if others and len(frame) <= ENDS:
@@ -82,7 +83,8 @@ def _column(shown: Headline) -> list[str]:
 
 def _targets(results: Outcome, frame: pd.DataFrame) -> list[str]:
     labels = keys(frame)
-    return [_score(verdict, labels) for verdict in verdicts(frame, results.campaign.plan.targets)]
+    targets = results.campaign.plan.targets if results.campaign else ()
+    return [_score(verdict, labels) for verdict in verdicts(frame, targets)]
 
 
 def _score(verdict: Verdict, labels: Sequence[str]) -> str:

@@ -2,21 +2,32 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
+from functools import partial
 from pathlib import Path
 from typing import TYPE_CHECKING, Protocol
 
 from tapband.files import write
+from tapband.nouns.errors import QuestionError
 
 if TYPE_CHECKING:
     from tapband.nouns.campaign import Campaign
+    from tapband.reduce import Reduced
+
+REPORT = "report.html"
 
 
 class Outcome(write.Outcome, Protocol):
     """What a result holds, as far as showing it goes."""
 
     @property
-    def campaign(self) -> Campaign:
-        """The campaign that was reduced."""
+    def campaign(self) -> Campaign | None:
+        """The campaign that was reduced; None for results read back."""
+        ...
+
+    @property
+    def reduced(self) -> Reduced | None:
+        """What the reduction computed beyond its tables, where that is still at hand."""
         ...
 
     @property
@@ -33,4 +44,13 @@ def publish(
     figures: str | None = None,
 ) -> Path:
     """Write the results into ``folder`` and return it; ``figures`` is "svg", "png", "pdf" or None."""
-    return write.write(results, folder, excel=excel, parquet=parquet)
+    if results.campaign is None:
+        raise QuestionError("report: needs the campaign; got results read from a folder; reduce it again")
+    also: dict[str, Callable[[Path], None]] = {REPORT: partial(_write_report, results, results.campaign)}
+    return write.write(results, folder, excel=excel, parquet=parquet, also=also)
+
+
+def _write_report(results: Outcome, campaign: Campaign, path: Path) -> None:
+    from tapband.report.render import report
+
+    path.write_text(report(results, campaign), encoding="utf-8", errors="replace")
