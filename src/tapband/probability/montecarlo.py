@@ -13,8 +13,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 from tapband.nouns.problem import Problem
-from tapband.probability import plain
+from tapband.probability import accelerated, plain
 from tapband.probability.draws import TILE
+from tapband.probability.model import Model
 from tapband.probability.outcome import MonteCarlo, collected
 
 Array = NDArray[np.float64]
@@ -47,13 +48,14 @@ def run(
     the calling thread. An output without an estimate has NaN throughout, no trials, and counts as reached.
     """
     engine, fixed = parse_trials(trials)
+    model = Model.of(problem)
     workers = threads or cpu_count() or 1
     points = range(len(problem.estimate))
     plan = plain.Plan(level=level, seed=seed, fixed=fixed, threads=workers)
     if engine == "plain":
-        found = plain.run_points(problem, points, plan, progress)
+        found = plain.run_points(model, points, plan, progress)
     else:
-        found = plain.run_points(problem, points, plan, progress)
+        found = accelerated.run(model, plan, progress)
     return collected([found[point] for point in points], len(problem.outputs))
 
 

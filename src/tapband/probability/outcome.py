@@ -8,14 +8,9 @@ from dataclasses import dataclass, fields
 import numpy as np
 from numpy.typing import NDArray
 
-from tapband.nouns.problem import Problem
-from tapband.nouns.source import Shape
 from tapband.probability.coverage import tolerance
 
 Array = NDArray[np.float64]
-
-_NEGLIGIBLE = 1e-12
-"""Share of variance below which a contribution is rounding (a common zero error on a closed contour)."""
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -80,20 +75,6 @@ def collected(outcomes: Sequence[Outcome], outputs: int) -> MonteCarlo:
     for name in (*NAMES, "trials", "refused", "reached"):
         getattr(result, name).setflags(write=False)
     return result
-
-
-def moments_exist(problem: Problem, point: int) -> tuple[NDArray[np.bool_], NDArray[np.bool_]]:
-    """Whether mean and standard deviation of each output (m,) exist: every contributor has ν > 1, ν > 2."""
-    variances = [(columns[point] ** 2).sum(axis=-1) for columns in problem.sensitivity]
-    total = sum(variances, start=np.zeros(len(problem.outputs)))
-    mean, spread = np.ones(total.shape, dtype=bool), np.ones(total.shape, dtype=bool)
-    for family, variance in zip(problem.families, variances, strict=True):
-        if family.shape is Shape.NORMAL and family.dof[point] <= 2.0:
-            there = variance > _NEGLIGIBLE * total
-            spread &= ~there
-            if family.dof[point] <= 1.0:
-                mean &= ~there
-    return mean, spread
 
 
 def tolerance_met(numbers: Numbers, fallback_u: Array) -> NDArray[np.bool_]:

@@ -7,7 +7,7 @@ of the blocks, so that neither threads nor the points beside one change its row.
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass
 from math import ceil
@@ -17,10 +17,12 @@ from numpy.typing import NDArray
 
 from tapband.nouns.problem import Problem
 from tapband.probability.draws import TILE, Tape
+from tapband.probability.model import Model
 from tapband.probability.outcome import Outcome
 from tapband.probability.tally import Block, Tally
 
 Array = NDArray[np.float64]
+Mask = NDArray[np.bool_]
 Progress = Callable[[int, int], None]
 
 CHUNK = 1_000
@@ -57,9 +59,13 @@ class Plan:
 
 
 def run_points(
-    problem: Problem, points: Sequence[int], plan: Plan, progress: Progress | None = None
+    model: Model,
+    points: Sequence[int],
+    plan: Plan,
+    progress: Progress | None = None,
+    rows: Mapping[int, Mask] | None = None,
 ) -> dict[int, Outcome]:
-    """Outcome of each of ``points``."""
+    """Outcome of each of ``points``; only the outputs ``rows[point]`` (m,) decide when to stop."""
     found: dict[int, Outcome] = {}
     with ThreadPoolExecutor(plan.threads) as pool:
         for start in range(0, len(points), POINTS):
@@ -67,8 +73,8 @@ def run_points(
             said = _Said(progress, start, len(group), len(points), plan.blocks)
             margin = 1.0
             while group:
-                tallies = {p: Tally(problem, p, plan.level, margin) for p in group}
-                _fill(problem, tallies, plan, pool, said)
+                tallies = {p: Tally(model, p, plan.level, margin, (rows or {}).get(p)) for p in group}
+                _fill(model.problem, tallies, plan, pool, said)
                 found.update((p, tally.outcome()) for p, tally in tallies.items())
                 group = [p for p, tally in tallies.items() if tally.clipped]
                 margin *= 8.0

@@ -7,12 +7,13 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from tapband.nouns.problem import Problem
 from tapband.probability.coverage import shortest_of, symmetric_of
 from tapband.probability.histogram import Histogram
-from tapband.probability.outcome import Numbers, Outcome, moments_exist, tolerance_met
+from tapband.probability.model import Model
+from tapband.probability.outcome import Numbers, Outcome, tolerance_met
 
 Array = NDArray[np.float64]
+Mask = NDArray[np.bool_]
 
 FEWEST = 10
 """Blocks before the scatter between them is believed."""
@@ -28,16 +29,18 @@ class Block:
 
 
 class Tally:
-    """Running result of one point at a level of confidence; ``margin`` as in :class:`Histogram`."""
+    """Running result of one point; ``margin`` as in :class:`Histogram`, ``rows`` (m,) those to be settled."""
 
-    def __init__(self, problem: Problem, point: int, level: float, margin: float) -> None:
+    def __init__(
+        self, model: Model, point: int, level: float, margin: float, rows: Mask | None = None
+    ) -> None:
         self._level = level
         self._margin = margin
-        self._moments = moments_exist(problem, point)
-        variance = sum((s[point] ** 2).sum(axis=-1) for s in problem.sensitivity)
-        self._linear_u = np.sqrt(np.zeros(len(problem.outputs)) + variance)
-        self._live = np.isfinite(problem.estimate[point])
-        self._origin = np.where(self._live, problem.estimate[point], 0.0)
+        self._moments = model.moments_exist(point)
+        self._linear_u = model.u[point]
+        self._live = np.isfinite(model.estimate[point])
+        self._rows = self._live if rows is None else self._live & rows
+        self._origin = np.where(self._live, model.estimate[point], 0.0)
         self._histograms: list[Histogram | None] = [None] * len(self._live)
         self._power = np.zeros((5, len(self._live)))
         self._blocks: list[Array] = []
@@ -54,7 +57,7 @@ class Tally:
         self._trials += block.trials
         self._refused += block.refused
         if len(self._blocks) >= FEWEST:
-            self.settled = bool(np.all(tolerance_met(self._numbers(ends=False), self._linear_u)[self._live]))
+            self.settled = bool(np.all(tolerance_met(self._numbers(ends=False), self._linear_u)[self._rows]))
 
     def _count(self, j: int, ordered: Array) -> tuple[float, ...]:
         """Estimates of one block of one output (mean, u, ends, short ends), after counting it."""

@@ -1,0 +1,101 @@
+"""A problem with its linear model at hand: what never changes while trials run."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from tapband.nouns.problem import Family, Problem
+from tapband.nouns.source import Shape
+from tapband.probability.distributions import variance
+from tapband.probability.linear_law import LinearLaw, Term, linear_law
+
+Array = NDArray[np.float64]
+Mask = NDArray[np.bool_]
+
+ROUNDING = 1e-13
+"""Share of the largest output below which a standard uncertainty is rounding."""
+_NEGLIGIBLE = 1e-12
+"""Share of variance below which a contribution is rounding (a common zero error on a closed contour)."""
+
+
+@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
+class Model:
+    """P points, m outputs, S families."""
+
+    problem: Problem
+    families: tuple[Family, ...]
+    sensitivity: tuple[Array, ...]
+    estimate: Array
+    share: Array
+    """(P, m, S) of the variance; 0 where there is none."""
+    u: Array
+    """(P, m)"""
+    live: Mask
+    """(P, m) rows with an estimate that some error moves by more than rounding."""
+    affine: Mask
+
+    @classmethod
+    def of(cls, problem: Problem) -> Model:
+        """From a problem."""
+        families, sensitivity = tuple(problem.families), tuple(problem.sensitivity)
+        estimate = np.asarray(problem.estimate, dtype=np.float64)
+        parts = np.zeros((*estimate.shape, len(families)))
+        for f, columns in enumerate(sensitivity):
+            parts[..., f] = (columns * columns).sum(axis=-1)
+        total = np.zeros(estimate.shape)
+        for f in range(len(families)):
+            total += parts[..., f]
+        u = np.sqrt(total)
+        largest = np.where(np.isnan(estimate), 0.0, np.maximum(np.abs(estimate), u)).max(axis=1, initial=0.0)
+        live = np.isfinite(estimate) & (u > ROUNDING * largest[:, None])
+        share = np.where(live[..., None], parts / np.where(live, total, 1.0)[..., None], 0.0)
+        return cls(
+            problem=problem, families=families, sensitivity=sensitivity, estimate=estimate, share=share,
+            u=u, live=live, affine=np.asarray(problem.affine, dtype=np.bool_),
+        )  # fmt: skip
+
+    def law(self, points: range, live: Mask, which: tuple[int, ...], tail: float) -> LinearLaw:
+        """Exact law of Σ S ξ over the families ``which``, rows (Pb·m) in units of their own deviation."""
+        rows = slice(points.start, points.stop)
+        outputs = self.estimate.shape[1]
+        part = np.zeros(live.shape)
+        for f in which:
+            part += self.share[rows, :, f]
+        unit = np.where(live, self.u[rows] * np.sqrt(np.where(live, part, 1.0)), 1.0)
+        terms = []
+        for f in which:
+            size = (self.sensitivity[f][rows] / unit[..., None]).reshape(live.size, -1)
+            dof = np.repeat(self.families[f].dof[rows], outputs)
+            terms.append(
+                Term(family=self.families[f], size=size, dof=dof, doubt=_doubts(self.families[f], dof))
+            )
+        return linear_law(terms, live.ravel(), tail)
+
+    def moments_exist(self, point: int) -> tuple[Mask, Mask]:
+        """Whether mean and standard deviation of each output (m,) exist: each contributor has ν > 1, ν > 2."""
+        mean, spread = np.ones(self.u.shape[1], dtype=np.bool_), np.ones(self.u.shape[1], dtype=np.bool_)
+        for f, family in enumerate(self.families):
+            if family.shape is Shape.NORMAL and family.dof[point] <= 2.0:
+                there = self.share[point, :, f] > _NEGLIGIBLE
+                spread &= ~there
+                if family.dof[point] <= 1.0:
+                    mean &= ~there
+        return mean, spread
+
+    def variance(self, points: range, which: tuple[int, ...]) -> Array:
+        """Variance (Pb, m) of the linear model over some families, as far as it exists."""
+        rows = slice(points.start, points.stop)
+        total = np.zeros((len(points), self.estimate.shape[1]))
+        for f in which:
+            spread = np.where(self.share[rows, :, f] > 0.0, variance(self.families[f])[rows, None], 0.0)
+            total += self.share[rows, :, f] * spread
+        return total * self.u[rows] ** 2
+
+
+def _doubts(family: Family, dof: Array) -> Array:
+    if family.shape is Shape.NORMAL:
+        return np.zeros(dof.shape)
+    return np.full(dof.shape, family.reliability) if family.reliability > 0.0 else np.sqrt(0.5 / dof)

@@ -1,0 +1,170 @@
+"""What trials say once one direction, or all that enters linearly, is integrated out instead of drawn.
+
+Each smoothing knows, for every trial i, the distribution of the output given what was drawn, and that of the
+linear model given the same draws. Only their difference is averaged: the linear model's own distribution is
+known exactly (:mod:`tapband.probability.linear_law`). Arrays are (Pb, m, N), trials last.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from math import pi, sqrt
+from typing import Protocol
+
+import numpy as np
+from numpy.typing import NDArray
+from scipy.special import ndtr
+
+from tapband.nouns.source import Shape
+from tapband.probability.distributions import half_width
+from tapband.probability.linear_law import LinearLaw
+
+Array = NDArray[np.float64]
+
+
+class Smoothing(Protocol):
+    """Difference of the conditional distributions of output and linear model."""
+
+    def at(self, t: Array) -> tuple[Array, Array]:
+        """Differences of distribution function and of density (Pb, m, N) at t (Pb, m)."""
+        ...
+
+
+class Base(Protocol):
+    """A standardised law that is integrated out."""
+
+    def at(self, x: Array) -> tuple[Array, Array]:
+        """Distribution function and density, in the shape of x."""
+        ...
+
+
+class NormalBase:
+    """The standard normal law."""
+
+    def at(self, x: Array) -> tuple[Array, Array]:
+        """Φ and its density."""
+        density = np.exp(-0.5 * (x * x))
+        density *= 1.0 / sqrt(2.0 * pi)
+        return ndtr(x), density
+
+
+@dataclass(frozen=True, slots=True)
+class ShapeBase:
+    """One bounded standardised latent."""
+
+    shape: Shape
+    top: float
+
+    def at(self, x: Array) -> tuple[Array, Array]:
+        """Closed forms; *Source* JCGM 101:2008, 6.4.2-6.4.6."""
+        half = half_width(self.shape, self.top)
+        z = np.clip(x / half, -1.0, 1.0)
+        inside = np.abs(x) < half
+        if self.shape is Shape.ARCSINE:
+            density = 1.0 / (pi * half * np.sqrt(np.maximum(1.0 - z * z, 1e-12)))
+            return 0.5 + np.arcsin(z) / pi, np.where(inside, density, 0.0)
+        beta = {Shape.RECTANGULAR: 1.0, Shape.TRIANGULAR: 0.0}.get(self.shape, self.top)
+        away = np.abs(z)
+        flat = 2.0 * away / (1.0 + beta)
+        slope = max(1.0 - beta, 1e-300)
+        tail = (1.0 - away) ** 2 / (slope * (1.0 + beta))
+        within = np.where(away <= beta, flat, 1.0 - tail)
+        density = np.where(away <= beta, 1.0, (1.0 - away) / slope) / (half * (1.0 + beta))
+        return 0.5 + 0.5 * np.copysign(within, z), np.where(inside, density, 0.0)
+
+
+class TableBase:
+    """Laws of rows (Pb, m) tabulated once: cubic Hermite interpolation between steps of 1/32."""
+
+    _STEPS = 32
+    _REACH = 8
+
+    def __init__(self, law: LinearLaw, shape: tuple[int, int]) -> None:
+        half = np.arange(self._REACH * self._STEPS + 1) / self._STEPS
+        cdf, pdf = law.table(half)
+        cdf = np.concatenate([1.0 - cdf[:, :0:-1], cdf], axis=1)
+        pdf = np.concatenate([pdf[:, :0:-1], pdf], axis=1) / self._STEPS
+        rise = np.diff(cdf, axis=1)
+        left, right = pdf[:, :-1], pdf[:, 1:]
+        cubic = np.stack(
+            [cdf[:, :-1], left, 3.0 * rise - 2.0 * left - right, left + right - 2.0 * rise], axis=-1
+        )
+        self._cells = cubic.shape[1]
+        self._cubic = np.ascontiguousarray(cubic.reshape(-1, 4))
+        self._row = (np.arange(len(cdf)) * self._cells).reshape(*shape, 1)
+
+    def at(self, x: Array) -> tuple[Array, Array]:
+        """Interpolated distribution function and density."""
+        place = (x + self._REACH) * self._STEPS
+        place = np.clip(np.where(np.isnan(place), 0.0, place), 0.0, self._cells * (1.0 - 1e-15))
+        cell = place.astype(np.intp)
+        v = place - cell
+        c = self._cubic[cell + self._row]
+        cdf = c[..., 0] + v * (c[..., 1] + v * (c[..., 2] + v * c[..., 3]))
+        pdf = (c[..., 1] + v * (2.0 * c[..., 2] + v * (3.0 * c[..., 3]))) * self._STEPS
+        return cdf, np.where(np.abs(x) < self._REACH, pdf, 0.0)
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Integrated:
+    """Given the draws, the output is y + s·base exactly, and the linear model l + s0·base."""
+
+    base: Base
+    y: Array
+    s: Array
+    l: Array  # noqa: E741  (the linear model's values beside y)
+    s0: Array
+
+    def at(self, t: Array) -> tuple[Array, Array]:
+        """See :class:`Smoothing`."""
+        upper, upper_density = self.base.at((t[..., None] - self.y) / self.s)
+        lower, lower_density = self.base.at((t[..., None] - self.l) / self.s0)
+        return upper - lower, upper_density / self.s - lower_density / self.s0
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Line:
+    """Along one line of latents, coordinate η of law ``base``, the output is nearly a + bη + cη².
+
+    What the parabola leaves is repaired without bias: by the trial itself, which stands somewhere on the
+    line, as the difference of two indicators, almost never other than 0.
+    """
+
+    base: Base
+    a: Array
+    b: Array
+    c: Array
+    y: Array
+    """The output at the trial."""
+    fitted: Array
+    """The parabola at the trial."""
+    l: Array  # noqa: E741
+    """The linear model on the line at η = 0."""
+    slope: Array
+    """|∂l/∂η|"""
+
+    def at(self, t: Array) -> tuple[Array, Array]:
+        """See :class:`Smoothing`."""
+        level = t[..., None]
+        upper, upper_density = self._parabola(level)
+        lower, lower_density = self.base.at((level - self.l) / self.slope)
+        repair = (self.y <= level).astype(np.float64) - (self.fitted <= level)
+        return upper - lower + repair, upper_density - lower_density / self.slope
+
+    def _parabola(self, level: Array) -> tuple[Array, Array]:
+        """P(a + bη + cη² ≤ t) and its derivative by t: both roots, so exact for the parabola."""
+        rise = level - self.a
+        discriminant = self.b * self.b + 4.0 * self.c * rise
+        real = discriminant > 0.0
+        root = np.sqrt(np.where(real, discriminant, 1.0))
+        sum_ = self.b + np.copysign(root, self.b)
+        near = 2.0 * rise / sum_
+        flat = np.abs(self.c) < 1e-14 * np.abs(self.b)
+        far = np.where(flat, -np.copysign(np.inf, self.c * sum_), -sum_ / np.where(flat, 1.0, 2.0 * self.c))
+        near_cdf, near_density = self.base.at(near)
+        far_cdf, far_density = self.base.at(far)
+        between = np.abs(near_cdf - far_cdf)
+        opens_up = self.c >= 0.0
+        cdf = np.where(opens_up, between, 1.0 - between)
+        density = (near_density + far_density) / root
+        return np.where(real, cdf, np.where(opens_up, 0.0, 1.0)), np.where(real, density, 0.0)
