@@ -21,9 +21,10 @@ from tapband import __version__
 from tapband.files.load import load
 from tapband.nouns.campaign import Campaign
 from tapband.nouns.errors import QuestionError
-from tapband.questions.latents import Latents, from_arrays, latents_of, to_arrays
+from tapband.questions.compare import compare as compare_latents
+from tapband.questions.latents import Latents, from_arrays, latents_at, latents_of, to_arrays
 from tapband.questions.statement import statements
-from tapband.reduction import Reduced, reduce_campaign
+from tapband.reduction import Reduced, assemble, reduce_campaign
 from tapband.reduction.undeclared import NO_WALL_CORRECTION, NOT_TOTAL_DRAG, undeclared
 
 if TYPE_CHECKING:
@@ -107,6 +108,14 @@ class Results:
             latents.covariance(latents.index(a), latents.index(b)), index=names, columns=names
         )
 
+    def compare(self, a: str, b: str, within: str | float | None = None) -> pd.DataFrame:
+        """The difference ``a`` minus ``b`` of two points, runs or configs, with what they share cancelled.
+
+        Runs and configs are paired at angles that are equal ``within`` a tolerance ("0.1 deg", or a number of
+        degrees; default: that of the campaign), and interpolated where they are not. Notes are in ``attrs``.
+        """
+        return _differences(self.latents, a, b, within, self.meta)
+
     @cached_property
     def _variables(self) -> dict[tuple[str, int, int], UFloat]:
         return {}
@@ -189,6 +198,47 @@ def reduce(
     )
 
 
+def compare(
+    campaign: Campaign,
+    a: str,
+    b: str,
+    within: str | float | None = None,
+    trials: str | int | None = None,
+    seed: int | None = None,
+) -> Results:
+    """The table ``differences`` alone, without reducing the whole campaign; see :meth:`Results.compare`."""
+    if campaign.points is None:
+        raise QuestionError("compare: needs readings; got a campaign without them; add a table of points")
+    assembled = assemble(campaign)
+    latents = latents_at(assembled)
+    meta = {
+        "format": 1,
+        "kind": "compare",
+        "title": campaign.title,
+        "name": campaign.name,
+        "level": campaign.intervals.level,
+        "same_angle": float(np.degrees(campaign.plan.polar.same_angle)),
+        "inputs": dict(campaign.inputs),
+        "warnings": [*campaign.warnings, *assembled.warnings],
+        "cautions": list(CAUTIONS),
+    }
+    table = _differences(latents, a, b, within, meta)
+    return Results(tables={"differences": table}, meta=meta, arrays=to_arrays(latents), campaign=campaign)
+
+
+def _differences(
+    latents: Latents, a: str, b: str, within: str | float | None, meta: Mapping[str, Any]
+) -> pd.DataFrame:
+    from tapband.files.frames_between import differences
+    from tapband.files.tolerance import tolerance
+
+    same = np.radians(float(meta.get("same_angle", 0.1)))
+    found = compare_latents(
+        latents, a, b, within=tolerance(within, same), level=float(meta.get("level", 0.95))
+    )
+    return differences(found)
+
+
 def _meta(reduced: Reduced) -> dict[str, Any]:
     campaign, drawn = reduced.campaign, reduced.montecarlo
     empty = bool(np.any(~np.isfinite(reduced.linear.estimate)))
@@ -199,6 +249,7 @@ def _meta(reduced: Reduced) -> dict[str, Any]:
         "title": campaign.title,
         "name": campaign.name,
         "level": campaign.intervals.level,
+        "same_angle": float(np.degrees(campaign.plan.polar.same_angle)),
         "seed": campaign.intervals.seed,
         "trials": campaign.intervals.trials,
         "trials_used": np.max(drawn.trials, axis=-1).tolist()

@@ -11,10 +11,14 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from tapband.experiment.jacobian import stream_slopes
 from tapband.nouns.errors import QuestionError
 from tapband.reduction import Reduced
+from tapband.reduction.assemble import Assembled
 
 Array = NDArray[np.float64]
+Codes = NDArray[np.int64]
+WORDS = ("keys", "names", "outputs", "sources", "runs", "configs")
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
@@ -27,9 +31,24 @@ class Latents:
     sources: tuple[str, ...]
     estimate: Array
     sensitivity: tuple[Array, ...]
-    group: tuple[NDArray[np.int64], ...]
+    group: tuple[Codes, ...]
     dof: Array
     """(S, P), inf where exactly known."""
+    runs: tuple[str, ...]
+    configs: tuple[str, ...]
+    """Empty text where the campaign has no such column."""
+    alpha: Array
+    """(P,) [rad]."""
+    mach: Array
+    """(P,)."""
+    scale: tuple[Codes, ...]
+    """Codes (P,) a source: points of one code share its χ² scale, and so its degrees of freedom."""
+    on_alpha: Mapping[int, Array]
+    """∂alpha/∂ξ (P, G) [rad] of the sources, by index, that move the angle."""
+    on_mach: Mapping[int, Array]
+    """∂M/∂ξ (P, G) of the sources, by index, that move the Mach number."""
+    random: NDArray[np.bool_]
+    """(S,) sources that are drawn anew at every point."""
 
     def index(self, point: str) -> int:
         """Position of a point named POINT, or RUN/POINT where POINT alone is ambiguous."""
@@ -59,44 +78,89 @@ class Latents:
 
 def latents_of(reduced: Reduced) -> Latents:
     """The latents of a reduced campaign."""
-    problem, points = reduced.assembled.problem, reduced.assembled.points
+    return latents_at(reduced.assembled)
+
+
+def latents_at(assembled: Assembled) -> Latents:
+    """The latents of an assembled campaign; no propagation is needed."""
+    problem, points = assembled.problem, assembled.points
+    families = problem.families
+    on_alpha, on_mach = _on_conditions(assembled)
     return Latents(
         keys=points.keys,
         names=points.names,
         outputs=problem.outputs,
-        sources=tuple(f.source for f in problem.families),
+        sources=tuple(f.source for f in families),
         estimate=problem.estimate,
         sensitivity=tuple(problem.sensitivity),
-        group=tuple(np.unique(f.point_group, return_inverse=True)[1].ravel() for f in problem.families),
-        dof=np.stack([one.nu for one in reduced.assembled.loaded]),
+        group=tuple(_codes(f.point_group) for f in families),
+        dof=np.stack([one.nu for one in assembled.loaded]) if families else np.empty((0, len(points.names))),
+        runs=points.runs,
+        configs=points.columns.get("config", ("",) * len(points.names)),
+        alpha=points.alpha,
+        mach=assembled.stream.mach,
+        scale=tuple(_codes(f.scale_group) for f in families),
+        on_alpha=on_alpha,
+        on_mach=on_mach,
+        random=np.array([not f.systematic for f in families], dtype=np.bool_),
     )
 
 
-def to_arrays(latents: Latents) -> dict[str, Array | NDArray[np.int64] | NDArray[np.str_]]:
+def _codes(groups: Sequence[str]) -> Codes:
+    return np.unique(np.asarray(groups, dtype=object).astype(str), return_inverse=True)[1].ravel()
+
+
+def _on_conditions(assembled: Assembled) -> tuple[dict[int, Array], dict[int, Array]]:
+    """What each source adds to alpha and to M, (P, G) by its index."""
+    slopes = stream_slopes(assembled.sets[0].equation, assembled.points.channels, assembled.corrected.shifts)
+    on_alpha: dict[int, Array] = {}
+    on_mach: dict[int, Array] = {}
+    for s, one in enumerate(assembled.loaded):
+        for entry in one.entries:
+            if entry.slot == "alpha":
+                into, by = on_alpha, entry.load
+            elif entry.slot in slopes:
+                into, by = on_mach, entry.load * slopes[entry.slot].mach
+            else:
+                continue
+            rows = into.setdefault(s, np.zeros((len(entry.load), len(one.family.members))))
+            rows[:, int(entry.member[0])] += by
+    return on_alpha, on_mach
+
+
+def to_arrays(latents: Latents) -> dict[str, Array | Codes | NDArray[np.str_] | NDArray[np.bool_]]:
     """Plain arrays by name, fit for storing."""
-    arrays: dict[str, Array | NDArray[np.int64] | NDArray[np.str_]] = {
-        name: np.array(getattr(latents, name), dtype=np.str_)
-        for name in ("keys", "names", "outputs", "sources")
+    arrays: dict[str, Array | Codes | NDArray[np.str_] | NDArray[np.bool_]] = {
+        name: np.array(getattr(latents, name), dtype=np.str_) for name in WORDS
     }
-    arrays["estimate"], arrays["dof"] = latents.estimate, latents.dof
+    for name in ("estimate", "dof", "alpha", "mach", "random"):
+        arrays[name] = getattr(latents, name)
     for i, (s, codes) in enumerate(zip(latents.sensitivity, latents.group, strict=True)):
         arrays[f"sensitivity {i}"], arrays[f"group {i}"] = s, codes
+        arrays[f"scale {i}"] = latents.scale[i]
+    for word, parts in (("alpha", latents.on_alpha), ("mach", latents.on_mach)):
+        arrays |= {f"on {word} {i}": part for i, part in parts.items()}
     return arrays
 
 
 def from_arrays(arrays: Mapping[str, Array]) -> Latents:
     """Inverse of :func:`to_arrays`."""
-    words: dict[str, Sequence[str]] = {
-        name: tuple(np.asarray(arrays[name]).tolist()) for name in ("keys", "names", "outputs", "sources")
-    }
+    words = {name: tuple(np.asarray(arrays[name]).tolist()) for name in WORDS}
     count = range(len(words["sources"]))
+    sizes = {
+        word: {i: arrays[f"on {word} {i}"] for i in count if f"on {word} {i}" in arrays}
+        for word in ("alpha", "mach")
+    }
     return Latents(
-        keys=tuple(words["keys"]),
-        names=tuple(words["names"]),
-        outputs=tuple(words["outputs"]),
-        sources=tuple(words["sources"]),
+        **{name: tuple(str(item) for item in items) for name, items in words.items()},
         estimate=arrays["estimate"],
         dof=arrays["dof"],
+        alpha=arrays["alpha"],
+        mach=arrays["mach"],
+        random=np.asarray(arrays["random"], dtype=np.bool_),
         sensitivity=tuple(arrays[f"sensitivity {i}"] for i in count),
         group=tuple(np.asarray(arrays[f"group {i}"], dtype=np.int64) for i in count),
+        scale=tuple(np.asarray(arrays[f"scale {i}"], dtype=np.int64) for i in count),
+        on_alpha=sizes["alpha"],
+        on_mach=sizes["mach"],
     )

@@ -1,0 +1,131 @@
+"""Linear combinations of coefficients across points, and their uncertainty from the latents points share.
+
+R rows of q quantities each. A quantity is Σ over terms n of weight_n · y(point_n) + on_alpha_n ·
+alpha(point_n). Only sums per row, source and point group are formed: the cost grows with the number of terms.
+
+*Source* JCGM 100:2008, 5.2.2 and F.1.2.3 (errors in common correlate), G.4 (Welch-Satterthwaite).
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from tapband.probability.linearised import coverage_factor
+from tapband.questions.latents import Latents
+
+Array = NDArray[np.float64]
+Codes = NDArray[np.int64]
+
+
+@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
+class Combination:
+    """N terms: the row (N,) and point (N,) of each, weights (N, q, m) and weights of alpha (N, q) per rad."""
+
+    rows: int
+    row: Codes
+    point: Codes
+    weight: Array
+    on_alpha: Array
+
+    @property
+    def quantities(self) -> int:
+        """q."""
+        return int(self.weight.shape[1])
+
+    def value(self, latents: Latents) -> Array:
+        """(R, q) of the coefficients alone."""
+        total = np.zeros((self.rows, self.quantities))
+        y = _finite(latents.estimate[self.point])
+        np.add.at(total, self.row, (self.weight @ y[:, :, None])[:, :, 0])
+        return total
+
+
+@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
+class Spread:
+    """How far the quantities of R rows may be off; S sources and, behind them, further terms."""
+
+    covariance: Array
+    """(R, q, q)."""
+    variance: Array
+    """(R, q, S)."""
+    independent: Array
+    """(R, q) variance if errors were called independent between points."""
+    welch: Array
+    """(R, q) Σ of variance²/ν, a term for each source and scale."""
+
+    @property
+    def u(self) -> Array:
+        """(R, q) combined standard uncertainty."""
+        return np.asarray(np.sqrt(self.variance.sum(axis=2)))
+
+    @property
+    def dof(self) -> Array:
+        """(R, q) effective degrees of freedom, inf where exactly known."""
+        total = self.variance.sum(axis=2)
+        infinite = np.full(total.shape, np.inf)
+        return np.asarray(np.divide(total**2, self.welch, out=infinite, where=self.welch > 0.0))
+
+    def k(self, level: float) -> Array:
+        """(R, q) coverage factors."""
+        return coverage_factor(self.dof, level)
+
+    def plus(self, variance: Array) -> Spread:
+        """With a further exactly known, independent term (R, q)."""
+        diagonal = variance[:, :, None] * np.eye(variance.shape[1])
+        return Spread(
+            covariance=self.covariance + diagonal,
+            variance=np.concatenate([self.variance, variance[:, :, None]], axis=2),
+            independent=self.independent + variance,
+            welch=self.welch,
+        )
+
+
+def spread(latents: Latents, combination: Combination) -> Spread:
+    """The uncertainty of every row."""
+    rows, q, sources = combination.rows, combination.quantities, len(latents.sources)
+    covariance, independent = np.zeros((rows, q, q)), np.zeros((rows, q))
+    variance, welch = np.zeros((rows, q, sources)), np.zeros((rows, q))
+    for s in range(sources):
+        terms = projected(latents, combination, s)
+        independent_of_term = (terms * terms).sum(axis=2)
+        np.add.at(independent, combination.row, independent_of_term)
+        sums, row, point = grouped(terms, combination, latents.group[s])
+        squares = sums @ np.swapaxes(sums, 1, 2)
+        np.add.at(covariance, row, squares)
+        own = np.einsum("uqq->uq", squares)
+        np.add.at(variance[:, :, s], row, own)
+        nu = latents.dof[s]
+        if not np.all(np.isinf(nu[point])):
+            pooled, pooled_row, first = _summed(own, row, latents.scale[s][point], point)
+            np.add.at(welch, pooled_row, pooled**2 / nu[first][:, None])
+    return Spread(covariance=covariance, variance=variance, independent=independent, welch=welch)
+
+
+def projected(latents: Latents, combination: Combination, source: int) -> Array:
+    """(N, q, G) what the latents of one source add to the quantities, a term at a time."""
+    terms = combination.weight @ _finite(latents.sensitivity[source][combination.point])
+    if source in latents.on_alpha:
+        moved = latents.on_alpha[source][combination.point]
+        terms = terms + combination.on_alpha[:, :, None] * moved[:, None, :]
+    return np.asarray(terms)
+
+
+def grouped(terms: Array, combination: Combination, codes: Codes) -> tuple[Array, Codes, Codes]:
+    """Terms (N, …) summed over points of a row that share latents: sums (U, …), rows, and a point of each."""
+    return _summed(terms, combination.row, codes[combination.point], combination.point)
+
+
+def _summed(terms: Array, row: Codes, codes: Codes, point: Codes) -> tuple[Array, Codes, Codes]:
+    key = row.astype(np.int64) * (int(codes.max(initial=0)) + 1) + codes
+    _, first, place = np.unique(key, return_index=True, return_inverse=True)
+    sums = np.zeros((first.size, *terms.shape[1:]))
+    np.add.at(sums, place.ravel(), terms)
+    return sums, row[first], point[first]
+
+
+def _finite(values: Array) -> Array:
+    """Zero where a coefficient has no value; callers blank those rows."""
+    return np.where(np.isfinite(values), values, 0.0)
