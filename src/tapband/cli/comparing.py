@@ -123,7 +123,7 @@ def _many(frame: pd.DataFrame) -> Table:
     from tapband.files.write_text import one_line
 
     shown = [name for name in FIRST if name in set(frame["coefficient"])]
-    table = _empty("A", "B", "alpha", *shown)
+    table = _empty("A", "alpha", *shown)
     count = len(frame["coefficient"].unique())
     blocks = [frame.iloc[i : i + count] for i in range(0, len(frame), count)]
     left = len(blocks) - 2 * ENDS
@@ -134,9 +134,9 @@ def _many(frame: pd.DataFrame) -> Table:
             continue
         by_name = {str(row["coefficient"]): row for row in _records(block)}
         first = next(iter(by_name.values()))
-        b = "interpolated" if first["interpolated"] == "yes" else one_line(str(first["b"]))
+        mark = "i" if first["interpolated"] == "yes" else ""
         cells = [_interval(by_name[name]) for name in shown]
-        table.add_row(_text(one_line(str(first["a"]))), _text(b), f"{first['alpha_a']:.2f}", *cells)
+        table.add_row(_text(one_line(str(first["a"]))), f"{first['alpha_a']:.2f}{mark}", *cells)
     return table
 
 
@@ -147,7 +147,7 @@ def _empty(*names: str) -> Table:
     table = Table(box=box.SIMPLE_HEAD, pad_edge=False, padding=(0, 1))
     for name in names:
         text = name in ("coefficient", "remaining")
-        if name in ("A", "B"):
+        if name == "A":
             table.add_column(name, max_width=NAME, no_wrap=True, overflow="ellipsis")
         else:
             table.add_column(name, justify="left" if text else "right", no_wrap=name != "remaining")
@@ -187,11 +187,11 @@ def _findings(frame: pd.DataFrame) -> list[str]:
             f"called independent, the interval of {frame['coefficient'].iloc[worst]} would be up to "
             f"{ratio[worst]:.3g} times as wide"
         )
-    turned = frame[(frame["significant"] == "yes") & (frame["significant_equal_angle"] == "no")]
+    turned = frame[(frame["significant"] == "yes") & (frame["equal_angle_significant"] == "no")]
     if len(turned):
         names = ", ".join(dict.fromkeys(str(name) for name in turned["coefficient"]))
         lines.append(
-            f"{names}: significant as tested, but not at {len(turned)} places once the angle errors of "
-            "either side are counted (significant_equal_angle)"
+            f"{names}: significant as tested, but not at {len(turned)} places at one true angle: their "
+            "angles or the errors of these differ (equal_angle columns)"
         )
     return lines

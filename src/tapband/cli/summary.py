@@ -76,7 +76,7 @@ def _column(shown: Headline) -> list[str]:
         if not shown.from_trials[i]:
             return plus_minus(shown.estimate[i], shown.half[i])
         places = decimals(shown.half[i])
-        return f"{fixed(shown.low[i], places)} … {fixed(shown.high[i], places)}*"
+        return f"{fixed(shown.low[i], places)}…{fixed(shown.high[i], places)}*"
 
     return [cell(i).replace("\N{MINUS SIGN}", "-") for i in range(len(shown.estimate))]
 
@@ -107,7 +107,7 @@ def _distrust(results: Outcome, frame: pd.DataFrame, names: Sequence[str]) -> li
     lines += [f"warning: {line}" for line in warnings[:LINES]]
     if len(warnings) > LINES:
         lines.append(f"… and {len(warnings) - LINES} more warnings in the report")
-    undeclared = [one_line(str(line)) for line in _texts(results.meta.get("undeclared"))]
+    undeclared = [one_line(str(line)).split(":")[0] for line in _texts(results.meta.get("undeclared"))]
     if undeclared:
         lines.append(f"not declared, so not in these intervals: {', '.join(undeclared)}")
     return lines

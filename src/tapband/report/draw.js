@@ -33,16 +33,18 @@ function niceStep(span, count) {
   return power * (rest <= 1 ? 1 : rest <= 2 ? 2 : rest <= 5 ? 5 : 10);
 }
 
-// Maps [low, high], widened to whole steps, onto pixels.
+// Maps [low, high], a little widened, onto pixels; ticks at whole steps inside.
 function scale(low, high, from, to, count, zero = false) {
   let a = low, b = high;
   if (!Number.isFinite(a) || !Number.isFinite(b)) [a, b] = [0, 1];
-  if (zero) a = 0;
+  if (zero) [a, b] = [0, b > 0 ? b : 1];
   if (a === b) [a, b] = [a - (Math.abs(a) || 1) * 0.5, b + (Math.abs(b) || 1) * 0.5];
-  if (zero && a > b) b = 1;
-  const step = niceStep(b - a, count), first = Math.floor(a / step + 1e-9) * step, last = Math.ceil(b / step - 1e-9) * step;
-  const map = (v) => from + (v - first) / (last - first) * (to - from);
-  const ticks = Array.from({ length: Math.round((last - first) / step) + 1 }, (_, i) => first + i * step);
+  const widen = 0.045 * (b - a), step = niceStep(b - a, count);
+  b += widen;
+  if (!zero) a -= widen;
+  const map = (v) => from + (v - a) / (b - a) * (to - from);
+  const first = Math.ceil(a / step - 1e-9), last = Math.floor(b / step + 1e-9);
+  const ticks = Array.from({ length: last - first + 1 }, (_, i) => (first + i) * step);
   const places = Math.max(0, -Math.floor(Math.log10(step) + 1e-9));
   return Object.assign(map, { ticks, label: (v) => fixed(v, places) });
 }
@@ -58,8 +60,9 @@ function axes(root, x, y, box, { xLabels = true, xName = "", yName = "" }) {
     grid.append(svg("line", { x1: x(v), x2: x(v), y1: box.top, y2: box.bottom, class: "faint" }));
     if (xLabels) text.append(svg("text", { x: x(v), y: box.bottom + 16, "text-anchor": "middle" }, x.label(v)));
   }
+  grid.append(svg("path", { class: "frame", d: `M${box.left} ${box.top}V${box.bottom}H${box.right}` }));
   root.append(grid, text);
-  if (yName) root.append(svg("text", { x: 2, y: box.top - 8, class: "axis" }, yName));
+  if (yName) root.append(svg("text", { x: 2, y: box.top - 10, class: "axis" }, yName));
   if (xName) root.append(svg("text", { x: box.right, y: box.bottom + 32, class: "axis", "text-anchor": "end" }, xName));
 }
 

@@ -22,19 +22,34 @@ function range(values) {
   return [low, high];
 }
 
+// Sideways shift [px] of each point, so that points at one angle show side by side.
+function asidesOf(data, series) {
+  const places = new Map(), asides = new Float64Array(data.points.key.length);
+  for (const one of series) for (const p of one.rows) {
+    const angle = Math.round(20 * data.points.alpha[p]);
+    if (!places.has(angle)) places.set(angle, []);
+    places.get(angle).push(p);
+  }
+  for (const rows of places.values()) {
+    const step = Math.min(5, 16 / rows.length);
+    rows.forEach((p, i) => { asides[p] = step * (i - 0.5 * (rows.length - 1)); });
+  }
+  return asides;
+}
+
 // A coefficient against angle with its bars, and below it how long the bars are.
-function polarFigure(budget, series, j, width, chosen, pick) {
+function polarFigure(budget, series, asides, j, width, chosen, pick) {
   const { data } = budget, coefficient = data.coefficients[j], alpha = data.points.alpha;
-  const height = 330, box = { left: 58, right: width - 10, top: 26, bottom: 188 };
-  const below = { left: 58, right: width - 10, top: 222, bottom: 292 };
+  const height = 334, box = { left: 58, right: width - 10, top: 30, bottom: 192 };
+  const below = { left: 58, right: width - 10, top: 226, bottom: 296 };
   const all = data.points.key.map((_, p) => budget.interval(p, j));
   const targets = data.targets.filter((t) => t.coefficient === coefficient.name);
   const level = `${Number((100 * data.level).toPrecision(6))} %`;
-  const [a0, a1] = range(alpha), pad = 0.03 * (a1 - a0);
-  const x = scale(a0 - pad, a1 + pad, box.left, box.right, width > 420 ? 8 : 5);
+  const [a0, a1] = range(alpha);
+  const x = scale(a0, a1, box.left, box.right, width > 420 ? 8 : 5);
   const y = scale(...range(all.flatMap((v) => [v.low, v.high, v.estimate])), box.bottom, box.top, 5);
   const widest = range([...all.map((v) => v.half), ...targets.map((t) => t.expanded)])[1];
-  const y2 = scale(0, widest, below.bottom, below.top, 3, true);
+  const y2 = scale(0, 1.1 * widest, below.bottom, below.top, 3, true);
   const root = picture(width, height, `${coefficient.name} against angle`,
     `${all.length} points with ${level} coverage intervals; below, half the width of each interval. The table of all points holds the numbers.`);
   root.classList.add("pickable");
@@ -45,7 +60,7 @@ function polarFigure(budget, series, j, width, chosen, pick) {
     if (at.length) root.append(svg("path", { class: "target", d: `M${x(t0) - 4} ${y2(target.expanded)}H${x(t1) + 4}` }));
   }
   for (const one of series) {
-    const xs = one.rows.map((p) => x(alpha[p])), v = one.rows.map((p) => all[p]);
+    const xs = one.rows.map((p) => x(alpha[p]) + asides[p]), v = one.rows.map((p) => all[p]);
     const mid = v.map((i) => y(i.estimate)), half = v.map((i) => y2(i.half));
     const g = svg("g", { class: one.look });
     g.append(svg("path", { class: "bars", d: barPath(xs, v.map((i) => y(i.low)), v.map((i) => y(i.high)), 3) }));
@@ -54,25 +69,29 @@ function polarFigure(budget, series, j, width, chosen, pick) {
     root.append(g);
   }
   const odd = [...budget.unconfirmed[j]];
-  root.append(svg("path", { class: "doubt", d: odd.map((p) => MARKS.circle(short(x(alpha[p])), short(y2(all[p].half)), 6.5)).join("") }));
+  root.append(svg("path", { class: "doubt", d: odd.map((p) => MARKS.circle(short(x(alpha[p]) + asides[p]), short(y2(all[p].half)), 6.5)).join("") }));
   root.append(svg("path", { class: "chosen", d: `M${short(x(alpha[chosen]))} ${box.top}V${below.bottom}` }));
-  onPick(root, [...alpha].map((v) => x(v)), all.map((v) => y(v.estimate)), pick);
+  onPick(root, [...alpha].map((v, p) => x(v) + asides[p]), all.map((v) => y(v.estimate)), pick);
   return root;
 }
 
-// Share of the largest sources against angle, one line a source; points of the first run and configuration.
+// Share of the largest sources against angle, one line a source; points of the longest run and configuration.
 function sharesFigure(budget, series, j, order, width) {
-  const { data } = budget, alpha = data.points.alpha, rows = series[0].rows;
-  const box = { left: 46, right: width - 10, top: 26, bottom: 210 };
-  const [a0, a1] = range(rows.map((p) => alpha[p])), pad = 0.03 * (a1 - a0);
-  const x = scale(a0 - pad, a1 + pad, box.left, box.right, width > 420 ? 8 : 5), y = scale(0, 100, box.bottom, box.top, 4, true);
+  const { data } = budget, alpha = data.points.alpha;
+  const longest = series.reduce((a, b) => (b.rows.length > a.rows.length ? b : a)), few = longest.rows.length < 3;
+  const rows = few ? series.flatMap((one) => one.rows).sort((a, b) => alpha[a] - alpha[b]) : longest.rows;
+  const from = few || series.length === 1 ? "all points" : longest.name;
+  const box = { left: 46, right: width - 10, top: 30, bottom: 210 };
+  const [a0, a1] = range(rows.map((p) => alpha[p]));
+  const x = scale(a0, a1, box.left, box.right, width > 420 ? 8 : 5), y = scale(0, 100, box.bottom, box.top, 4, true);
   const root = picture(width, 250, `Shares in the variance of ${data.coefficients[j].name} against angle`,
-    `The ${order.length} largest sources${series[0].name ? `, ${series[0].name}` : ""}.`);
-  axes(root, x, y, box, { xName: "angle of attack [deg]", yName: "share of the variance [%]" });
+    `The ${order.length} largest sources, ${from}.`);
+  axes(root, x, y, box, { xName: "angle of attack [deg]", yName: `share of the variance [%], ${from}` });
   order.forEach((s, i) => {
     const xs = rows.map((p) => x(alpha[p])), ys = rows.map((p) => y(100 * budget.share(p, j, s)));
     const g = svg("g", { class: `s${i % SERIES}` });
-    g.append(svg("path", { class: "line", d: linePath(xs, ys) }), svg("path", { class: "mark", d: markPath(MARK_NAMES[i % 4], xs, ys, 3) }));
+    if (!few) g.append(svg("path", { class: "line", d: linePath(xs, ys) }));
+    g.append(svg("path", { class: "mark", d: markPath(MARK_NAMES[i % 4], xs, ys, 3) }));
     root.append(g);
   });
   return root;
@@ -81,9 +100,9 @@ function sharesFigure(budget, series, j, order, width) {
 // Cp along the chord with its band, suction upwards, and below it how wide the band is.
 function chordFigure(budget, p, width) {
   const { data } = budget, taps = data.taps, n = taps.name.length;
-  const box = { left: 50, right: width - 10, top: 26, bottom: 250 }, below = { left: 50, right: width - 10, top: 284, bottom: 344 };
+  const box = { left: 50, right: width - 10, top: 30, bottom: 250 }, below = { left: 50, right: width - 10, top: 284, bottom: 344 };
   const cp = (t) => taps.cp[p * n + t], half = [...Array(n).keys()].map((t) => budget.tapHalf(p, t));
-  const x = scale(Math.min(0, range(taps.x)[0]), Math.max(1, range(taps.x)[1]), box.left, box.right, 5);
+  const x = scale(0, 1, box.left, box.right, 5);
   const ends = [...Array(n).keys()].flatMap((t) => [cp(t) - half[t], cp(t) + half[t]]);
   const [low, high] = range(ends), y = scale(low, high, box.top, box.bottom, 6), y2 = scale(0, range(half)[1], below.bottom, below.top, 2, true);
   const root = picture(width, 384, `Cp along the chord at ${data.points.key[p]}`,
@@ -126,41 +145,43 @@ function tapNormals(data) {
   });
 }
 
-// Cp on the outline: a stroke at each tap, outward for suction; the heavy part is the interval.
+// Cp on the outline: a stroke at each tap as long as |Cp|, dotted for pressure; the heavy end is the interval.
 function sectionFigure(budget, normals, p, width) {
   const { data } = budget, { taps, outline } = data, n = taps.name.length;
   const cps = [...Array(n).keys()].map((t) => taps.cp[p * n + t]);
   const longest = Math.max(1, ...cps.filter(Number.isFinite).map(Math.abs)), unit = 0.3 / longest;
-  const tip = (t, cp) => [taps.x[t] - unit * cp * normals[t][0], taps.y[t] - unit * cp * normals[t][1]];
-  const tips = cps.map((cp, t) => (Number.isFinite(cp) ? tip(t, cp) : [NaN, NaN]));
+  const tip = (t, length) => [taps.x[t] + unit * length * normals[t][0], taps.y[t] + unit * length * normals[t][1]];
+  const tips = cps.map((cp, t) => (Number.isFinite(cp) ? tip(t, Math.abs(cp)) : [NaN, NaN]));
   const [x0, x1] = range([...outline.x, ...tips.map((v) => v[0])]), [y0, y1] = range([...outline.y, ...tips.map((v) => v[1])]);
   const size = (width - 20) / (x1 - x0), height = Math.ceil(size * (y1 - y0)) + 46;
   const X = (v) => short(10 + (v - x0) * size), Y = (v) => short(12 + (y1 - v) * size);
   const root = picture(width, height, `Cp on the section at ${data.points.key[p]}`,
-    "A stroke at each tap, outward for suction and inward for pressure; its heavy end is the coverage interval.");
+    "A stroke at each tap as long as the size of Cp, solid for suction and dotted for pressure; its heavy end is the coverage interval.");
   root.append(svg("path", { class: "outline", d: linePath([...outline.x].map(X), [...outline.y].map(Y)) }));
-  const strokes = ["", ""], ends = ["", ""];
+  const strokes = ["", "", "", ""], ends = ["", ""];
   cps.forEach((cp, t) => {
     if (!Number.isFinite(cp)) return;
-    const half = Math.max(budget.tapHalf(p, t), 0), [a, b] = [tip(t, cp - half), tip(t, cp + half)], side = taps.upper[t] ? 0 : 1;
-    strokes[side] += `M${X(taps.x[t])} ${Y(taps.y[t])}L${X(tips[t][0])} ${Y(tips[t][1])}`;
+    const half = Math.max(budget.tapHalf(p, t), 0), long = Math.abs(cp);
+    const [a, b] = [tip(t, long - half), tip(t, long + half)], side = taps.upper[t] ? 0 : 1;
+    strokes[side + (cp > 0 ? 2 : 0)] += `M${X(taps.x[t])} ${Y(taps.y[t])}L${X(tips[t][0])} ${Y(tips[t][1])}`;
     ends[side] += `M${X(a[0])} ${Y(a[1])}L${X(b[0])} ${Y(b[1])}`;
   });
   for (const side of [0, 1]) {
-    root.append(svg("g", { class: `s${side}` }, svg("path", { class: "stroke", d: strokes[side] }), svg("path", { class: "heavy", d: ends[side] })));
+    root.append(svg("g", { class: `s${side}` }, svg("path", { class: "stroke", d: strokes[side] }),
+      svg("path", { class: "stroke dotted", d: strokes[side + 2] }), svg("path", { class: "heavy", d: ends[side] })));
   }
   const bar = size * unit;
   root.append(svg("path", { class: "rule", d: `M10 ${height - 14}h${short(bar)}m0 -4v8M10 ${height - 18}v8` }));
-  root.append(svg("text", { class: "axis", x: 16 + bar, y: height - 10 }, "Cp = 1"));
+  root.append(svg("text", { class: "axis", x: 16 + bar, y: height - 10 }, "|Cp| = 1; solid suction, dotted pressure"));
   return root;
 }
 
 // Both intervals of one coefficient on a common scale: linearised above, Monte Carlo below.
-function intervalSketch(c, p, now) {
-  const spans = [[c.low[p], c.high[p]], [c.mcLow[p], c.mcHigh[p]], [now.low, now.high]];
-  const [low, high] = range(spans.flat()), span = high - low || 1, X = (v) => short(4 + (v - low) / span * 112);
-  const root = svg("svg", { viewBox: "0 0 120 24", width: 120, height: 24, "aria-hidden": "true" });
-  spans.slice(0, 2).forEach(([a, b], i) => {
+function intervalSketch(c, p, linear) {
+  const spans = [[linear.low, linear.high], [c.mcLow[p], c.mcHigh[p]]];
+  const [low, high] = range(spans.flat()), span = high - low || 1, X = (v) => short(4 + (v - low) / span * 88);
+  const root = svg("svg", { viewBox: "0 0 96 24", width: 96, height: 24, "aria-hidden": "true" });
+  spans.forEach(([a, b], i) => {
     if (Number.isFinite(a)) root.append(svg("path", { class: `s${i} bars`, d: `M${X(a)} ${7 + 10 * i}H${X(b)}m0 -3v6M${X(a)} ${4 + 10 * i}v6` }));
   });
   if (Number.isFinite(c.est[p])) root.append(svg("path", { class: "chosen", d: `M${X(c.est[p])} 1V23` }));

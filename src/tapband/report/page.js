@@ -3,7 +3,7 @@
 const $ = (id) => document.getElementById(id);
 const data = unpackAll(JSON.parse($("data").textContent));
 const budget = new Budget(data);
-const series = seriesOf(data), normals = tapNormals(data);
+const series = seriesOf(data), asides = asidesOf(data, series), normals = tapNormals(data);
 const index = new Map(data.coefficients.map((c, j) => [c.name, j]));
 const state = { point: 0, of: index.get("cl") ?? 0, set: 0 };
 const SETS = [["cl", "cd_pressure", "cm"], ["cn", "ct"]]
@@ -39,7 +39,7 @@ function showPolars() {
   const columns = wide(room) >= 780 ? names.length : wide(room) >= 520 ? 2 : 1;
   const width = Math.floor((wide(room) - 18 * (columns - 1)) / columns);
   room.style.setProperty("--columns", columns);
-  replace(room, ...names.map((name) => polarFigure(budget, series, index.get(name), width, state.point, choosePoint)));
+  replace(room, ...names.map((name) => polarFigure(budget, series, asides, index.get(name), width, state.point, choosePoint)));
 }
 
 function showLegend() {
@@ -129,12 +129,12 @@ function showIntervals(p) {
     const k = budget.changed ? budget.k(nu) : c.k[p], linear = budget.changed ? now : { low: c.low[p], high: c.high[p] };
     const number = (value, places = d) => html("td", { class: "n" }, html("data", { value: String(value) }, fixed(value, places)));
     const pair = (low, high) => html("td", { class: "n" }, html("data", { value: String(low) }, fixed(low, d)), " … ", html("data", { value: String(high) }, fixed(high, d)));
-    const doubted = budget.unconfirmed[j].has(p), verdict = !Number.isFinite(c.est[p]) ? "no value" : doubted ? "not confirmed" : "confirmed";
+    const doubted = budget.unconfirmed[j].has(p), verdict = !Number.isFinite(c.est[p]) ? MISSING : doubted ? "no" : "yes";
     return html("tr", { "data-c": c.name, "data-headline": doubted && !budget.changed ? "trials" : "linear" },
       html("th", { scope: "row" }, c.name), number(c.est[p]), number(u, decimals(u)),
       html("td", { class: "n" }, Number.isFinite(nu) ? nu.toFixed(nu < 100 ? 1 : 0) : Number.isFinite(c.est[p]) ? "∞" : MISSING),
       html("td", { class: "n" }, fixed(k, 3)), number(0.5 * (linear.high - linear.low)), pair(linear.low, linear.high), pair(c.mcLow[p], c.mcHigh[p]),
-      html("td", { class: "sketch" }, intervalSketch(c, p, now)), html("td", { class: doubted ? "bad" : "" }, verdict));
+      html("td", { class: doubted ? "bad" : "" }, verdict), html("td", { class: "sketch" }, intervalSketch(c, p, linear)));
   }));
 }
 
@@ -149,7 +149,7 @@ function showBudget(p) {
   replace($("budget-of"), data.coefficients[j].name);
   replace($("budget-rows"), ...order.map((s) => {
     const source = data.sources[s], f = budget.factor[s], size = f * data.size[p * n + s], part = budget.contribution(p, j, s), nu = data.dof[p * n + s];
-    return html("tr", { class: f === 1 ? "" : "changed" }, html("th", { scope: "row" }, sourceName(source)), html("td", {}, html("bdi", {}, source.group)),
+    return html("tr", { class: f === 1 ? "" : "changed" }, html("th", { scope: "row" }, sourceName(source)), html("td", {}, html("bdi", {}, source.group === source.name ? "" : source.group)),
       html("td", { class: "n" }, Number.isFinite(size) ? `${significant(size)} ${source.unit === "1" ? "" : source.unit}`.trim() : "by tap"),
       html("td", { class: "n" }, source.single && size > 0 ? significant(part / size) : MISSING),
       html("td", { class: "n" }, html("data", { value: String(part) }, significant(part))),

@@ -12,7 +12,7 @@ from tapband.nouns.errors import QuestionError
 
 if TYPE_CHECKING:
     from tapband.nouns.campaign import Campaign
-    from tapband.reduce import Reduced
+    from tapband.reduction import Reduced
 
 REPORT = "report.html"
 

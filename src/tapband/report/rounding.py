@@ -5,6 +5,7 @@ from __future__ import annotations
 from math import floor, isfinite, log10
 
 MISSING = "–"
+RAISED = str.maketrans("-0123456789", "⁻⁰¹²³⁴⁵⁶⁷⁸⁹")
 
 
 def decimals(uncertainty: float, digits: int = 2) -> int:
@@ -35,6 +36,7 @@ def significant(value: float, digits: int = 3) -> str:
         return MISSING
     if value == 0.0:
         return "0"
-    if 1e-5 <= abs(value) < 1e6:
+    if 1e-4 <= abs(value) < 1e6:
         return fixed(value, max(digits - 1 - floor(log10(abs(float(f"{value:.{digits - 1}e}")))), 0))
-    return f"{value:.{digits - 1}e}".replace("-", "\N{MINUS SIGN}")
+    head, power = f"{value:.{digits - 1}e}".split("e")
+    return f"{head}×10{str(int(power)).translate(RAISED)}".replace("-", "\N{MINUS SIGN}")

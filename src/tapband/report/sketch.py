@@ -20,7 +20,7 @@ LEFT, RIGHT, TOP, BOTTOM = 58, 290, 26, 206
 
 
 class Scale:
-    """Maps a range, widened to whole steps, onto pixels."""
+    """Maps a range, a little widened, onto pixels; ticks at whole steps inside."""
 
     def __init__(self, values: Sequence[float], start: float, end: float, count: int) -> None:
         known = [v for v in values if isfinite(v)] or [0.0, 1.0]
@@ -30,14 +30,14 @@ class Scale:
         raw = (high - low) / count
         power = 10.0 ** floor(log10(raw))
         self.step = power * next(f for f in (1, 2, 5, 10) if raw / power <= f)
-        first, last = floor(low / self.step + 1e-9), ceil(high / self.step - 1e-9)
+        self._low, self._span = low - 0.045 * (high - low), 1.09 * (high - low)
+        first, last = ceil(self._low / self.step - 1e-9), floor((self._low + self._span) / self.step + 1e-9)
         self.ticks = [i * self.step for i in range(first, last + 1)]
         self._start, self._end = start, end
 
     def __call__(self, value: float) -> float:
         """Pixel of a value."""
-        first, last = self.ticks[0], self.ticks[-1]
-        return self._start + (value - first) / (last - first) * (self._end - self._start)
+        return self._start + (value - self._low) / self._span * (self._end - self._start)
 
     def label(self, value: float) -> str:
         """A tick in words."""
@@ -76,6 +76,6 @@ def _axes(x: Scale, y: Scale, name: str) -> str:
     ]
     return (
         f'<g class="grid">{"".join(lines)}</g><g class="ticks">{"".join(words)}</g>'
-        f'<text class="axis" x="2" y="{TOP - 8}">{escape(name)}</text>'
+        f'<text class="axis" x="2" y="{TOP - 10}">{escape(name)}</text>'
         f'<text class="axis" x="{RIGHT}" y="{BOTTOM + 32}" text-anchor="end">angle of attack [deg]</text>'
     )

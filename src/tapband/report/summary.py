@@ -6,6 +6,7 @@ from collections.abc import Mapping, Sequence
 from typing import TYPE_CHECKING
 
 import numpy as np
+from numpy.typing import NDArray
 
 from tapband.files.write_columns import COEFFICIENTS
 from tapband.report.headline import Verdict, coefficients_of, headline, keys, verdicts
@@ -18,7 +19,7 @@ if TYPE_CHECKING:
 
 Words = dict[str, object]
 MAIN = ("cl", "cd_pressure", "cm")
-SETS = (
+ENDINGS = (
     ("as measured", ""),
     ("at the reference Mach number", "_ref"),
     ("at the stated condition", "_stated"),
@@ -71,8 +72,7 @@ def doubt_words(frame: pd.DataFrame) -> list[Words]:
     for name in coefficients_of(frame):
         rows = np.flatnonzero(headline(frame, name).from_trials)
         if len(rows):
-            where = ", ".join(labels[i] for i in rows[:6]) + (", …" if len(rows) > 6 else "")
-            out.append({"name": name, "count": len(rows), "of": len(frame), "where": where})
+            out.append({"name": name, "count": len(rows), "where": _where(rows, labels)})
     return out
 
 
@@ -82,16 +82,26 @@ def empty_words(frame: pd.DataFrame) -> str:
     for name in coefficients_of(frame):
         rows = np.flatnonzero(~np.isfinite(np.asarray(frame[name], dtype=float)))
         if len(rows):
-            where = ", ".join(labels[i] for i in rows[:6]) + (", …" if len(rows) > 6 else "")
-            out.append(f"{name} at {len(rows)} of {len(frame)} points ({where})")
+            out.append(f"{name} at {_where(rows, labels)}")
     return "; ".join(out) + "." if out else ""
+
+
+def _where(rows: NDArray[np.int64], labels: Sequence[str]) -> str:
+    if len(rows) == len(labels):
+        return f"all {len(labels)} points" if len(labels) > 1 else "the only point"
+    first = ", ".join(labels[i] for i in rows[:6])
+    return f"{len(rows)} of {len(labels)} points: {first}{', …' if len(rows) > 6 else ''}"
 
 
 def point_tables(frame: pd.DataFrame) -> list[Words]:
     """One table a set of coefficients: as measured, at the reference Mach number, at the stated condition."""
     known = coefficients_of(frame)
-    order = (*MAIN, *(name for name in COEFFICIENTS if name not in MAIN))
-    sets = [(title, [name + end for name in order if name + end in known]) for title, end in SETS]
+    rest = tuple(name for name in COEFFICIENTS if name not in MAIN)
+    sets = [
+        (title, [name + end for name in names if name + end in known])
+        for title, end in ENDINGS
+        for names in (MAIN, rest)
+    ]
     return [_point_table(frame, title, names) for title, names in sets if names]
 
 
@@ -122,7 +132,7 @@ def _point_table(frame: pd.DataFrame, title: str, names: Sequence[str]) -> Words
             "taps": int(taps),
         }
         rows.append({**row, "cells": cells})
-    return {"title": f"Coefficients {title}", "names": list(names), "rows": rows}
+    return {"title": f"{', '.join(names)} {title}", "names": list(names), "rows": rows}
 
 
 def facts(meta: Mapping[str, object], campaign: Campaign) -> list[Words]:
