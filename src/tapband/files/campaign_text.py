@@ -132,7 +132,7 @@ def _note_syntax(name: str, text: str, error: Exception, findings: Findings) -> 
         stood = lines[min(int(at[1]), len(lines)) - 1].strip()
     reason = re.sub(r" ?\(at .*\)", "", reason)
     rule = f"is not valid TOML ({reason[:1].lower() + reason[1:]})"
-    findings.add(place, rule, shown(stood) if stood else "", "correct the line")
+    findings.add(place, rule, stood, "correct the line")
 
 
 def _source_lines(text: str) -> tuple[int, ...]:

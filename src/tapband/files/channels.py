@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from math import isnan, nan
+from math import nan
 
 from tapband.files.acts import Arrangement
 from tapband.files.faults import offer, shown
@@ -27,7 +27,10 @@ def read_channels(
             )
             folder.findings.add(folder.at(where), rule, shown(name), offer(name, pressures))
             continue
+        before = len(folder.findings)
         columns = _columns(channel, where, taps, folder)
+        if len(folder.findings) > before:
+            continue
         scale = nan
         if channel.full_scale is not None:
             scale = read_full_scale(channel.full_scale, folder.at(f"{where}.full_scale"), folder)
@@ -69,5 +72,5 @@ def _scale_of_module(module: str, taps: TapList) -> float:
     """The full scale that all taps of a module have [Pa], NaN where they have none or several."""
     modules = taps.columns.get("module", ("",) * len(taps.names))
     live = zip(modules, taps.full_scale.tolist(), taps.excluded.tolist(), strict=True)
-    scales = {scale for name, scale, dead in live if name == module and not dead and not isnan(scale)}
+    scales = {scale for name, scale, dead in live if name == module and not dead and scale > 0.0}
     return scales.pop() if len(scales) == 1 else nan

@@ -33,7 +33,7 @@ def read_chord(part: SectionPart | None, folder: Folder) -> float:
 
 
 def read_section(part: SectionPart, chord: float, folder: Folder) -> Section | None:
-    """The section, None where its contour cannot be used."""
+    """The section, None where its contour cannot be used. Its chord may be NaN, with the fault noted."""
     findings = folder.findings
     before = len(findings)
     table = folder.table(part.contour, "section.contour")
@@ -47,9 +47,9 @@ def read_section(part: SectionPart, chord: float, folder: Folder) -> Section | N
             "write a unit behind both, or behind none for fractions of the chord",
         )  # fmt: skip
     lines, x, y = _points(table, x_column, y_column, chord, findings)
-    if len(findings) == before:
+    if len(findings) == before and np.all(np.isfinite(x)):
         _check_shape(table, lines, x, y, findings)
-    if len(findings) > before or not isfinite(chord):
+    if len(findings) > before or not np.all(np.isfinite(x)):
         return None
     return Section(
         x=frozen(x), y=frozen(y), chord=chord, contour_in_lengths=in_lengths(x_column),

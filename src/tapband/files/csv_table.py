@@ -20,7 +20,7 @@ from numpy.typing import NDArray
 
 from tapband.files.campaign_text import note_encoding, note_system
 from tapband.files.faults import Findings, shown
-from tapband.files.tables import MISSING, Array, Block, Table, read_header
+from tapband.files.tables import MISSING, Array, Block, BrokenTableError, Table, read_header
 
 ROWS = 4096
 """Rows of a block."""
@@ -132,8 +132,10 @@ def _blocks(
             data.decode("utf-8-sig")
         except UnicodeDecodeError as error:
             note_encoding(data, error.start, name, findings)
+        raise BrokenTableError(name) from None
     except OSError as error:
         note_system(error, name, findings)
+        raise BrokenTableError(name) from None
 
 
 def _even(

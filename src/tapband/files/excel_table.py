@@ -14,7 +14,7 @@ import numpy as np
 
 from tapband.files.cells import numbers_of, text_of
 from tapband.files.faults import Findings, shown
-from tapband.files.tables import Block, Table, read_header
+from tapband.files.tables import Block, BrokenTableError, Table, read_header
 
 ROWS = 4096
 Row = tuple[int, tuple[object, ...]]
@@ -72,13 +72,22 @@ def _rows(path: Path) -> tuple[Iterator[Row], list[str]]:
     return rows(), others
 
 
+def _next(rows: Iterator[Row], name: str, findings: Findings) -> list[Row]:
+    """The next rows, none at the end of the sheet."""
+    try:
+        return list(islice(rows, ROWS))
+    except Exception as error:  # openpyxl raises what zipfile, its XML parser or its own checks raise
+        findings.add(name, "breaks off", _first_line(error), "save it again as .xlsx")
+        raise BrokenTableError(name) from None
+
+
 def _blocks(
     path: Path, name: str, names: dict[int, str], numbers: Sequence[int], texts: Sequence[int],
     findings: Findings,
 ) -> Iterator[Block]:  # fmt: skip
     rows, _ = _rows(path)
     next(rows, None)
-    while block := list(islice(rows, ROWS)):
+    while block := _next(rows, name, findings):
         lines = np.array([number for number, _ in block], dtype=np.int64)
 
         def column(index: int, block: list[Row] = block) -> list[object]:

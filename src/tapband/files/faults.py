@@ -6,6 +6,7 @@ catches it through :meth:`Findings.take`.
 
 from __future__ import annotations
 
+import re
 from collections.abc import Callable, Iterable, Iterator
 from contextlib import contextmanager
 from difflib import get_close_matches
@@ -62,6 +63,12 @@ class Findings:
             return read()
         return default
 
+    def forget_repeats(self, since: int) -> None:
+        """Drop faults noted after the first ``since`` that say of another place what was said before them."""
+        said = {(fault.rule, fault.got, fault.do) for fault in self._faults[:since]}
+        new = [fault for fault in self._faults[since:] if (fault.rule, fault.got, fault.do) not in said]
+        self._faults[since:] = new
+
     def __len__(self) -> int:
         return len(self._faults)
 
@@ -78,7 +85,7 @@ class Findings:
             if count > ALIKE
         ]
         if self._faults:
-            raise InputError([*self._faults, *more])
+            raise InputError(dict.fromkeys([*self._faults, *more]))
 
 
 def shown(value: object) -> str:
@@ -101,6 +108,9 @@ def shown(value: object) -> str:
 def nearest(word: str, known: Iterable[str]) -> str | None:
     """The known word nearest to this one, if any is near."""
     pool = {name.lower(): name for name in known}
+    inside = [name for name in pool if len(word) > 1 and word.lower() in re.split(r"[^a-z]", name)]
+    if len(inside) == 1:
+        return pool[inside[0]]
     found = get_close_matches(word.lower(), list(pool), n=1, cutoff=0.6)
     return pool[found[0]] if found else None
 

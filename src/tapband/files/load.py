@@ -8,6 +8,7 @@ from __future__ import annotations
 
 import os
 import re
+from contextlib import suppress
 from dataclasses import dataclass
 from pathlib import Path
 
@@ -21,6 +22,7 @@ from tapband.files.folder import Folder
 from tapband.files.model import ClosurePart, IntervalsPart, ReductionPart, SourcePart
 from tapband.files.parts import Parts, read_parts
 from tapband.files.planning import (
+    check_reach,
     read_forecast,
     read_layout,
     read_limit,
@@ -31,6 +33,7 @@ from tapband.files.planning import (
 from tapband.files.points import PointList, read_points
 from tapband.files.slots import read_slots
 from tapband.files.sources import Place, Setting, read_source
+from tapband.files.tables import BrokenTableError
 from tapband.files.taps import TapList, read_taps
 from tapband.nouns.campaign import (
     COEFFICIENT,
@@ -132,13 +135,19 @@ def _arrangement(parts: Parts, folder: Folder) -> Arrangement | None:
 
 
 def _read_tables(parts: Parts, chord: float, arrangement: Arrangement | None, folder: Folder) -> _Tables:
-    section = read_section(parts.section, chord, folder) if parts.section else None
-    tap_list, taps = (
-        read_taps(parts.taps, section, chord, arrangement, folder) if parts.taps else (None, None)
-    )
-    points = None
+    section: Section | None = None
+    tap_list: TapList | None = None
+    taps: Taps | None = None
+    points: PointList | None = None
+    if parts.section is not None:
+        with suppress(BrokenTableError):
+            section = read_section(parts.section, chord, folder)
+    if parts.taps is not None:
+        with suppress(BrokenTableError):
+            tap_list, taps = read_taps(parts.taps, section, chord, arrangement, folder)
     if parts.readings is not None and parts.readings.table is not None:
-        points = read_points(parts.readings.table, tap_list, arrangement, folder)
+        with suppress(BrokenTableError):
+            points = read_points(parts.readings.table, tap_list, arrangement, folder)
     elif parts.readings is not None and not parts.has_forecast:
         folder.findings.add(
             folder.at("readings"),
@@ -196,13 +205,20 @@ def _intervals(part: IntervalsPart, folder: Folder) -> Intervals:
 
 def _plan(parts: Parts, text: CampaignText, setting: Setting) -> Plan:
     stated: dict[str, SourcePart] = {c.part.name: c.part for _, c in parts.sources if c.part is not None}
-    lines = dict(zip(parts.source_names, text.source_lines, strict=False))
-    return Plan(
+    lines = dict(zip(parts.source_names or (), text.source_lines, strict=False))
+    forecast = read_forecast(parts.forecast, setting) if parts.forecast else None
+    limits = [(f"limit[{i + 1}]", part) for i, part in parts.limits]
+    targets = [(f"target[{i + 1}]", part) for i, part in parts.targets]
+    plan = Plan(
         polar=read_polar(parts.polar, setting),
-        limits=tuple(read_limit(part, f"limit[{i + 1}]", setting) for i, part in parts.limits),
-        targets=tuple(read_target(part, f"target[{i + 1}]", setting) for i, part in parts.targets),
-        forecast=read_forecast(parts.forecast, setting) if parts.forecast else None,
+        limits=tuple(read_limit(part, place, setting) for place, part in limits),
+        targets=tuple(read_target(part, place, setting) for place, part in targets),
+        forecast=forecast,
         slots=read_slots(parts.slots, stated, parts.source_names, setting),
         layout=read_layout(parts.layout, setting) if parts.layout else None,
         wiring=read_wiring(parts.wiring, setting) if parts.wiring else None, lines=lines,
     )  # fmt: skip
+    ranges = [limit.alpha_range for limit in plan.limits] + [target.alpha_range for target in plan.targets]
+    places = [f"{place}.alpha_range" for place, _ in [*limits, *targets]]
+    check_reach(list(zip(places, ranges, strict=True)), forecast, setting)
+    return plan

@@ -11,7 +11,7 @@ import numpy as np
 
 from tapband.files.cells import numbers_of, text_of
 from tapband.files.faults import Findings, shown
-from tapband.files.tables import Array, Block, Table, read_header
+from tapband.files.tables import Array, Block, BrokenTableError, Table, read_header
 
 ROWS = 4096
 
@@ -42,21 +42,32 @@ def _blocks(
     path: Path, name: str, names: dict[int, str], numbers: Sequence[int], texts: Sequence[int],
     findings: Findings,
 ) -> Iterator[Block]:  # fmt: skip
+    done = 0
+    for batch in _batches(path, name, [*numbers, *texts], findings):
+        lines = np.arange(done + 1, done + batch.num_rows + 1, dtype=np.int64)
+        done += batch.num_rows
+        columns = [_numeric(batch.column(i)) for i in range(len(numbers))]
+        found = numbers_of(columns, [names[i] for i in numbers], lines, name, findings)
+        cells = range(len(numbers), len(numbers) + len(texts))
+        yield Block(
+            lines=lines, numbers=found,
+            texts=tuple([text_of(cell) for cell in batch.column(i).to_pylist()] for i in cells),
+        )  # fmt: skip
+
+
+def _batches(path: Path, name: str, wanted: Sequence[int], findings: Findings) -> Iterator[Any]:
+    """Record batches of the columns at these positions, in this order."""
     import pyarrow.parquet as parquet
 
-    done = 0
-    with parquet.ParquetFile(path) as file:
-        heads = file.schema_arrow.names
-        wanted = sorted({heads[i] for i in (*numbers, *texts)})
-        for batch in file.iter_batches(batch_size=ROWS, columns=wanted):
-            lines = np.arange(done + 1, done + batch.num_rows + 1, dtype=np.int64)
-            done += batch.num_rows
-            found = numbers_of(
-                [_numeric(batch.column(heads[i])) for i in numbers], [names[i] for i in numbers], lines, name,
-                findings,
-            )  # fmt: skip
-            cells = tuple([text_of(cell) for cell in batch.column(heads[i]).to_pylist()] for i in texts)
-            yield Block(lines=lines, numbers=found, texts=cells)
+    try:
+        with parquet.ParquetFile(path) as file:
+            heads = [file.schema_arrow.names[i] for i in wanted]
+            for batch in file.iter_batches(batch_size=ROWS, columns=list(dict.fromkeys(heads))):
+                yield batch.select(heads)
+    except Exception as error:  # pyarrow raises errors of its own and of the system
+        got = shown((str(error).splitlines() or [type(error).__name__])[0])
+        findings.add(name, "breaks off", got, "write it again")
+        raise BrokenTableError(name) from None
 
 
 def _numeric(column: Any) -> Sequence[object] | Array:

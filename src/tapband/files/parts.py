@@ -44,7 +44,8 @@ class Parts:
     reduction: ReductionPart
     intervals: IntervalsPart
     sources: tuple[tuple[int, Checked[SourcePart]], ...]
-    source_names: tuple[str, ...]
+    source_names: tuple[str, ...] | None
+    """Names as they stand in the file, usable or not; None where sources are no list."""
     polar: PolarPart
     limits: tuple[tuple[int, LimitPart], ...]
     forecast: ForecastPart | None
@@ -127,8 +128,9 @@ def _many(
     return tuple(found)
 
 
-def _names(document: dict[str, Any]) -> tuple[str, ...]:
-    """Names of all sources as they stand in the file, usable or not."""
+def _names(document: dict[str, Any]) -> tuple[str, ...] | None:
     items = document.get("source", [])
-    tables = [item for item in items if isinstance(item, dict)] if isinstance(items, list) else []
+    if not isinstance(items, list):
+        return None
+    tables = [item for item in items if isinstance(item, dict)]
     return tuple(item["name"] for item in tables if isinstance(item.get("name"), str))

@@ -4,14 +4,17 @@ from __future__ import annotations
 
 import re
 from collections.abc import Sequence
+from contextlib import suppress
 from functools import partial
 from math import inf, nan, pi, radians
 
 import numpy as np
 
+from tapband.files.expected import read_expected
 from tapband.files.faults import RuleError, nearest, offer, shown
 from tapband.files.model_plan import ForecastPart, LayoutPart, LimitPart, PolarPart, TargetPart, WiringPart
 from tapband.files.sources import Setting
+from tapband.files.tables import BrokenTableError
 from tapband.files.units import ANGLE, PRESSURE, TEMPERATURE, TIME, bare, chords, fraction, quantity, split
 from tapband.nouns.plan import Forecast, Layout, Limit, Polar, Target, Wiring
 
@@ -68,6 +71,26 @@ def _where(
         findings.add(f"{where}.points", "must name at least one point", "[]", "name a point or remove points")
     _check_points(part.points, f"{place}.points", setting)
     return angles, tuple(part.points)
+
+
+def check_reach(
+    ranges: Sequence[tuple[str, Range | None]], forecast: Forecast | None, setting: Setting
+) -> None:
+    """Each range of angles (with its place) holds at some point or some forecast angle."""
+    known = [] if setting.points is None else [setting.points.alpha]
+    known += [] if forecast is None else [np.array(forecast.alpha)]
+    angles = np.concatenate(known or [np.empty(0)])
+    if not angles.size:
+        return
+    slack = radians(0.05)
+    for place, ends in ranges:
+        if ends is None or not ends[0] <= ends[1]:
+            continue
+        if not np.any((angles >= ends[0] - slack) & (angles <= ends[1] + slack)):
+            got = f"angles from {np.degrees(angles.min()):.4g} to {np.degrees(angles.max()):.4g} deg"
+            setting.folder.findings.add(
+                setting.folder.at(place), "must hold at some point", got, "widen the range"
+            )
 
 
 def _check_points(names: Sequence[str], place: str, setting: Setting) -> None:
@@ -154,9 +177,10 @@ def read_forecast(part: ForecastPart, setting: Setting) -> Forecast | None:
         findings.add(
             at("forecast.margin"), "must not be negative", shown(part.margin), 'write for example "20 %"'
         )
-    from tapband.files.expected import read_expected
-
-    expected = read_expected(part.pressures, alpha, setting) if part.pressures != "inviscid" else None
+    expected = None
+    if part.pressures != "inviscid":
+        with suppress(BrokenTableError):
+            expected = read_expected(part.pressures, alpha, setting)
     p_total = _above_zero(part.p_total, PRESSURE, "forecast.p_total", setting)
     found = Forecast(
         alpha=tuple(alpha), p_total=nan if p_total is None else p_total,

@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 
 from tapband.files.acts import Arrangement
 from tapband.files.faults import Findings, RuleError, listed
-from tapband.files.tables import Array, Column, Table, column_unit, need
+from tapband.files.tables import STANDARD, Array, Column, Table, column_unit, need
 from tapband.files.taps import TapList
 from tapband.files.units import ANGLE, NUMBER, PRESSURE, TEMPERATURE, unit
 from tapband.nouns.campaign import COEFFICIENT, STREAM_CHANNELS
@@ -37,6 +37,8 @@ class Roles:
     groups: tuple[Column, ...]
     factor: Array
     shift: Array
+    sound: bool
+    """Whether every unit was understood, so that numbers can be judged."""
 
     @property
     def numbers(self) -> tuple[Column, ...]:
@@ -70,6 +72,7 @@ def find_roles(
     if alpha is None or point is None:
         return None
     found = tuple(column for column in channels if column)
+    before = len(findings)
     units = [column_unit(table, alpha, ANGLE, findings)]
     units += [
         column_unit(table, column, NUMBER if column.name == "mach" else PRESSURE, findings)
@@ -81,7 +84,7 @@ def find_roles(
     return Roles(
         alpha=alpha, channels=found, optional=tuple(optional), taps=tuple(tap_columns), tap_at=tap_at,
         groups=(point, *groups), factor=np.array([unit.factor for unit in units]),
-        shift=np.array([unit.shift for unit in units]),
+        shift=np.array([unit.shift for unit in units]), sound=len(findings) == before,
     )  # fmt: skip
 
 
@@ -103,10 +106,10 @@ def _tap_columns(table: Table, taps: TapList | None, findings: Findings) -> list
         return []
     found = []
     for name, excluded in zip(taps.names, taps.excluded.tolist(), strict=True):
-        column = table.column(name)
+        column = table.column(name) if name not in STANDARD else None
         if column is not None:
             found.append(column)
-        elif not excluded and name:
+        elif not excluded and name not in {"", *STANDARD}:
             findings.add(
                 table.file, f"needs the column {name} (a tap of {taps.table.file})", "none of that name",
                 f"add the column {name}, or list the tap in taps.excluded",

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Iterator, Mapping, Sequence
+from contextlib import suppress
 from dataclasses import dataclass, field
 from math import pi
 
@@ -16,7 +17,7 @@ from tapband.files.folder import Folder
 from tapband.files.means import Means
 from tapband.files.point_columns import Roles, find_roles
 from tapband.files.stream_checks import check_stream
-from tapband.files.tables import Array, Block, Table
+from tapband.files.tables import Array, Block, BrokenTableError, Table
 from tapband.files.taps import FEWEST, TapList
 from tapband.nouns.campaign import Points, Rows
 from tapband.nouns.errors import Fault, InputError
@@ -35,6 +36,7 @@ class PointList:
     names: tuple[str, ...]
     runs: tuple[str, ...]
     lines: tuple[int, ...]
+    alpha: Array
     groups: Mapping[str, tuple[str, ...]]
     varying: Mapping[str, int]
     """Columns that change within a point, and the line where one first does."""
@@ -89,8 +91,8 @@ def read_points(
     varying = {roles.groups[i].name: line for i, line in keys.varying.items()}
     runs, names = zip(*keys.at, strict=True)
     points = None
+    found = means.means
     if taps is not None:
-        found = means.means
         readings = np.full((len(names), len(taps.names)), np.nan)
         readings[:, roles.tap_at] = found[:, roles.tap_start :]
         _check_live(table, keys, readings, taps, findings)
@@ -103,6 +105,7 @@ def read_points(
         names=names,
         runs=runs,
         lines=tuple(keys.lines),
+        alpha=found[:, 0],
         groups=groups,
         varying=varying,
         points=points,
@@ -136,11 +139,14 @@ def _gather(
         point = keys.index(block, _run_at(roles))
         numbers = roles.si(block.numbers)
         _check_rows(table, roles, block, numbers, findings)
-        if arrangement is not None:
+        if arrangement is not None and roles.sound:
             check_stream(table, roles, block, numbers, arrangement, findings)
         means.add(point, numbers)
         size += numbers.size
-        kept = None if kept is None or size > KEEP else [*kept, (point, numbers)]
+        if kept is not None:
+            kept.append((point, numbers))
+        if size > KEEP:
+            kept = None
     return keys, means, kept
 
 
@@ -174,6 +180,8 @@ def _check_rows(table: Table, roles: Roles, block: Block, numbers: Array, findin
             "must be given in every row",
             "write the number or remove the row",
         )
+    if not roles.sound:
+        return
     note(0, np.abs(numbers[:, 0]) > pi + 1e-9, "must lie within ±180 deg", "correct the angle or its unit")
     for column, item in enumerate(roles.optional, start=1 + len(roles.channels)):
         values = numbers[:, column]
@@ -226,12 +234,13 @@ def _block_source(
 
     def from_file() -> Iterator[Rows]:
         findings, seen, run_at = Findings(), 0, _run_at(roles)
-        for block in _blocks(table, roles, findings):
-            seen += len(block.lines)
-            points = keys.index(block, run_at)
-            if len(findings) or len(keys.lines) > counts.size:
-                break
-            yield _rows(roles, points, roles.si(block.numbers), size)
+        with suppress(BrokenTableError):
+            for block in _blocks(table, roles, findings):
+                seen += len(block.lines)
+                points = keys.index(block, run_at)
+                if len(findings) or len(keys.lines) > counts.size:
+                    break
+                yield _rows(roles, points, roles.si(block.numbers), size)
         if len(findings) or seen != total:
             raise InputError([Fault(where=table.file, rule="changed while it was used", do="start again")])
 

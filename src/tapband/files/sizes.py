@@ -123,7 +123,8 @@ def _check_company(
                 f"{key} = {shown(value)} beside {kind}",
                 f"remove {key}",
             )
-    if part.top is not None and part.shape != "trapezoidal" and kind in {"limits", "lower and upper"}:
+    idle = part.top is not None and part.shape != "trapezoidal" and not doubtful
+    if idle and kind in {"limits", "lower and upper"}:
         findings.add(
             at("top"),
             'goes with shape = "trapezoidal" only',

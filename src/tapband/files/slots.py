@@ -25,7 +25,7 @@ _SIZE_KEYS = tuple(key for family in _FAMILIES for key in family)
 def read_slots(
     parts: Sequence[tuple[int, SlotPart]],
     stated: Mapping[str, StatedPart],
-    names: Sequence[str],
+    names: Sequence[str] | None,
     setting: Setting,
 ) -> tuple[Slot, ...]:
     """The slots. ``stated`` are the sources as written, ``names`` all names declared."""
@@ -51,15 +51,15 @@ def read_slots(
 def _check_replaced(
     part: SlotPart,
     path: tuple[str | int, ...],
-    names: Sequence[str],
+    names: Sequence[str] | None,
     owners: dict[str, str],
     setting: Setting,
 ) -> None:
     findings = setting.folder.findings
     for i, name in enumerate(part.replaces):
         where = setting.folder.at(dotted((*path, "replaces", i)))
-        if name not in names:
-            near = nearest(name, names)
+        if names is not None and name not in names:
+            near = nearest(name, names or ())
             do = f"write {shown(near)}" if near else "write the name of a source"
             findings.add(where, "must be a declared source", shown(name), do)
         elif name in owners:
@@ -133,7 +133,10 @@ def _complete(
         return None
     whole = setting.folder.at(f"{dotted(path)} {shown(part.name)}")
     place = Place(folder=setting.folder, path=path, whole=whole)
-    return read_source(inherit(part, base), place, setting, full_scale=scale)
+    before = len(setting.folder.findings)
+    found = read_source(inherit(part, base), place, setting, full_scale=scale)
+    setting.folder.findings.forget_repeats(before)
+    return found
 
 
 def inherit(part: OptionSourcePart, base: StatedPart) -> OptionSourcePart:

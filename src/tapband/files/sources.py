@@ -277,7 +277,8 @@ def _check_full_scale(source: Source, place: Place, setting: Setting) -> None:
                     place.whole, "needs the full scale that its per cent are of", f"none for {what}",
                     f"{say}, or a column full_scale [kPa] in {taps.table.file}",
                 )  # fmt: skip
-            _check_ports_scale(source, place, setting)
+            if act == "tap pressure" and not lacking:
+                _check_ports_scale(source, place, setting)
         elif channel not in setting.channels or not isfinite(setting.channels[channel].full_scale):
             findings.add(
                 place.whole, "needs the full scale that its per cent are of", f"none for {act}",
@@ -286,12 +287,13 @@ def _check_full_scale(source: Source, place: Place, setting: Setting) -> None:
 
 
 def _check_ports_scale(source: Source, place: Place, setting: Setting) -> None:
-    """A channel that shares the latents of taps needs its full scale too."""
+    """A channel on a module is one more port of the taps and needs its full scale too."""
+    stated = {setting.arrangement.channel(act) for act in source.acts_on}
     for name, channel in setting.channels.items():
-        shares = source.across_taps == COMMON or source.across_taps in channel.columns
-        if shares and not isfinite(channel.full_scale):
+        shares = source.across_taps in {INDEPENDENT, COMMON} or source.across_taps in channel.columns
+        if shares and name not in stated and not isfinite(channel.full_scale):
             setting.folder.findings.add(
                 place.whole, "needs the full scale that its per cent are of",
-                f"none for {name}, a port of the same module",
+                f"none for {name}, which hangs on a module",
                 f'write {name} = {{ ..., full_scale = "..." }} in [stream.channels]',
             )  # fmt: skip

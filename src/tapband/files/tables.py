@@ -10,9 +10,9 @@ from pathlib import Path
 import numpy as np
 from numpy.typing import NDArray
 
-from tapband.files.campaign_text import is_readable
+from tapband.files.campaign_text import is_readable, note_system
 from tapband.files.faults import Findings, RuleError, nearest, shown
-from tapband.files.units import EXAMPLE, NUMBER, Unit, unit
+from tapband.files.units import EXAMPLE, NUMBER, Unit, UnknownUnitError, unit
 
 Array = NDArray[np.float64]
 MISSING = frozenset({"", "NA", "NaN", "nan", "#N/A"})
@@ -37,8 +37,22 @@ class Block:
     texts: tuple[Sequence[str], ...]
 
 
+STANDARD = frozenset(
+    ("point", "run", "config", "alpha", "p_total", "p_static", "p_difference", "q", "mach", "t_total")
+    + ("nominal_alpha", "nominal_mach", "tap", "x", "y", "s", "surface", "module", "full_scale")
+)
+"""Column names with a meaning of their own: none of them is offered as a misspelling of another."""
+
+
+class BrokenTableError(Exception):
+    """A table whose rows cannot be read to the end; its fault is noted already."""
+
+
 Blocks = Callable[[Sequence[int], Sequence[int], Findings], Iterator[Block]]
-"""Blocks of the columns asked for as numbers and as texts; what is no number is noted."""
+"""Blocks of the columns asked for as numbers and as texts; what is no number is noted.
+
+Raises :class:`BrokenTableError`, its fault noted, where the file breaks off.
+"""
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -76,6 +90,8 @@ def open_table(path: Path, name: str, findings: Findings, where: str) -> Table |
     if not is_readable(path, name, findings, where):
         return None
     kind = path.suffix.lower()
+    if kind in _MAGIC and not _begins(path, name, *_MAGIC[kind], findings):
+        return None
     if kind == ".xlsx":
         from tapband.files.excel_table import open_excel
 
@@ -92,12 +108,30 @@ def open_table(path: Path, name: str, findings: Findings, where: str) -> Table |
     return open_csv(path, name, findings)
 
 
+_MAGIC = {".xlsx": (b"PK", "a workbook"), ".parquet": (b"PAR1", "a Parquet file")}
+
+
+def _begins(path: Path, name: str, magic: bytes, kind: str, findings: Findings) -> bool:
+    """Whether a file begins as its kind does; else, or where it cannot be read, the fault is noted."""
+    try:
+        with path.open("rb") as file:
+            begins = file.read(len(magic)) == magic
+    except OSError as error:
+        note_system(error, name, findings)
+        return False
+    if not begins:
+        findings.add(
+            name, f"must be {kind}", "something else by its first bytes", "correct the ending of its name"
+        )
+    return begins
+
+
 _HEAD = re.compile(r"([^\[\]]*?)\s*(?:\[\s*([^\[\]]*?)\s*\])?")
 
 
 def read_header(cells: Sequence[str], file: str, place: str, findings: Findings) -> tuple[Column, ...] | None:
     """Columns of a header row, None where no table can be read by it. Unnamed columns are left out."""
-    columns = []
+    columns, sound = [], True
     if cells and all(re.fullmatch(r"\s*[+-]?[\d.]+([eE][+-]?\d+)?\s*", cell) for cell in cells if cell):
         findings.add(place, "must name the columns", shown(cells[0]), "write the names in the first row")
         return None
@@ -115,8 +149,11 @@ def read_header(cells: Sequence[str], file: str, place: str, findings: Findings)
                 shown(text),
                 'write for example "U07 [Pa]"',
             )
+            sound = False
             continue
         columns.append(Column(name=match[1], unit=match[2] or "", index=index))
+    if not sound:
+        return None
     if not columns:
         findings.add(place, "must name the columns", "an empty row", "write the names in the first row")
         return None
@@ -135,7 +172,7 @@ def need(table: Table, name: str, findings: Findings, why: str = "") -> Column |
     """The column of this name; its absence is noted, with the nearest name."""
     found = table.column(name)
     if found is None:
-        near = nearest(name, table.names)
+        near = nearest(name, [other for other in table.names if other not in STANDARD])
         do = f"rename column {near} or add {name}" if near else f"add the column {name}"
         findings.add(
             table.file, f"needs the column {name}" + (f" ({why})" if why else ""), "none of that name", do
@@ -159,7 +196,10 @@ def column_unit(table: Table, column: Column, dimension: str, findings: Findings
         sample = f'write "{column.name} [{EXAMPLE[dimension]}]"'
         if not column.unit:
             raise RuleError("needs a unit", shown(column.name), sample)
-        found = unit(column.unit)
+        try:
+            found = unit(column.unit)
+        except UnknownUnitError as error:
+            raise RuleError(error.rule, error.got, sample) from None
         if found.dimension != dimension:
             article = "an" if dimension[0] in "aeiou" else "a"
             raise RuleError(f"must be {article} {dimension}", shown(f"{column.name} [{column.unit}]"), sample)

@@ -180,11 +180,13 @@ def _place(
         findings.add(table.file, "must place the taps by x with surface, x with y, or s", got, do)
         return None
     before = len(findings)
-    _check_given(table, block, {name: at[name] for name in way}, findings)
+    given = {column.name: block.numbers[:, i] for i, column in enumerate(places)}
+    _check_given(table, block, {name: given[name] for name in way}, findings)
     upper = (
         _uppers(table, block, surface, findings) if surface else np.zeros(len(block.lines), dtype=np.bool_)
     )
-    if contour is None or len(findings) > before:
+    unknown = any(not np.isfinite(at[name]).all() for name in way)
+    if contour is None or unknown or len(findings) > before:
         return None
     s = _on_contour(table, block, way, at, upper, contour, findings)
     _check_agreement(table, block, way, at, upper if surface else None, s, findings)

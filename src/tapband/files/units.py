@@ -77,6 +77,10 @@ def _table() -> dict[str, Unit]:
     return table | {"°F": fahrenheit, "degR": Unit(TEMPERATURE, 5.0 / 9.0)}
 
 
+class UnknownUnitError(RuleError):
+    """A unit that neither the table nor pint knows."""
+
+
 TABLE = _table()
 _WATER = re.compile(
     r"(in|inch|inches|in\.)[ _]?(of[ _])?(h2o|h₂o|wc|w\.c\.|wg|aq|water)|iwc|iwg", re.IGNORECASE
@@ -104,7 +108,7 @@ def unit(text: str) -> Unit:
     if found is None:
         near = nearest(text, TABLE)
         do = f'write "{near}"' if near else 'write a unit such as "Pa", "kPa", "mm", "deg" or "K"'
-        raise RuleError("is no unit that is known", shown(text), do)
+        raise UnknownUnitError("has a unit that is not known", shown(text), do)
     return found
 
 
@@ -142,18 +146,23 @@ def _registry() -> Any:
 _NUMBER = re.compile(r"\s*([+-]?(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?)\s*(.*?)\s*", re.DOTALL)
 
 
+_COMMA = re.compile(r"\s*[+-]?\d*,\d")
+
+
 def split(value: object) -> tuple[float, str]:
     """The number and the unit text (may be empty) of a value such as ``"35 Pa"`` or ``35``."""
     if isinstance(value, bool) or not isinstance(value, (int, float, str)):
         raise RuleError("must be a number with its unit in quotes", shown(value), 'write for example "35 Pa"')
     if isinstance(value, str):
         match = _NUMBER.fullmatch(value)
-        if match is None or match[2][:1] in {",", "±"} or value.strip()[:1] == "±":
+        if value.strip()[:1] == "±":
+            raise RuleError("takes no ± sign", shown(value), f"write {shown(value.strip()[1:].strip())}")
+        if _COMMA.match(value):
             raise RuleError(
-                "must begin with a number (decimal point, no ± sign)",
-                shown(value),
-                'write for example "35 Pa"',
+                "takes a decimal point", shown(value), f"write {shown(value.replace(',', '.', 1))}"
             )
+        if match is None:
+            raise RuleError("must begin with a number", shown(value), 'write for example "35 Pa"')
         number, rest = float(match[1]), match[2]
     else:
         number, rest = _as_float(value), ""
@@ -189,6 +198,10 @@ def quantity(value: object, dimension: str, *, also: str = "") -> float:
         raise RuleError(f"must be {_PHRASE[dimension]}", shown(value), f"write {example}")
     try:
         found = unit(name)
+    except UnknownUnitError as error:
+        near = nearest(name, [unit for unit, its in TABLE.items() if its.dimension == dimension])
+        do = f'write "{bare(number)} {near}"' if near else f"write {example}"
+        raise RuleError(error.rule, shown(value), do) from None
     except RuleError as error:
         raise RuleError(error.rule, shown(value), error.do) from None
     if found.dimension != dimension:

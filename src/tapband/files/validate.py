@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Mapping, Sequence
 from copy import deepcopy
 from dataclasses import dataclass
@@ -9,7 +10,7 @@ from typing import Any, Generic, TypeVar
 
 from pydantic import BaseModel, ValidationError
 
-from tapband.files.faults import Findings, RuleError, nearest, offer, shown
+from tapband.files.faults import Findings, RuleError, nearest, shown
 from tapband.files.fields import Part
 
 M = TypeVar("M", bound=Part)
@@ -86,21 +87,21 @@ def _note(
         said.add(loc)
         owner = _plain(loc[:-1])
         whole = label if label and not owner else dotted((*path, *owner))
-        found = _rule_broken(model, loc, item["type"], item.get("ctx", {}), item["input"], item["msg"])
+        found = _rule_broken(model, path, loc, item["type"], item.get("ctx", {}), item["input"], item["msg"])
         where = whole if item["type"] == "missing" else dotted((*path, *loc))
         findings.add(file + (where or "top level"), found.rule, found.got, found.do)
 
 
 def _rule_broken(
-    model: type[Part], loc: Path, kind: str, ctx: Mapping[str, Any], got: object, text: str
+    model: type[Part], path: Path, loc: Path, kind: str, ctx: Mapping[str, Any], got: object, text: str
 ) -> RuleError:
     key = str(loc[-1]) if loc else ""
     if kind == "extra_forbidden":
         return RuleError("unknown key", shown(key), _offer_key(key, _keys(model, loc[:-1])))
     sample = _example(model, loc)
     if kind == "missing":
-        return RuleError(f"needs {key}", "nothing", f"write {key} = {sample}")
-    do = f"write {sample}" if sample else ""
+        return RuleError(f"needs {key}", "nothing", _offer_missing((*path, *loc), sample))
+    do = f"write for example {sample}" if sample else ""
     match kind:
         case "literal_error":
             known = [
@@ -109,19 +110,25 @@ def _rule_broken(
             if all(word.isdigit() for word in known):
                 return RuleError(f"must be {' or '.join(known)}", shown(got), f"write {known[0]}")
             one = ", ".join(shown(word) for word in known)
-            return RuleError(f"must be one of {one}", shown(got), offer(str(got), known))
+            near = nearest(str(got), known)
+            return RuleError(
+                f"must be one of {one}", shown(got), f"write {shown(near)}" if near else "choose one"
+            )
         case "string_type" | "string_too_short" | "list_type" if kind != "list_type" or "Text" in text:
             return RuleError("must be text in quotes", shown(got), do)
         case "list_type":
             return RuleError("must be a list", shown(got), do)
         case "float_type" | "int_type" | "int_from_float":
             whole = "whole " if kind.startswith("int") else ""
+            if isinstance(got, str) and re.fullmatch(r"-?\d+" if whole else r"-?\d+(\.\d+)?", got):
+                do = f"write {got}"
             return RuleError(f"must be a {whole}number", shown(got), do)
         case "finite_number":
             return RuleError("must be finite", shown(got), do)
         case "too_short" | "too_long":
             most = ctx.get("min_length", ctx.get("max_length"))
-            return RuleError(f"must hold {'at least ' if kind == 'too_short' else ''}{most}", shown(got), do)
+            words = f"at least {most} value" if most == 1 else f"{most} values"
+            return RuleError(f"must hold {words}", shown(got), do)
         case "greater_than" | "greater_than_equal" | "less_than" | "less_than_equal":
             word = {"greater_than": "above", "greater_than_equal": "at least", "less_than": "below"}
             bound = next(iter(ctx.values()))
@@ -129,6 +136,13 @@ def _rule_broken(
         case "model_type" | "dict_type" | "model_attributes_type":
             return RuleError("must be a table", shown(got), do)
     return RuleError(text[:1].lower() + text[1:], shown(got), do)
+
+
+def _offer_missing(path: Path, sample: str) -> str:
+    """What to write where a key is missing; a list of tables has a header of its own."""
+    if sample.startswith("[{"):
+        return "write [[" + ".".join(step for step in path if isinstance(step, str)) + "]]"
+    return f"write for example {path[-1]} = {sample}"
 
 
 def _offer_key(key: str, known: Sequence[str]) -> str:
