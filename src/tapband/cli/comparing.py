@@ -18,7 +18,7 @@ if TYPE_CHECKING:
 FIRST = ("cl", "cd_pressure", "cm")
 MANY, ENDS = 16, 7
 """A comparison of more pairs shows this many at either end."""
-NAME = 12
+NAME = 13
 """Widest name of a point."""
 
 Name = Annotated[str, typer.Argument(help="A point (POINT or RUN/POINT), a run or a config.")]
@@ -144,7 +144,7 @@ def _empty(*names: str) -> Table:
     from rich import box
     from rich.table import Table
 
-    table = Table(box=box.SIMPLE_HEAD, pad_edge=False, padding=(0, 1))
+    table = Table(box=box.SIMPLE_HEAD, pad_edge=False, padding=(0, 1, 0, 0))
     for name in names:
         text = name in ("coefficient", "remaining")
         if name == "A":
@@ -165,6 +165,12 @@ def _interval(row: dict[str, Any]) -> str:
 
     text = plus_minus(row["difference"], row["U"])
     return text.replace("\N{MINUS SIGN}", "-") + ("*" if row["significant"] == "yes" else " ")
+
+
+def _at_one_angle(row: dict[str, Any]) -> str:
+    from tapband.report.rounding import plus_minus
+
+    return plus_minus(row["equal_angle"], row["equal_angle_U"]).replace("\N{MINUS SIGN}", "-")
 
 
 def _half(expanded: float) -> str:
@@ -188,10 +194,10 @@ def _findings(frame: pd.DataFrame) -> list[str]:
             f"{ratio[worst]:.3g} times as wide"
         )
     turned = frame[(frame["significant"] == "yes") & (frame["equal_angle_significant"] == "no")]
-    if len(turned):
-        names = ", ".join(dict.fromkeys(str(name) for name in turned["coefficient"]))
-        lines.append(
-            f"{names}: significant as tested, but not at {len(turned)} places at one true angle: their "
-            "angles or the errors of these differ (equal_angle columns)"
-        )
+    for name in dict.fromkeys(str(name) for name in turned["coefficient"]):
+        if not name.endswith("_ref"):
+            row = _records(turned[turned["coefficient"] == name])[0]
+            lines.append(
+                f"{name} of {row['a']}: significant as tested, but {_at_one_angle(row)} at one true angle"
+            )
     return lines

@@ -24,7 +24,7 @@ def differences(found: Differences) -> pd.DataFrame:
     def flat(values: NDArray[Any]) -> NDArray[Any]:
         return values.reshape(-1)
 
-    equal_significant = np.abs(found.value) > found.equal_angle_expanded
+    equal_significant = np.abs(found.equal_angle_value) > found.equal_angle_expanded
     known = np.isfinite(found.value)
     frame = pd.DataFrame(
         {
@@ -45,8 +45,10 @@ def differences(found: Differences) -> pd.DataFrame:
             "mach_a": np.repeat(found.mach[:, 0], m),
             "mach_b": np.repeat(found.mach[:, 1], m),
             "interpolated": np.repeat(np.where(found.interpolated, "yes", "no").astype(object), m),
-            "u_equal_angle": flat(found.equal_angle_u),
-            "significant_equal_angle": flat(
+            "equal_angle": flat(found.equal_angle_value),
+            "equal_angle_u": flat(found.equal_angle_u),
+            "equal_angle_U": flat(found.equal_angle_expanded),
+            "equal_angle_significant": flat(
                 _yes(equal_significant, known & np.isfinite(found.equal_angle_expanded))
             ),
             "remaining": [_remaining(found, r, j) for r in range(size) for j in range(m)],

@@ -1,10 +1,10 @@
 """The difference of two points, runs or configs, with what they share cancelled.
 
 Runs and configs are brought to equal angles first (:mod:`tapband.questions.pairing`). A difference is that of
-the sections as tested, at the angles they truly had. ``equal_angle`` is the same difference asked at one true
-angle: each side is moved by its local slope times the error of its angle, so that a shared angle error
-cancels and one of its own counts. Where one side is interpolated its angles are part of the value, and the
-two are the same.
+the sections as tested, at the angles they truly had, which a pair within the tolerance may not quite share.
+``equal_angle`` is the same difference at one true angle: the second side is moved there by its local slope,
+and the errors of both angles count, so that a shared one cancels and one of its own does not. Where one side
+is interpolated its angles are part of the value, and the two are the same.
 """
 
 from __future__ import annotations
@@ -23,6 +23,7 @@ from tapband.questions.pairing import (
     SAME_MACH,
     Node,
     Pair,
+    Slope,
     nodes_of,
     pairs_of,
     single_nodes,
@@ -31,7 +32,7 @@ from tapband.questions.pairing import (
 from tapband.questions.sides import Side, two_sides
 
 Array = NDArray[np.float64]
-INTERPOLATION, MISMATCH = "interpolation between angles", "angles not quite equal"
+INTERPOLATION = "interpolation between angles"
 ROUNDING = 1e-12
 """A difference smaller than this is none."""
 
@@ -45,7 +46,7 @@ class Differences:
     b: tuple[str, ...]
     outputs: tuple[str, ...]
     sources: tuple[str, ...]
-    """Those of the campaign, then the terms that pairing adds."""
+    """Those of the campaign, then the term that interpolation adds."""
     alpha: Array
     """(R, 2) angles of the two sides [rad]."""
     mach: Array
@@ -59,6 +60,8 @@ class Differences:
     """If errors were called independent between points."""
     variance: Array
     """(R, m, S) by source."""
+    equal_angle_value: Array
+    """The difference at one true angle, NaN where no local slope is known."""
     equal_angle_u: Array
     equal_angle_expanded: Array
     interpolated: NDArray[np.bool_]
@@ -66,7 +69,7 @@ class Differences:
     notes: tuple[str, ...]
     combination: Combination
     added: Array
-    """(R, m) variance of the terms that pairing adds."""
+    """(R, m) variance of interpolation."""
 
     @property
     def low(self) -> Array:
@@ -110,15 +113,15 @@ def _curves(latents: Latents, first: Side, second: Side, within: float, level: f
     rows = _Rows(pairs=[], slopes=[], name=second.name)
     for one, other in _alike(latents, first, second, notes):
         lines = [nodes_of(latents, side, within) for side in (one, other)]
-        values = [_values(latents, line) for line in lines]
         pooled = first.kind == "config"
         mine, theirs = lines if pooled else (single_nodes(latents, side) for side in (one, other))
         found, left = pairs_of(mine, theirs, lines[1], within)
         for pair in found:
-            mine_slope = slope_at(lines[0], values[0], pair.first)
-            their_slopes = [slope_at(lines[1], values[1], node) for node in pair.nodes]
             rows.pairs.append(pair)
-            rows.slopes.append((mine_slope, their_slopes))
+            own = slope_at(lines[0], pair.first)
+            others = [slope_at(lines[1], node) or own for node in pair.nodes]
+            # A side of one angle has no slope of its own; the other's stands in.
+            rows.slopes.append((own or others[0], others))
         if left:
             angles = ", ".join(f"{degrees(node.alpha):.2f}" for node in left)
             notes.append(f"{second.name} holds no angle around {angles} deg; not compared there")
@@ -159,10 +162,10 @@ def _of_config(latents: Latents, side: Side, config: str) -> Side:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class _Rows:
-    """Pairs, and for each the local slopes (m,) of its first node and of its other nodes, where known."""
+    """Pairs, and for each the local slopes of its first node and of its other nodes, where known."""
 
     pairs: list[Pair]
-    slopes: list[tuple[Array | None, list[Array | None]]]
+    slopes: list[tuple[Slope | None, list[Slope | None]]]
     name: str
 
     def second_label(self, pair: Pair, keys: Sequence[str]) -> str:
@@ -171,46 +174,63 @@ class _Rows:
         return "+".join(keys[i] for i in pair.nodes[0].points)
 
 
+class _Terms:
+    """Terms of a combination while they are gathered."""
+
+    def __init__(self, latents: Latents) -> None:
+        self._latents = latents
+        self._parts: list[tuple[int, int, float, Array]] = []
+
+    def add(self, row: int, node: Node, weight: float, slope: Array | float) -> None:
+        """``weight`` times a node, its angle errors moved along ``slope`` (m,)."""
+        moved = np.broadcast_to(slope, (len(self._latents.outputs),)) * (-weight / len(node.points))
+        self._parts += [(row, p, weight / len(node.points), moved) for p in node.points]
+
+    def combination(self, rows: int) -> Combination:
+        row, point, share, moved = (np.array(column) for column in zip(*self._parts, strict=True))
+        m = len(self._latents.outputs)
+        return Combination(
+            rows=rows, row=row, point=point, weight=share[:, None, None] * np.eye(m), on_alpha=moved
+        )
+
+
 def _combination(latents: Latents, rows: _Rows, at_equal_angle: NDArray[np.bool_]) -> Combination:
-    """The differences; rows marked are asked at one true angle."""
-    m = len(latents.outputs)
-    row, point, share, moved = [], [], [], []
+    """The differences; rows marked are asked at one true angle, NaN where a slope is not known."""
+    terms = _Terms(latents)
     for r, (pair, (mine, theirs)) in enumerate(zip(rows.pairs, rows.slopes, strict=True)):
-        sides = [(pair.first, 1.0, mine)]
-        sides += [(n, -float(w), s) for n, w, s in zip(pair.nodes, pair.weights, theirs, strict=True)]
-        for node, weight, known in sides:
-            slope = np.zeros(m) if not at_equal_angle[r] else np.full(m, np.nan) if known is None else known
-            for p in node.points:
-                row.append(r)
-                point.append(p)
-                share.append(weight / len(node.points))
-                moved.append(-slope * weight / len(node.points))
-    return Combination(
-        rows=len(rows.pairs),
-        row=np.array(row),
-        point=np.array(point),
-        weight=np.array(share)[:, None, None] * np.eye(m),
-        on_alpha=np.array(moved).reshape(-1, m),
-    )
+        along = at_equal_angle[r]
+        terms.add(r, pair.first, 1.0, _rate(latents, mine) if along else 0.0)
+        for node, weight, slope in zip(pair.nodes, pair.weights, theirs, strict=True):
+            terms.add(r, node, -float(weight), _rate(latents, slope) if along else 0.0)
+        if along and pair.apart != 0.0 and theirs[0] is not None:
+            for node, weight in zip(theirs[0].nodes, theirs[0].weights, strict=True):
+                terms.add(r, node, pair.apart * float(weight), 0.0)
+    return terms.combination(len(rows.pairs))
+
+
+def _rate(latents: Latents, slope: Slope | None) -> Array | float:
+    return np.nan if slope is None else np.asarray(slope.weights @ _values(latents, slope.nodes))
 
 
 def _differences(latents: Latents, kind: str, rows: _Rows, level: float, notes: Sequence[str]) -> Differences:
     pairs = rows.pairs
     interpolated = np.array([pair.interpolated for pair in pairs])
     combination = _combination(latents, rows, interpolated)
-    void = _void(latents, combination)
-    between, apart = _pairing_terms(latents, rows)
-    found = spread(latents, combination).plus(between).plus(apart)
-    equal = spread(latents, _combination(latents, rows, np.ones(len(pairs), dtype=np.bool_)))
-    equal = equal.plus(between).plus(apart)
+    added = _interpolation(latents, rows)
+    found = spread(latents, combination).plus(added)
+    moved = _combination(latents, rows, np.ones(len(pairs), dtype=np.bool_))
+    equal = spread(latents, moved).plus(added)
+    unknown = np.zeros((len(pairs), 1))
+    np.add.at(unknown, moved.row, np.sum(moved.on_alpha, axis=1, keepdims=True) * 0.0)
     k = found.k(level)
-    blank = np.where(void, np.nan, 0.0)
+    blank = np.where(_void(latents, combination), np.nan, 0.0)
+    unknown = unknown + blank
     return Differences(
         kind=kind,
         a=tuple(_label(latents, pair.first) for pair in pairs),
         b=tuple(rows.second_label(pair, latents.keys) for pair in pairs),
         outputs=latents.outputs,
-        sources=(*latents.sources, INTERPOLATION, MISMATCH),
+        sources=(*latents.sources, INTERPOLATION),
         alpha=np.array([[pair.first.alpha, _mean(pair, "alpha")] for pair in pairs]),
         mach=np.array([[pair.first.mach, _mean(pair, "mach")] for pair in pairs]),
         value=combination.value(latents) + blank,
@@ -220,12 +240,13 @@ def _differences(latents: Latents, kind: str, rows: _Rows, level: float, notes: 
         U=k * found.u + blank,
         u_independent=np.sqrt(found.independent) + blank,
         variance=found.variance + blank[:, :, None],
-        equal_angle_u=equal.u + blank,
-        equal_angle_expanded=equal.k(level) * equal.u + blank,
+        equal_angle_value=moved.value(latents) + unknown,
+        equal_angle_u=equal.u + unknown,
+        equal_angle_expanded=equal.k(level) * equal.u + unknown,
         interpolated=interpolated,
         notes=tuple(notes),
         combination=combination,
-        added=between + apart,
+        added=added,
     )
 
 
@@ -240,18 +261,14 @@ def _void(latents: Latents, combination: Combination) -> NDArray[np.bool_]:
     return missing
 
 
-def _pairing_terms(latents: Latents, rows: _Rows) -> tuple[Array, Array]:
-    """Variances (R, m) of interpolating, and of pairing unequal angles; both bounded by half-widths."""
-    between = np.zeros((len(rows.pairs), len(latents.outputs)))
-    apart = np.zeros_like(between)
-    for r, (pair, (mine, theirs)) in enumerate(zip(rows.pairs, rows.slopes, strict=True)):
+def _interpolation(latents: Latents, rows: _Rows) -> Array:
+    """Variance (R, m) of interpolating, bounded by what leaving out an end node changes."""
+    half = np.zeros((len(rows.pairs), len(latents.outputs)))
+    for r, pair in enumerate(rows.pairs):
         for lower in pair.lower:
             change = (pair.weights - lower) @ _values(latents, pair.nodes)
-            between[r] = np.maximum(between[r], np.abs(change))
-        slope = mine if theirs[0] is None else theirs[0]
-        if pair.apart != 0.0 and slope is not None:
-            apart[r] = np.abs(slope * pair.apart)
-    return between**2 / 3.0, apart**2 / 3.0
+            half[r] = np.maximum(half[r], np.abs(change))
+    return half**2 / 3.0
 
 
 def _label(latents: Latents, node: Node) -> str:

@@ -168,17 +168,24 @@ def lagrange(x: Array, at: float) -> Array:
     return weights
 
 
-def slope_at(line: Sequence[Node], values: Array, node: Node) -> Array | None:
-    """∂y/∂alpha (m,) per rad at a node's angle, from a side's pooled nodes and their values (N, m).
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Slope:
+    """∂y/∂alpha [per rad] at one angle as Σ weight · node."""
 
-    Of the parabola through the three nearest nodes at the node's Mach number, of the line through two; None
-    where there is one alone.
+    nodes: tuple[Node, ...]
+    weights: Array
+
+
+def slope_at(line: Sequence[Node], node: Node) -> Slope | None:
+    """The local slope at a node's angle, from a side's pooled nodes at the node's Mach number.
+
+    Of the parabola through the three nearest, of the line through two; None where there is one alone.
     """
-    alike = [i for i, other in enumerate(line) if abs(other.mach - node.mach) <= SAME_MACH]
+    alike = [other for other in line if abs(other.mach - node.mach) <= SAME_MACH]
     if len(alike) < 2:
         return None
-    chosen, weights = slope_weights(np.array([line[i].alpha for i in alike]), node.alpha)
-    return np.asarray(weights @ values[alike][chosen])
+    chosen, weights = slope_weights(np.array([other.alpha for other in alike]), node.alpha)
+    return Slope(nodes=tuple(alike[chosen]), weights=weights)
 
 
 def slope_weights(x: Array, at: float) -> tuple[slice, Array]:
