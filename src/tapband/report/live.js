@@ -126,6 +126,7 @@ function start() {
   window.addEventListener("resize", () => {
     if (window.innerWidth === width) return;
     width = window.innerWidth;
+    widths.clear();
     showPolars(); showDrivers(); showCp(state.point);
   });
   showAll();

@@ -12,7 +12,13 @@ const SETS = [["cl", "cd_pressure", "cm"], ["cn", "ct"]]
   .filter((names) => names.length);
 
 function replace(node, ...children) { node.replaceChildren(...children); }
-function wide(node) { return Math.max(240, Math.floor(node.clientWidth)); }
+
+// Widths are measured once a layout, not once a figure: each measurement would make the browser lay out again.
+const widths = new Map();
+function wide(node) {
+  if (!widths.has(node)) widths.set(node, Math.max(240, Math.floor(node.clientWidth)));
+  return widths.get(node);
+}
 function said(interval) {
   const d = decimals(interval.half);
   if (!Number.isFinite(interval.half)) return MISSING;
