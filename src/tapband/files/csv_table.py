@@ -24,6 +24,7 @@ from tapband.files.tables import MISSING, Array, Block, BrokenTableError, Table,
 
 ROWS = 4096
 """Rows of a block."""
+MARKS = ("\t", ";", ",")
 _SNIFF = 1 << 18
 _NUMBER = re.compile(r"[+-]?(?:\d+([.,]?)\d*|([.,])\d+)(?:[eE][+-]?\d+)?")
 
@@ -37,7 +38,22 @@ class Dialect:
     """Whether the decimal mark is a comma."""
 
 
-Line = tuple[int, str]
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Shape:
+    """Line of the header, number of its cells, and the names by position."""
+
+    first: int
+    width: int
+    names: dict[int, str]
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Lines:
+    """Rows of a file with their line numbers (R,); ``quoted`` where one has quotation marks."""
+
+    at: NDArray[np.int64]
+    rows: list[str]
+    quoted: bool
 
 
 def open_csv(path: Path, name: str, findings: Findings) -> Table | None:
@@ -50,18 +66,20 @@ def open_csv(path: Path, name: str, findings: Findings) -> Table | None:
         return None
     if not _is_text(head, name, findings):
         return None
-    text = head.decode("utf-8-sig", errors="ignore")
-    lines = list(_data_lines(iter(text.splitlines(keepends=True))))
+    lines = _data_lines(head.decode("utf-8-sig", errors="ignore").replace("\r\n", "\n").replace("\r", "\n"))
     if not lines:
         findings.add(name, "is empty", do="write a header row and the rows below it")
         return None
+    first = lines[0][0]
     dialect = _sniff([line for _, line in lines[:-1] or lines])
     cells = _cells(lines[0][1], dialect)
-    columns = read_header(cells, name, f"{name}, line {lines[0][0]}", findings)
+    columns = read_header(cells, name, f"{name}, line {first}", findings)
     if columns is None:
         return None
-    blocks = partial(_blocks, path, name, dialect, len(cells), {c.index: c.name for c in columns})
-    return Table(file=name, columns=columns, row_word="line", blocks=blocks)
+    shape = Shape(first=first, width=len(cells), names={column.index: column.name for column in columns})
+    return Table(
+        file=name, columns=columns, row_word="line", blocks=partial(_blocks, path, name, dialect, shape)
+    )
 
 
 def _is_text(head: bytes, name: str, findings: Findings) -> bool:
@@ -75,24 +93,25 @@ def _is_text(head: bytes, name: str, findings: Findings) -> bool:
     return True
 
 
-def _data_lines(lines: Iterator[str]) -> Iterator[Line]:
-    """Numbered lines without comments and blank lines; line ends cut off."""
-    for number, line in enumerate(lines, start=1):
-        text = line.rstrip("\r\n")
-        if text.startswith("#") and not text.startswith("#N/A"):
-            continue
-        if text.strip(" \t,;"):
-            yield number, text
+def _is_data(row: str) -> bool:
+    """Whether a row is neither a comment nor blank."""
+    return bool(row.strip(",;\t") and row.strip()) and not (
+        row.startswith("#") and not row.startswith("#N/A")
+    )
+
+
+def _data_lines(text: str) -> list[tuple[int, str]]:
+    """Numbered rows of a text that are neither comments nor blank."""
+    return [(number, row) for number, row in enumerate(text.split("\n"), start=1) if _is_data(row)]
 
 
 def _sniff(lines: Sequence[str]) -> Dialect:
     """Delimiter by the header row and the row below it, then the decimal mark by what most numbers bear."""
-    delimiter = ","
-    for mark in ("\t", ";", ","):
-        counts = {len(_cells(line, Dialect(delimiter=mark, comma=False))) for line in lines[:2]}
-        if max(counts) > 1 and (len(counts) == 1 or mark in "\t;"):
-            delimiter = mark
-            break
+    counts = {
+        mark: [len(_cells(row, Dialect(delimiter=mark, comma=False))) for row in lines[:2]] for mark in MARKS
+    }
+    even = [mark for mark, found in counts.items() if found[0] > 1 and len(set(found)) == 1]
+    delimiter = even[0] if even else max(MARKS, key=lambda mark: counts[mark][0])
     if delimiter == ",":
         return Dialect(delimiter=delimiter, comma=False)
     marks = [
@@ -114,18 +133,18 @@ def _cells(line: str, dialect: Dialect) -> list[str]:
 
 
 def _blocks(
-    path: Path, name: str, dialect: Dialect, width: int, names: dict[int, str],
-    numbers: Sequence[int], texts: Sequence[int], findings: Findings,
+    path: Path, name: str, dialect: Dialect, shape: Shape, numbers: Sequence[int], texts: Sequence[int],
+    findings: Findings,
 ) -> Iterator[Block]:  # fmt: skip
     """Blocks of rows; rows of another width than the header are noted and left out."""
     try:
         with path.open(encoding="utf-8-sig", newline=None) as file:
-            lines = _data_lines(file)
-            next(lines, None)
-            while block := list(islice(lines, ROWS)):
-                block = _even(block, name, dialect, width, names, findings)
-                if block:
-                    yield _read(block, name, dialect, names, numbers, texts, findings)
+            done = 0
+            while raw := list(islice(file, ROWS)):
+                lines = _even(raw, done, name, dialect, shape, findings)
+                done += len(raw)
+                if lines.rows:
+                    yield _read(lines, name, dialect, shape, numbers, texts, findings)
     except UnicodeDecodeError:
         data = path.read_bytes()
         try:
@@ -138,73 +157,83 @@ def _blocks(
         raise BrokenTableError(name) from None
 
 
-def _even(
-    lines: list[Line], name: str, dialect: Dialect, width: int, names: dict[int, str], findings: Findings
-) -> list[Line]:
-    """Lines of the header's width."""
-    mark = dialect.delimiter
-    if all(line.count(mark) == width - 1 and '"' not in line for _, line in lines):
-        return lines
-    even = []
-    for number, line in lines:
-        cells = len(_cells(line, dialect))
-        if cells == width:
-            even.append((number, line))
+def _even(raw: list[str], done: int, name: str, dialect: Dialect, shape: Shape, findings: Findings) -> Lines:
+    """Rows of the header's width behind the header; ``done`` lines came before these."""
+    text = "".join(raw)
+    rows = text.removesuffix("\n").split("\n")
+    at = np.arange(done + 1, done + len(rows) + 1, dtype=np.int64)
+    quoted, mark = '"' in text, dialect.delimiter
+    plain = done >= shape.first and not quoted and "#" not in text and min(map(len, rows)) >= shape.width
+    if plain and {row.count(mark) for row in rows} == {shape.width - 1}:
+        return Lines(at=at, rows=rows, quoted=False)
+    keep = []
+    for i, row in enumerate(rows):
+        if at[i] <= shape.first or not _is_data(row):
+            continue
+        cells = len(_cells(row, dialect))
+        if cells == shape.width:
+            keep.append(i)
             continue
         findings.add(
-            f"{name}, line {number}", f"must have {width} cells like the header", str(cells),
-            "add the missing cells" if cells < width else "remove the extra cells or delimiters", kind=name,
+            f"{name}, line {at[i]}", f"must have {shape.width} cells like the header", str(cells),
+            "add the missing cells" if cells < shape.width else "remove the extra cells or delimiters",
+            kind=name,
         )  # fmt: skip
-    return even
+    return Lines(at=at[keep], rows=[rows[i] for i in keep], quoted=quoted)
 
 
 def _read(
-    lines: list[Line], name: str, dialect: Dialect, names: dict[int, str], numbers: Sequence[int],
-    texts: Sequence[int], findings: Findings,
+    lines: Lines, name: str, dialect: Dialect, shape: Shape, numbers: Sequence[int], texts: Sequence[int],
+    findings: Findings,
 ) -> Block:  # fmt: skip
     """One block, by NumPy where it can read it, else cell by cell."""
-    places = np.array([number for number, _ in lines], dtype=np.int64)
-    rows = [line for _, line in lines]
-    plain = _plain(rows, dialect, numbers)
-    quoted = any('"' in row for row in rows)
-    if plain is None or (texts and quoted):
-        cells = [_cells(row, dialect) for row in rows]
-        columns = tuple([row[i].strip() for row in cells] for i in texts)
+    plain = _plain(lines, dialect, numbers)
+    if plain is None or (texts and lines.quoted):
+        cells = [_cells(row, dialect) for row in lines.rows]
         if plain is None:
-            plain = _by_cell(cells, places, name, dialect, names, numbers, findings)
+            plain = _by_cell(cells, lines.at, name, dialect, shape, numbers, findings)
     else:
         last = max(texts, default=0) + 1
-        cells = [row.split(dialect.delimiter, last) for row in rows] if texts else []
-        columns = tuple([row[i].strip() for row in cells] for i in texts)
-    return Block(lines=places, numbers=plain, texts=columns)
+        cells = [row.split(dialect.delimiter, last) for row in lines.rows] if texts else []
+    columns = tuple([row[i].strip() for row in cells] for i in texts)
+    return Block(lines=lines.at, numbers=plain, texts=columns)
 
 
-def _plain(rows: list[str], dialect: Dialect, numbers: Sequence[int]) -> Array | None:
+def _plain(lines: Lines, dialect: Dialect, numbers: Sequence[int]) -> Array | None:
     """Numbers of plain rows (R, k), None where NumPy cannot read them or one is infinite."""
+    rows = lines.rows
     if not numbers:
         return np.empty((len(rows), 0))
-    mark = dialect.delimiter
-    text = mark + f"{mark}\n{mark}".join(rows) + mark
-    if '"' in text or (dialect.comma and "." in text):
+    if lines.quoted:
         return None
-    for token in ("", "NA", "#N/A"):
-        bare = f"{mark}{token}{mark}"
-        if bare in text:
-            text = text.replace(bare, f"{mark}nan{mark}").replace(bare, f"{mark}nan{mark}")
-    if dialect.comma:
-        text = text.replace(",", ".")
-    columns = [index + 1 for index in numbers]
+    found = None if dialect.comma else _numpy(rows, dialect, numbers)
+    if found is None:
+        mark = dialect.delimiter
+        text = mark + f"{mark}\n{mark}".join(rows) + mark
+        if dialect.comma and "." in text:
+            return None
+        for token in ("", "NA", "#N/A"):
+            bare, missing = f"{mark}{token}{mark}", f"{mark}nan{mark}"
+            text = text.replace(bare, missing).replace(bare, missing)
+        if dialect.comma:
+            text = text.replace(",", ".")
+        found = _numpy(text.split("\n"), dialect, [index + 1 for index in numbers])
+    return None if found is None or np.isinf(found).any() else found
+
+
+def _numpy(rows: list[str], dialect: Dialect, columns: Sequence[int]) -> Array | None:
+    """Columns of rows (R, k), None where a cell is no number to NumPy."""
     try:
-        found: NDArray[np.float64] = np.loadtxt(
-            text.split("\n"), delimiter=mark, comments=None, usecols=columns, ndmin=2, dtype=np.float64
+        found: Array = np.loadtxt(
+            rows, delimiter=dialect.delimiter, comments=None, usecols=columns, ndmin=2, dtype=np.float64
         )
     except ValueError:
         return None
-    return None if np.isinf(found).any() else found
+    return found
 
 
 def _by_cell(
-    cells: list[list[str]], places: NDArray[np.int64], name: str, dialect: Dialect, names: dict[int, str],
+    cells: list[list[str]], places: NDArray[np.int64], name: str, dialect: Dialect, shape: Shape,
     numbers: Sequence[int], findings: Findings,
 ) -> Array:  # fmt: skip
     """Numbers cell by cell (R, k); a cell that is none is noted and counts as missing."""
@@ -218,8 +247,8 @@ def _by_cell(
             if number is not None and isfinite(number):
                 out[row, column] = number
             else:
-                where = f"{name}, column {names[index]}"
-                place = f"{name}, line {line}, column {names[index]}"
+                where = f"{name}, column {shape.names[index]}"
+                place = f"{name}, line {line}, column {shape.names[index]}"
                 rule, do = _why(text, number, dialect)
                 findings.add(place, rule, shown(text), do, kind=where)
     return out

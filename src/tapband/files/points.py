@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Callable, Iterator, Mapping, Sequence
 from contextlib import suppress
 from dataclasses import dataclass, field
+from itertools import groupby
 from math import pi
 
 import numpy as np
@@ -56,21 +57,25 @@ class _Keys:
         """Index of each row's point (R,), new keys added."""
         names = block.texts[0]
         runs: Sequence[str] = block.texts[run_at] if run_at is not None else [""] * len(names)
-        out = np.empty(len(names), dtype=np.int64)
-        lines = block.lines.tolist()
-        for row, (key, cells) in enumerate(
+        found, sizes, row = [], [], 0
+        for (key, cells), same in groupby(
             zip(zip(runs, names, strict=True), zip(*block.texts, strict=True), strict=True)
         ):
-            found = self.at.setdefault(key, len(self.lines))
-            if found == len(self.lines):
-                self.lines.append(lines[row])
+            index = self.at.setdefault(key, len(self.lines))
+            if index == len(self.lines):
+                self.lines.append(int(block.lines[row]))
                 self.cells.append(cells)
-            elif cells != self.cells[found]:
-                for column, (a, b) in enumerate(zip(cells, self.cells[found], strict=True)):
-                    if a != b:
-                        self.varying.setdefault(column, lines[row])
-            out[row] = found
-        return out
+            elif cells != self.cells[index]:
+                self._note_change(cells, self.cells[index], int(block.lines[row]))
+            found.append(index)
+            sizes.append(sum(1 for _ in same))
+            row += sizes[-1]
+        return np.repeat(np.array(found, dtype=np.int64), sizes)
+
+    def _note_change(self, cells: tuple[str, ...], first: tuple[str, ...], line: int) -> None:
+        for column, (a, b) in enumerate(zip(cells, first, strict=True)):
+            if a != b:
+                self.varying.setdefault(column, line)
 
 
 def read_points(
@@ -160,7 +165,7 @@ def _run_at(roles: Roles) -> int | None:
 
 def _check_rows(table: Table, roles: Roles, block: Block, numbers: Array, findings: Findings) -> None:
     """Note rows without a name, an angle or a stream reading, and numbers no test has."""
-    for row, name in enumerate(block.texts[0]):
+    for row, name in enumerate(block.texts[0] if "" in block.texts[0] else ()):
         if not name:
             findings.add(
                 table.at(int(block.lines[row]), "point"), "must name the point", "nothing", "write its name",

@@ -37,9 +37,10 @@ class Block:
     texts: tuple[Sequence[str], ...]
 
 
+_STREAM = ("p_total", "p_static", "p_difference", "q", "mach", "t_total")
+_PLACES = ("x", "y", "s", "surface", "full_scale")
 STANDARD = frozenset(
-    ("point", "run", "config", "alpha", "p_total", "p_static", "p_difference", "q", "mach", "t_total")
-    + ("nominal_alpha", "nominal_mach", "tap", "x", "y", "s", "surface", "module", "full_scale")
+    ("point", "run", "config", "alpha", *_STREAM, "nominal_alpha", "nominal_mach", *_PLACES, "tap", "module")
 )
 """Column names with a meaning of their own: none of them is offered as a misspelling of another."""
 
