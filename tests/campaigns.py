@@ -102,16 +102,21 @@ def campaign(
     trials: str = "auto",
     seed: int = 1,
     contour_points: int = 401,
+    shape: tuple[Array, Array] | None = None,
+    cp: Array | None = None,
+    full_scale: float = 130_000.0,
+    chord: float = 0.4,
     **reduction: object,
 ) -> Campaign:
     """Exact incompressible flow read by ideal instruments at a Mach number; angles [deg].
 
-    ``noise`` (P, n) [Pa] is added to the tap readings.
+    ``noise`` (P, n) [Pa] is added to the tap readings. ``shape`` and ``cp`` (P, n) replace the section's own
+    contour and flow.
     """
     places = section.taps(41, "cosine", 0.98) if taps is None else taps
-    x, y = section.contour(contour_points)
+    x, y = section.contour(contour_points) if shape is None else shape
     contour = Contour.of(x, y)
-    s, _ = contour.place_xy(places.x, places.y)
+    s = np.clip(places.s, contour.s_lower, contour.s_upper)
     count, size_ = s.size, len(alphas)
     alpha = np.radians(np.asarray(alphas, dtype=np.float64))
     names = tuple(f"T{i + 1:02d}" for i in range(count))
@@ -136,7 +141,7 @@ def campaign(
     if pressures == "relative to p_ambient":
         wanted = [*wanted, "p_ambient"]
     used = {name: values[name] for name in wanted}
-    cp = section.cp(places.theta, alpha)
+    cp = section.cp(places.theta, alpha) if cp is None else cp
     state = solve(stream, pressures, used)
     readings = cp * state.q[:, None] - state.offset[:, None] + (0.0 if noise is None else noise)
     for at in lost or {}:
@@ -148,7 +153,7 @@ def campaign(
         title="exact flow",
         folder="",
         section=Section(
-            x=x, y=y, chord=0.4, contour_in_lengths=in_lengths, moment_centre=0.25, full_arm=True
+            x=x, y=y, chord=chord, contour_in_lengths=in_lengths, moment_centre=0.25, full_arm=True
         ),
         taps=Taps(
             names=names,
@@ -157,7 +162,7 @@ def campaign(
             y=places.y,
             upper=places.upper,
             excluded=np.zeros(count, dtype=np.bool_),
-            full_scale=np.full(count, 130_000.0),
+            full_scale=np.full(count, full_scale),
             columns={"module": wired},
             placed_in_lengths=in_lengths,
         ),
