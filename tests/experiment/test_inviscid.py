@@ -155,10 +155,17 @@ def test_limits_name_the_angles_at_which_the_flow_is_not_to_be_believed() -> Non
     assert "Locally supersonic at alpha 0 deg" in limits_said(flow_round(flow.contour, 0.0), 0.76)[1]
 
 
-def test_a_hundred_solutions_take_seconds() -> None:
+def test_a_hundred_angles_cost_less_than_a_tenth_of_a_hundred_solutions() -> None:
     contour = solved(section(-0.1, 1.9), 20).contour
-    start = time.process_time()
-    for _ in range(25):
-        flow_round(contour, ALPHA)
-    # Wanted: 100 solutions of 200 panels in seconds; 25 took 0.2 s, so this fails at a factor of ten.
-    assert time.process_time() - start < 2.5
+
+    def best(angles: int) -> float:
+        alpha, times = np.linspace(-0.1, 0.2, angles), []
+        for _ in range(5):
+            start = time.process_time()
+            flow_round(contour, alpha)
+            times.append(time.process_time() - start)
+        return min(times)
+
+    # One factorisation serves all angles: seen 2.4 times the work of one. (A solution of 200 panels takes 5 ms
+    # on the machine this was written on: a hundred of them half a second.)
+    assert best(100) < 10.0 * best(1)
