@@ -26,13 +26,14 @@ from tapband.questions.latents import Latents, from_arrays, latents_at, latents_
 from tapband.questions.statement import statements
 from tapband.reduction import Reduced, assemble, reduce_campaign
 from tapband.reduction.undeclared import NO_WALL_CORRECTION, NOT_TOTAL_DRAG, undeclared
+from tapband.report.plan_result import Plan
 
 if TYPE_CHECKING:
     import pandas as pd
     from distributed import Client
     from uncertainties import UFloat
 
-__all__ = ["Campaign", "Results", "load", "reduce"]
+__all__ = ["Campaign", "Plan", "Results", "forecast", "load", "reduce", "size"]
 
 Array = NDArray[np.float64]
 Progress = Callable[[int, int], None]
@@ -77,6 +78,16 @@ class Results:
     def correlation(self) -> pd.DataFrame:
         """One row a point and pair of coefficients."""
         return self._table("correlation")
+
+    @property
+    def ranking(self) -> pd.DataFrame:
+        """One row a point, coefficient and group of sources."""
+        return self._table("ranking")
+
+    @property
+    def tap_ranking(self) -> pd.DataFrame:
+        """One row a point, coefficient and tap."""
+        return self._table("tap_ranking")
 
     @property
     def warnings(self) -> tuple[str, ...]:
@@ -183,15 +194,53 @@ def reduce(
     points done and points in all. ``client`` of a running Dask cluster spreads the points over its workers;
     the rows are the same.
     """
-    from tapband.files.frames import frames
-
     reduced = reduce_campaign(
         campaign, None if trials is None else str(trials), seed, progress, client=client
     )
-    tables = frames(reduced)
+    return _results(reduced, "reduce")
+
+
+def forecast(
+    campaign: Campaign,
+    progress: Progress | None = None,
+    trials: str | int | None = None,
+    seed: int | None = None,
+    client: Client | None = None,
+) -> Results:
+    """Before a test: what its forecast expects, reduced as readings would be; marked as forecast everywhere."""
+    from tapband.questions.forecasting import outlook
+
+    plan = outlook(campaign).campaign
+    reduced = reduce_campaign(plan, None if trials is None else str(trials), seed, progress, client=client)
+    return _results(reduced, "forecast")
+
+
+def size(campaign: Campaign, progress: Callable[[float, float, str], None] | None = None) -> Plan:
+    """Before a test: how good each source must be, the cheapest options, ranges, wiring, taps, averaging."""
+    from tapband.questions.sizing import sized
+    from tapband.report.plan_result import plan_of
+
+    answers = sized(campaign, progress=progress)
+    campaign = answers.basis.campaign
+    return plan_of(answers, {**_head(campaign), "warnings": list(campaign.warnings)})
+
+
+def _results(reduced: Reduced, kind: str) -> Results:
+    from tapband.files.frames import frames
+    from tapband.files.frames_plan import outcome_frames
+    from tapband.files.frames_rank import rank_tables
+
+    tables = frames(reduced) | rank_tables(reduced)
+    planning, said, unmet = outcome_frames(reduced, forecast=kind == "forecast")
+    if kind == "forecast":
+        tables["cp"]["flag"] = [f"forecast; {flag}" if flag else kind for flag in tables["cp"]["flag"]]
+    meta = _meta(reduced)
+    targets = planning["targets"].to_dict("records") if "targets" in planning else []
+    status = max(int(meta["exit_status"]), int(unmet))
+    warnings = [*meta["warnings"], *said]
     return Results(
-        tables=tables,
-        meta=_meta(reduced),
+        tables={**tables, **planning},
+        meta={**meta, "kind": kind, "warnings": warnings, "targets": targets, "exit_status": status},
         arrays=to_arrays(latents_of(reduced)),
         campaign=reduced.campaign,
         reduced=reduced,
@@ -242,6 +291,22 @@ def _differences(
 def _meta(reduced: Reduced) -> dict[str, Any]:
     campaign, drawn = reduced.campaign, reduced.montecarlo
     empty = bool(np.any(~np.isfinite(reduced.linear.estimate)))
+    return {
+        **_head(campaign),
+        "trials_used": np.max(drawn.trials, axis=-1).tolist()
+        if drawn.trials.ndim > 1
+        else drawn.trials.tolist(),
+        "refused": drawn.refused.tolist(),
+        "method": list(drawn.method),
+        "corrections": [str(c) for c in reduced.assembled.corrected.made],
+        "warnings": list(reduced.warnings),
+        "stated": statements(reduced),
+        "exit_status": int(empty),
+    }
+
+
+def _head(campaign: Campaign) -> dict[str, Any]:
+    """What every result says of the campaign it comes from and of the program."""
     names = ("numpy", "scipy", "pandas")
     return {
         "format": 1,
@@ -252,11 +317,6 @@ def _meta(reduced: Reduced) -> dict[str, Any]:
         "same_angle": float(np.degrees(campaign.plan.polar.same_angle)),
         "seed": campaign.intervals.seed,
         "trials": campaign.intervals.trials,
-        "trials_used": np.max(drawn.trials, axis=-1).tolist()
-        if drawn.trials.ndim > 1
-        else drawn.trials.tolist(),
-        "refused": drawn.refused.tolist(),
-        "method": list(drawn.method),
         "versions": {
             "tapband": __version__,
             "python": sys.version.split()[0],
@@ -266,10 +326,6 @@ def _meta(reduced: Reduced) -> dict[str, Any]:
         "integration": campaign.reduction.integration,
         "compressibility": campaign.reduction.compressibility,
         "reference_mach": campaign.reduction.reference_mach,
-        "corrections": [str(c) for c in reduced.assembled.corrected.made],
-        "warnings": list(reduced.warnings),
         "undeclared": list(undeclared(campaign)),
         "cautions": list(CAUTIONS),
-        "stated": statements(reduced),
-        "exit_status": int(empty),
     }
