@@ -87,7 +87,7 @@ def test_thinner_and_thinner_sections_reach_thin_section_theory(
         alpha0 = -flow.cl[0] / (flow.cl[1] - flow.cl[0])
         got.append([alpha0, flow.cm[0] + alpha0 * (flow.cm[1] - flow.cm[0])])
     limit = 2.0 * np.array(got[1]) - np.array(got[0])
-    # What is left after the first power of thickness is its square, and the square of camber: 1 % of each.
+    # Left after the first power of thickness are its square and that of camber, about 1 % together.
     assert limit == pytest.approx([zero_lift, moment], rel=0.015)
 
 
@@ -151,7 +151,7 @@ def test_limits_name_the_angles_at_which_the_flow_is_not_to_be_believed() -> Non
         "Locally supersonic at alpha 14 deg",
     ]
     assert len(limits_said(flow_round(flow.contour, 0.0), 0.3)) == 1
-    # Critical Cp −0.43 at Mach 0.737 by Prandtl-Glauert (methods table): 0012 at zero lift reaches −0.41.
+    # Critical Cp −0.43 at Mach 0.737 by Prandtl-Glauert (recomputed); 0012 at zero lift reaches −0.41.
     assert "Locally supersonic at alpha 0 deg" in limits_said(flow_round(flow.contour, 0.0), 0.76)[1]
 
 
@@ -166,6 +166,6 @@ def test_a_hundred_angles_cost_less_than_a_tenth_of_a_hundred_solutions() -> Non
             times.append(time.process_time() - start)
         return min(times)
 
-    # One factorisation serves all angles: seen 2.4 times the work of one. (A solution of 200 panels takes 5 ms
-    # on the machine this was written on: a hundred of them half a second.)
+    # One factorisation serves all angles: seen 2.4 times the work of one. (A solution of 200 panels took 5 ms
+    # on the machine of its first run: a hundred of them half a second.)
     assert best(100) < 10.0 * best(1)
