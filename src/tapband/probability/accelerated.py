@@ -38,21 +38,27 @@ def run(model: Model, plan: plain.Plan, progress: plain.Progress | None = None) 
     blocks = list(_blocks(chosen))
     found: dict[int, Outcome] = {}
     left: dict[int, Mask] = {}
-    with ThreadPoolExecutor(plan.threads) as pool:
-        for points, block in zip(
-            blocks, pool.map(lambda p: process(model, p, chosen, plan), blocks), strict=True
-        ):
-            for place, point in enumerate(points):
-                found[point] = _outcome(block, place)
-                if block.plain[place].any():
-                    left[point] = block.plain[place]
-            if progress is not None:
-                progress(points.stop, len(chosen) + len(left))
+    for points, block in zip(blocks, _in_order(model, blocks, chosen, plan), strict=True):
+        for place, point in enumerate(points):
+            found[point] = _outcome(block, place)
+            if block.plain[place].any():
+                left[point] = block.plain[place]
+        if progress is not None:
+            progress(points.stop, len(chosen) + len(left))
     if left:
         told = None if progress is None else _after(progress, len(chosen), len(left))
         for point, outcome in plain.run_points(model, list(left), plan, told, left).items():
             found[point] = _merged(found[point], outcome, left[point])
     return found
+
+
+def _in_order(model: Model, blocks: list[range], chosen: list[Choice], plan: plain.Plan) -> Iterator[Block]:
+    """Results of the blocks in their order, whoever finishes first."""
+    if min(plan.threads, len(blocks)) <= 1:
+        yield from (process(model, points, chosen, plan) for points in blocks)
+        return
+    with ThreadPoolExecutor(plan.threads) as pool:
+        yield from pool.map(lambda points: process(model, points, chosen, plan), blocks)
 
 
 def _blocks(chosen: list[Choice]) -> Iterator[range]:

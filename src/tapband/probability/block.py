@@ -1,4 +1,4 @@
-"""One block of points through the accelerated engine: pilot, decision, fresh trials where needed.
+"""One block of points through the accelerated engine: pilots, decision, fresh trials where needed.
 
 Every decision about a point is taken from its own numbers, so no row depends on the block it is in.
 """
@@ -18,13 +18,13 @@ from tapband.probability.estimate import Estimate, averaged, estimated
 from tapband.probability.model import Model
 from tapband.probability.outcome import NAMES
 from tapband.probability.plain import Plan
-from tapband.probability.smoothing import NormalBase, TableBase
+from tapband.probability.smoothing import TableBase
 from tapband.probability.strategy import Choice, Direction, direction, fallback
 from tapband.probability.trials import Tiles, Trials, integrated, line, probe, shape_error
 
 Array = NDArray[np.float64]
-Mask = NDArray[np.bool_]
 Counts = NDArray[np.int64]
+Mask = NDArray[np.bool_]
 Sampler = Callable[[range, Mask, Tiles], Trials]
 
 TILE = 512
@@ -35,12 +35,15 @@ TOGETHER = 16_384
 """Most trials held at once for points done together."""
 LADDER = (1, 2, 3, 4, 6, 8, 12, 16, 24, 32, 48, 64, 96, 128, 192, 256, 384, 512, 768, 1024, 1536, 2048)
 """Numbers of tiles that a point may get, so that neighbours often get the same."""
-_WARY = 16
+_WARY = 16.0
 """Fewest tiles where a probe saw what the pilot did not."""
-_COST = {"integrated": 3.0, "line": 6.0}
-"""Cost of a trial in plain ones, roughly: it decides when plain trials are the cheaper way."""
+_DEAR = 4.0
+"""Tiles beyond which a line is tried beside integrating out."""
+_COST = {"integrated": 3.0, "line": 9.0}
+"""Cost of a trial in plain ones, roughly: it decides which way is the cheaper."""
 _PLAIN_ENDS = 28.5
-"""(2 √(0.025 · 0.975)/φ(1.96))²: trials times (δ/u)² for the ends of a 95 % interval."""
+"""(2 √(0.025 · 0.975)/φ(1.96))²: plain trials times (δ/u)² for the ends of a normal 95 % interval."""
+_PLAIN_LEAST = 1e5
 _ROUNDS = 6
 _HIDDEN = 12.0
 """A probe at 3 standard deviations sees up to 7 times the pilot's root mean square of a smooth difference."""
@@ -52,7 +55,7 @@ class Block:
 
     points: range
     numbers: dict[str, Array]
-    trials: NDArray[np.int64]
+    trials: Counts
     reached: Mask
     plain: Mask
     methods: list[set[str]]
@@ -83,31 +86,52 @@ class Block:
         self.trials[place][rows] = estimate.trials
         met = estimate.excess(model.u[points.start : points.stop]) < 1.0
         self.reached[place][rows] = met[rows]
-        for methods, some in zip(self.methods[place], rows.any(axis=1), strict=True):
-            if some:
-                methods.add(method)
+        for row, some in enumerate(rows):
+            if some.any():
+                self.methods[place.start + row].add(method)
 
 
 def process(model: Model, points: range, chosen: Sequence[Choice], plan: Plan) -> Block:
-    """All rows of a block of points."""
+    """All rows of a block of points: a pilot each way, then the cheaper way to the end."""
     block = Block.empty(model, points)
     own = _checked(model, points, [chosen[point] for point in points], plan)
+    rows = np.array([choice.integrated for choice in own], dtype=np.bool_)
+    hard = np.array([choice.line for choice in own], dtype=np.bool_)
+    far = _probed(model, block, rows | hard)
+    ways: list[tuple[_Stage, range]] = []
+    need = {method: np.full(rows.shape, np.inf) for method in _COST}
     for some in runs(points, [(choice.out, choice.normal) for choice in own]):
-        first = own[some.start - points.start]
-        rows = np.array([own[p - points.start].integrated for p in some], dtype=np.bool_)
-        if rows.any():
-            sampler = _integrating(model, first, plan.level)
-            _Stage(model, plan, block, "integrated", sampler).run(some, rows)
-    rows = np.array([choice.line for choice in own], dtype=np.bool_)
-    ways = [direction(model, p, row) if row.any() else None for p, row in zip(points, rows, strict=True)]
-    for some in runs(points, [None if way is None else way.key for way in ways]):
         place = block.places(some)
-        if ways[place.start] is None:
-            block.plain[place] |= rows[place]
-        else:
-            along = {p: way for p, way in zip(points, ways, strict=True) if way is not None}
-            _Stage(model, plan, block, "line", _lining(model, along)).run(some, rows[place])
+        if (rows & ~block.plain)[place].any():
+            sampler = _integrating(model, own[place.start], plan.level)
+            stage = _Stage(model, plan, block, "integrated", sampler, far)
+            need["integrated"][place] = stage.pilot(some, (rows & ~block.plain)[place])
+            ways.append((stage, some))
+    hard = (hard | (rows & (need["integrated"] > _DEAR))) & ~block.plain
+    lines = [direction(model, p, row) if row.any() else None for p, row in zip(points, hard, strict=True)]
+    along = {p: way for p, way in zip(points, lines, strict=True) if way is not None}
+    for some in runs(points, [None if way is None else way.key for way in lines]):
+        if some.start in along:
+            stage = _Stage(model, plan, block, "line", _lining(model, along), far)
+            place = block.places(some)
+            need["line"][place] = stage.pilot(some, hard[place])
+            ways.append((stage, some))
+    _finish(block, ways, need, (rows | hard) & ~block.plain)
     return block
+
+
+def _finish(block: Block, ways: list[tuple[_Stage, range]], need: dict[str, Array], rows: Mask) -> None:
+    """Fresh trials for rows whose pilot did not suffice, the cheaper way; none is cheap enough: plain."""
+    pending = rows & ~np.any([tiles == 0.0 for tiles in need.values()], axis=0)
+    costs = {method: tiles * _COST[method] for method, tiles in need.items()}
+    least = np.min(list(costs.values()), axis=0)
+    block.plain[pending & np.isinf(least)] = True
+    pending &= np.isfinite(least)
+    for stage, points in ways:
+        place = block.places(points)
+        mine = (pending & (costs[stage.method] <= least))[place]
+        if mine.any():
+            stage.finish(points, mine, need[stage.method][place])
 
 
 def runs(points: range, keys: Sequence[Hashable]) -> Iterator[range]:
@@ -134,13 +158,20 @@ def _checked(model: Model, points: range, own: list[Choice], plan: Plan) -> list
     ]
 
 
+def _probed(model: Model, block: Block, rows: Mask) -> Array:
+    """Largest difference to the linear model far out (Pb, m); rows that are refused there are left to plain."""
+    y, linear = probe(model, block.points)
+    far = np.abs(y - linear).max(axis=1)
+    block.plain[rows & ~np.isfinite(far)] = True
+    return np.where(rows & np.isfinite(far), far, 0.0)
+
+
 def _integrating(model: Model, choice: Choice, level: float) -> Sampler:
     def sample(points: range, rows: Mask, tiles: Tiles) -> Trials:
-        base = NormalBase()
-        if not choice.normal:
-            law = model.law(points, rows, choice.out, 0.5 * FRACTIONS[0] * (1.0 - level))
-            return integrated(model, points, rows, choice.out, TableBase(law, rows.shape), tiles)
-        return integrated(model, points, rows, choice.out, base, tiles)
+        if choice.normal:
+            return integrated(model, points, rows, choice.out, None, tiles)
+        law = model.law(points, rows, choice.out, 0.5 * FRACTIONS[0] * (1.0 - level))
+        return integrated(model, points, rows, choice.out, TableBase(law, rows.shape), tiles)
 
     return sample
 
@@ -161,68 +192,63 @@ class _Stage:
     block: Block
     method: str
     sampler: Sampler
+    far: Array
+    """What the probes saw, (Pb, m) of the block."""
 
-    def run(self, points: range, rows: Mask) -> None:
-        """Pilot, then fresh trials of as many tiles as each point needs; hopeless rows are left to plain."""
-        pending = rows.copy()
-        far = self._probed(points, pending)
-        pilot = self._estimate(points, pending, Tiles(seed=self.plan.seed, size=FINE, count=FINE))
+    def pilot(self, points: range, rows: Mask) -> Array:
+        """Tiles (Pb, m) that rows need beyond the pilot: 0 where it sufficed, inf where plain is cheaper."""
+        got = self._estimate(points, rows, Tiles(seed=self.plan.seed, size=FINE, count=FINE))
+        far = self.far[self.block.places(points)]
         delta = tolerance(self.model.u[points.start : points.stop])
-        wary = pending & (far > _HIDDEN * pilot.scatter) & (far > 0.1 * delta)
-        if self.plan.fixed is not None:
-            self._judge(points, pending, wary, pilot, keep=False)
-            self._fixed(points, pending, self.plan.fixed)
+        wary = rows & (far > _HIDDEN * got.scatter) & (far > 0.1 * delta)
+        need = np.where(rows, self._need(points, got), np.inf)
+        good = rows & (need == 0.0) & ~wary
+        need = np.where(good, 0.0, np.maximum(need, np.where(wary, _WARY, 1.0)))
+        if self.plan.fixed is None:
+            self.block.store(self.model, points, good, got, self.method)
+            return need
+        return np.maximum(need, 1.0)
+
+    def finish(self, points: range, rows: Mask, tiles: Array) -> None:
+        """Fresh trials until ``rows`` are good enough, starting from the numbers of ``tiles`` (Pb, m)."""
+        pending = rows.copy()
+        fixed = self.plan.fixed
+        if fixed is not None:
+            self._fixed(points, pending, fixed)
             return
-        need = self._judge(points, pending, wary, pilot)
+        need = _rungs(np.where(pending, tiles, 0.0))
         for _ in range(_ROUNDS):
-            if not pending.any():
-                return
             for some in _together(points, need):
                 inside = slice(some.start - points.start, some.stop - points.start)
-                count = int(need[inside][0]) * TILE
-                fresh = self._batches(some, pending[inside], count)
-                need[inside] = self._judge(some, pending[inside], wary[inside], fresh)
-        self._leave(points, pending)
+                got = self._batches(some, pending[inside], int(need[inside][0]) * TILE)
+                more = np.where(pending[inside], self._need(some, got), 0.0)
+                good = pending[inside] & (more == 0.0)
+                self.block.store(self.model, some, good, got, self.method)
+                self.block.plain[self.block.places(some)] |= pending[inside] & np.isinf(more)
+                pending[inside] &= ~good & np.isfinite(more)
+                need[inside] = _rungs(np.where(pending[inside], more, 0.0))
+            if not pending.any():
+                return
+        self.block.plain[self.block.places(points)] |= pending
 
-    def _judge(self, points: range, pending: Mask, wary: Mask, got: Estimate, *, keep: bool = True) -> Counts:
-        """Keep rows that are good enough, leave hopeless ones, and say how many tiles the others need (Pb,)."""
-        where = slice(points.start, points.stop)
-        excess = got.excess(self.model.u[where])
-        if keep:
-            good = pending & ~got.failed & (excess < 1.0) & (~wary | (got.trials >= _WARY * TILE))
-            self.block.store(self.model, points, good, got, self.method)
-            pending &= ~good
-        wanted = np.maximum(1.15 * got.trials * excess * excess / TILE, np.where(wary, _WARY, 1.0))
-        u = self.model.u[where]
+    def _need(self, points: range, got: Estimate) -> Array:
+        """Tiles (Pb, m) that rows need by an estimate: 0 where it suffices, inf where plain is cheaper."""
+        u = self.model.u[points.start : points.stop]
+        excess = got.excess(u)
+        tiles = 1.15 * got.trials * excess * excess / TILE
         ratio = u / np.where(u > 0.0, tolerance(u), 1.0)
-        # Plain trials of the ends of a normal law to 2 sd < δ, and no fewer than ten blocks.
-        plain = np.maximum(_PLAIN_ENDS * ratio * ratio, 1e5)
-        hopeless = got.failed | ~(wanted * (TILE * _COST[self.method]) < plain) | (wanted > LADDER[-1])
-        self._leave(points, pending & hopeless)
-        pending &= ~hopeless
-        most = np.where(pending, wanted, 0.0).max(axis=1)
-        rung = np.minimum(np.searchsorted(LADDER, most), len(LADDER) - 1)
-        return np.where(pending.any(axis=1), np.asarray(LADDER)[rung], 0)
+        plain = np.maximum(_PLAIN_ENDS * ratio * ratio, _PLAIN_LEAST)
+        dear = ~(tiles * (TILE * _COST[self.method]) < plain) | (tiles > LADDER[-1])
+        tiles = np.where(dear | got.failed, np.inf, np.maximum(tiles, 1e-9))
+        return np.where(~got.failed & (excess < 1.0), 0.0, tiles)
 
     def _fixed(self, points: range, pending: Mask, count: int) -> None:
         """The same number of trials for all rows that are left."""
         for some in _together(points, np.where(pending.any(axis=1), -(-count // TILE), 0)):
             inside = slice(some.start - points.start, some.stop - points.start)
             got = self._batches(some, pending[inside], count)
-            self._leave(some, pending[inside] & got.failed)
+            self.block.plain[self.block.places(some)] |= pending[inside] & got.failed
             self.block.store(self.model, some, pending[inside] & ~got.failed, got, self.method)
-
-    def _leave(self, points: range, rows: Mask) -> None:
-        self.block.plain[self.block.places(points)] |= rows
-
-    def _probed(self, points: range, pending: Mask) -> Array:
-        """Largest difference to the linear model far out (Pb, m); refused probes leave the row to plain trials."""
-        y, linear = probe(self.model, points)
-        far = np.abs(y - linear).max(axis=1)
-        hidden = pending & ~np.isfinite(far)
-        self._leave(points, hidden)
-        pending &= ~hidden
-        return np.where(pending, far, 0.0)
 
     def _batches(self, points: range, rows: Mask, count: int) -> Estimate:
         parts = []
@@ -234,6 +260,13 @@ class _Stage:
 
     def _estimate(self, points: range, rows: Mask, tiles: Tiles) -> Estimate:
         return estimated(self.model, points, rows, self.sampler(points, rows, tiles), self.plan.level)
+
+
+def _rungs(tiles: Array) -> Counts:
+    """Whole tiles (Pb,) for the neediest row of each point, on the ladder; 0 where none needs any."""
+    most = tiles.max(axis=1, initial=0.0)
+    rung = np.minimum(np.searchsorted(LADDER, most), len(LADDER) - 1)
+    return np.where(most > 0.0, np.asarray(LADDER)[rung], 0)
 
 
 def _together(points: range, need: Counts) -> Iterator[range]:

@@ -9,6 +9,7 @@ makes a bounded latent wider or narrower as a whole (times 1 + √3 r V, V unifo
 
 from __future__ import annotations
 
+from functools import lru_cache
 from math import pi, sqrt
 
 import numpy as np
@@ -126,6 +127,42 @@ def log_coefficients(shape: Shape, top: float = 0.0) -> tuple[float, float, floa
             widths = (half * (1.0 + top), half * (1.0 - top))
     four, six, eight = (sum(w**n for w in widths) * c for n, c in zip((4, 6, 8), sine, strict=True))
     return four, six, eight
+
+
+@lru_cache(maxsize=64)
+def gauss_rule(shape: Shape, top: float = 0.0) -> tuple[Array, Array]:
+    """Nodes and weights (5,) of the Gauss rule of a standardised shape: exact to the ninth moment.
+
+    *Source* G. H. Golub, J. H. Welsch, Math. Comp. 23 (1969) 221, recurrence by the discretised Stieltjes
+    procedure; weights of the normal shape are those of Gauss-Hermite.
+    """
+    if shape is Shape.NORMAL:
+        nodes, weights = np.polynomial.hermite_e.hermegauss(5)
+        return nodes, weights / weights.sum()
+    half = half_width(shape, top)
+    if shape is Shape.ARCSINE:
+        return half * np.cos((2.0 * np.arange(5, 0, -1) - 1.0) * (pi / 10.0)), np.full(5, 0.2)
+    x, mass = np.polynomial.legendre.leggauss(32)
+    beta = {Shape.RECTANGULAR: 1.0, Shape.TRIANGULAR: 0.0}.get(shape, top)
+    edges = np.array([-1.0, -beta, 0.0, beta, 1.0])
+    middle, wide = 0.5 * (edges[1:] + edges[:-1])[:, None], 0.5 * np.diff(edges)[:, None]
+    points = (middle + wide * x).ravel()
+    slope = np.minimum((1.0 - np.abs(points)) / max(1.0 - beta, 1e-12), 1.0)
+    measure = (wide * mass).ravel() * slope
+    nodes, weights = _golub_welsch(points, measure / measure.sum())
+    return half * nodes, weights
+
+
+def _golub_welsch(points: Array, measure: Array) -> tuple[Array, Array]:
+    """Five-point Gauss rule of a symmetric discrete measure."""
+    before, now = np.zeros_like(points), np.ones_like(points)
+    off: list[float] = []
+    for _ in range(4):
+        after = points * now - (off[-1] ** 2 if off else 0.0) * before
+        off.append(float(np.sqrt((measure * after * after).sum() / (measure * now * now).sum())))
+        before, now = now, after
+    nodes, vectors = np.linalg.eigh(np.diag(off, 1) + np.diag(off, -1))
+    return nodes, vectors[0] ** 2
 
 
 def student(nu: Array, omega: Array) -> Array:

@@ -46,9 +46,9 @@ def fresh() -> Generator:
     return Generator(SFC64(0))
 
 
-def _identity(family: Family, point: int) -> tuple[str, str, float]:
+def _identity(family: Family, point: int, exact: bool) -> tuple[str, str, float]:
     """What tells the draws of one point from another's: point group, scale group, size of the doubt."""
-    if family.exact:
+    if exact:
         return family.point_group[point], "", np.inf
     return family.point_group[point], family.scale_group[point], float(family.dof[point])
 
@@ -91,11 +91,12 @@ class Tape:
         self, families: Sequence[Family], points: Sequence[int], seed: int, tile: int, chunk: int
     ) -> None:
         self._families = families
+        self._exact = [family.exact for family in families]
         self._done = 0
         self._streams: dict[tuple[int, tuple[str, str, float]], _Stream] = {}
         for index, family in enumerate(families):
             for point in points:
-                key = (index, _identity(family, point))
+                key = (index, _identity(family, point, self._exact[index]))
                 if key not in self._streams:
                     self._streams[key] = _Stream(
                         generator=_start(fresh(), family, point, seed, TILE, tile),
@@ -116,7 +117,7 @@ class Tape:
     def of(self, point: int) -> Draws:
         """What a point sees of the present chunk; valid until the next :meth:`advance`."""
         return {
-            index: self._streams[index, _identity(family, point)].buffer[None]
+            index: self._streams[index, _identity(family, point, self._exact[index])].buffer[None]
             for index, family in enumerate(self._families)
         }
 
@@ -130,7 +131,8 @@ def block(
     for index in which:
         family = families[index]
         first: dict[tuple[str, str, float], int] = {}
-        row = [first.setdefault(_identity(family, point), len(first)) for point in points]
+        exact = family.exact
+        row = [first.setdefault(_identity(family, point, exact), len(first)) for point in points]
         values = np.empty((len(first), size, len(family.members)))
         for slot, point in _first_rows(row, points):
             fill(_start(generator, family, point, seed, size, tile), family.shape, family.top, values[slot])

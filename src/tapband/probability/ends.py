@@ -10,14 +10,18 @@ from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy.special import ndtri
 
+from tapband.probability.controls import Regression
 from tapband.probability.linear_law import LinearLaw
 from tapband.probability.smoothing import Smoothing
 
 Array = NDArray[np.float64]
 
-FRACTIONS = (0.03, 0.2, 0.5, 0.8, 0.97)
-"""Tail probabilities, as fractions of 1 − p, at which the difference is averaged on either side."""
+FRACTIONS = (0.03, 0.15, 0.5, 0.8, 0.97)
+"""Tail probabilities, as fractions of 1 − p, at which F̂ is known on either side."""
+_SAMPLED = (0, 2, 4)
+"""Those at which the difference is averaged; it is small and smooth, so a cubic carries it to the others."""
 _SHORTEST = 48
 """Probabilities tried for the shortest interval."""
 _STEPS = 8
@@ -56,19 +60,20 @@ class Frame:
         return cdf.reshape(t.shape), pdf.reshape(t.shape) / self.u
 
 
-def solve(frame: Frame, smoothing: Smoothing, shift: Array) -> Ends:
-    """All ends; ``shift`` (Pb, m) is the mean difference to the linear model, where the search starts."""
+def solve(frame: Frame, smoothing: Smoothing, over: Regression, shift: Array) -> Ends:
+    """All ends, averaged ``over`` the trials; the search starts ``shift`` (Pb, m) from the linear model."""
     alpha = 1.0 - frame.level
-    start = np.full(frame.u.size, 2.0)
     sides: list[_Side] = []
-    nodes = np.stack([frame.law.quantile(1.0 - f * alpha, start).reshape(frame.u.shape) for f in FRACTIONS])
+    # Nodes need not be at these quantiles exactly.
+    nodes = np.stack([frame.law.quantile(1.0 - f * alpha, float(-ndtri(f * alpha)), 0.05) for f in FRACTIONS])
+    nodes = nodes.reshape(len(FRACTIONS), *frame.u.shape)
     for sign in (-1.0, 1.0):
         ordered = sign * nodes if sign < 0 else nodes[::-1]
         t = frame.origin + shift + frame.u * ordered
-        sides.append(_Side.sampled(frame, smoothing, t))
-    low = _end(frame, smoothing, sides[0], 0.5 * alpha)
-    high = _end(frame, smoothing, sides[1], 1.0 - 0.5 * alpha)
-    short = _shortest(sides, frame.level, low, high)
+        sides.append(_Side.sampled(frame, smoothing, over, t))
+    low = _end(frame, smoothing, over, sides[0], 0.5 * alpha)
+    high = _end(frame, smoothing, over, sides[1], 1.0 - 0.5 * alpha)
+    short = _shortest(sides, over, frame.level, low, high)
     return Ends(
         low=low.t, high=high.t, low_sd=low.sd, high_sd=high.sd, doubt=np.maximum(low.doubt, high.doubt),
         short_low=short[0], short_high=short[1], short_low_sd=short[2], short_high_sd=short[3],
@@ -85,12 +90,17 @@ class _Side:
     pdf: Array
 
     @classmethod
-    def sampled(cls, frame: Frame, smoothing: Smoothing, t: Array) -> _Side:
+    def sampled(cls, frame: Frame, smoothing: Smoothing, over: Regression, t: Array) -> _Side:
         cdf, pdf = np.empty_like(t), np.empty_like(t)
+        for k in _SAMPLED:
+            d, e = smoothing.at(t[k])
+            cdf[k], pdf[k] = over.mean(d), over.mean(e)
+        for k in range(1, len(t), 2):
+            cdf[k], pdf[k] = _between(t[k - 1 : k + 2], cdf[k - 1 : k + 2 : 2], pdf[k - 1 : k + 2 : 2])
         for k, node in enumerate(t):
-            d, e = smoothing.at(node)
             linear, density = frame.linear(node)
-            cdf[k], pdf[k] = linear + d.mean(axis=-1), density + e.mean(axis=-1)
+            cdf[k] += linear
+            pdf[k] += density
         return cls(t=t, cdf=cdf, pdf=np.maximum(pdf, 0.0))
 
     @property
@@ -118,6 +128,15 @@ class _Side:
         return t0 + v * width, np.maximum(slope, 1e-12) / width
 
 
+def _between(t: Array, value: Array, slope: Array) -> tuple[Array, Array]:
+    """Value and slope at t[1] of the cubic with given values and slopes (2, ...) at t[0] and t[2]."""
+    width = t[2] - t[0]
+    v = (t[1] - t[0]) / width
+    rise, g0, g1 = value[1] - value[0], slope[0] * width, slope[1] * width
+    quad, cube = 3.0 * rise - 2.0 * g0 - g1, g0 + g1 - 2.0 * rise
+    return value[0] + v * (g0 + v * (quad + v * cube)), (g0 + v * (2.0 * quad + v * (3.0 * cube))) / width
+
+
 @dataclass(frozen=True, slots=True, kw_only=True)
 class _End:
     """One end (Pb, m) of the symmetric interval, with what each trial (Pb, m, N) had to say there."""
@@ -131,45 +150,28 @@ class _End:
     pdf_influence: Array
 
 
-def _end(frame: Frame, smoothing: Smoothing, side: _Side, p: float) -> _End:
+def _end(frame: Frame, smoothing: Smoothing, over: Regression, side: _Side, p: float) -> _End:
     """Newton on F̂ itself from the interpolated start; a row stops by itself."""
     t = side.inverse(np.full((1, *frame.u.shape), p))[0][0]
-    moving = np.ones(t.shape, dtype=bool)
-    for step in range(_STEPS):
+    moving = np.ones(t.shape, dtype=np.bool_)
+    for _ in range(_STEPS):
         d, e = smoothing.at(t)
         linear, density = frame.linear(t)
-        pdf = density + e.mean(axis=-1)
-        miss = linear + d.mean(axis=-1) - p
+        pdf = density + over.mean(e)
+        miss = linear + over.mean(d) - p
         floor = 1e-3 * p * (1.0 - p) / frame.u
         move = np.clip(-miss / np.maximum(pdf, floor), -frame.u, frame.u)
-        if step == _STEPS - 1:
-            break
-        moving = moving & (np.abs(move) > 1e-7 * frame.u)
+        # Newton squares its error: after a step of 3e-4 u no more than 1e-7 u is left.
+        t, moving = np.where(moving, t + move, t), moving & (np.abs(move) > 3e-4 * frame.u)
         if not moving.any():
             break
-        t = np.where(moving, t + move, t)
-    settled = (np.abs(move) <= 1e-4 * frame.u) & (pdf > floor)
-    sd, doubt = spread(d)
+    settled = ~moving & (pdf > floor)
+    sd, doubt = over.spread(d)
     pdf = np.maximum(pdf, floor)
     return _End(t=t, density=pdf, sd=sd / pdf, doubt=doubt, settled=settled, cdf_influence=d, pdf_influence=e)
 
 
-def spread(values: Array) -> tuple[Array, Array]:
-    """Standard deviation of the mean over the last axis, and its own relative standard deviation.
-
-    *Source* var(s²) = (m4 − s⁴)/n to leading order.
-    """
-    n = values.shape[-1]
-    away = values - values.mean(axis=-1)[..., None]
-    square = away * away
-    second = square.sum(axis=-1) / (n - 1)
-    fourth = (square * square).sum(axis=-1) / n
-    positive = np.where(second > 0, second, 1.0)
-    kurtosis = np.where(second > 0, fourth / (positive * positive), 1.0)
-    return np.sqrt(second / n), 0.5 * np.sqrt(np.maximum(kurtosis - 1.0, 0.0) / n)
-
-
-def _shortest(sides: list[_Side], level: float, low: _End, high: _End) -> tuple[Array, Array, Array, Array]:
+def _shortest(sides: list[_Side], over: Regression, level: float, low: _End, high: _End) -> tuple[Array, Array, Array, Array]:
     """Shortest interval and the numerical standard deviations of its ends.
 
     Length(p) = Q(p + level) − Q(p) is least where the densities at both ends are equal. Its ends err with F̂
@@ -196,5 +198,5 @@ def _shortest(sides: list[_Side], level: float, low: _End, high: _End) -> tuple[
         tilt.append(-change / (density * density)[..., None])
     curvature = np.where(bend > 0, bend, np.nan) / step**2
     place = -(tilt[1] - tilt[0]) / curvature[..., None]
-    sds = [spread(m + place / d[..., None])[0] for m, (*_, d) in zip(moved, ends, strict=True)]
+    sds = [over.spread(m + place / d[..., None])[0] for m, (*_, d) in zip(moved, ends, strict=True)]
     return short_low, short_high, sds[0], sds[1]

@@ -8,8 +8,9 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from tapband.probability.controls import Regression
 from tapband.probability.coverage import tolerance
-from tapband.probability.ends import FRACTIONS, Frame, solve, spread
+from tapband.probability.ends import FRACTIONS, Frame, solve
 from tapband.probability.model import Model
 from tapband.probability.outcome import NAMES, Numbers
 from tapband.probability.trials import Trials
@@ -56,14 +57,15 @@ def estimated(model: Model, points: range, rows: Mask, trials: Trials, level: fl
         u=np.where(rows, model.u[where], 1.0),
         level=level,
     )
-    shift, mean_sd, mean_doubt = _average(trials.shift)
-    square = trials.square.mean(axis=-1)
+    over = Regression(trials.controls)
+    shift, (mean_sd, mean_doubt) = over.mean(trials.shift), over.spread(trials.shift)
+    square = over.mean(trials.square)
     variance = model.variance(points, every) + square - shift * shift
     u = np.sqrt(np.where(variance > 0.0, variance, np.nan))
     influence = trials.square - (2.0 * shift)[..., None] * trials.shift
-    square_sd, u_doubt = spread(influence)
+    square_sd, u_doubt = over.spread(influence)
     with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
-        ends = solve(frame, trials.smoothing, shift)
+        ends = solve(frame, trials.smoothing, over, shift)
     means, spreads = _exist(model, points, rows)
     numbers = {
         "mean": np.where(means, frame.origin + shift, np.nan),
@@ -80,10 +82,6 @@ def estimated(model: Model, points: range, rows: Mask, trials: Trials, level: fl
         failed=trials.refused | (rows & (~ends.settled | lost)),
         trials=trials.shift.shape[-1],
     )
-
-
-def _average(values: Array) -> tuple[Array, Array, Array]:
-    return values.mean(axis=-1), *spread(values)
 
 
 def _exist(model: Model, points: range, rows: Mask) -> tuple[Mask, Mask]:

@@ -1,12 +1,13 @@
-"""The exact distribution of linear combinations of latents, for many at once, by their characteristic functions.
+"""The exact distribution of linear combinations of latents, many at once, by characteristic functions.
 
 A row is one output at one point: L = Σ_f Σ_k S_fk ξ_fk, in units of its standard uncertainty (t families
 counted at unit variance). All shapes are symmetric, so the characteristic function φ is real and
 
     F(x) = ½ + (1/π) ∫₀^∞ φ(ω) sin(ωx)/ω dω
 
-by Gauss-Legendre panels up to where φ has died. Rows whose φ dies slowly (one or two rectangles, little
-else) are damped by a kernel of higher order, which moves a smooth F by less than 1e-6.
+up to where φ has died: by the midpoint rule, whose only error is the tail beyond its period less |x|, or, for
+heavy tails, by Gauss-Legendre panels. Rows whose φ dies slowly (one or two rectangles, little else) are damped
+by a kernel of higher order, which moves a smooth F by less than 1e-6.
 
 *Source* J. Gil-Pelaez, Biometrika 38 (1951) 481; R. B. Davies, Biometrika 60 (1973) 415.
 """
@@ -41,6 +42,10 @@ _LAST = (6.5, 9.0, 13.0, 20.0, 32.0, 64.0, 128.0, 256.0, 600.0)
 _DEAD = 1e-8
 _REACH = (8.0, 12.0, 18.0, 27.0, 64.0, 256.0, 1024.0)
 """Largest |x| resolved; beyond it F stands still."""
+_PERIODS = (16.0, 20.0, 28.0, 40.0, 64.0, 100.0)
+"""Periods of the midpoint rule; rows that need a longer one take panels (period inf)."""
+_BEYOND = 1e-9
+"""Probability that may lie beyond the period."""
 _DAMPING = 0.0125
 _SMALL = 1.5
 """Half-width times frequency up to which four terms of log φ do (the next is below 1e-4 of a dead φ)."""
@@ -85,8 +90,8 @@ class LinearLaw:
             pdf[part.rows] = (part.density * np.cos(angle)).sum(axis=-1)
         return cdf, pdf
 
-    def quantile(self, probability: float, start: Array) -> Array:
-        """x (R,) at which F is ``probability`` > ½: Newton from ``start``, halving a bracket where it strays."""
+    def quantile(self, probability: float, start: float = 2.0, within: float = 1e-10) -> Array:
+        """x (R,) at which F is ``probability`` > ½: Newton, halving a bracket where it strays."""
         low, high = np.zeros(self.count), np.full(self.count, np.nan)
         for part in self.parts:
             high[part.rows] = part.reach
@@ -98,9 +103,9 @@ class LinearLaw:
             high = np.where(moving & above, x, high)
             low = np.where(moving & ~above, x, low)
             step = (cdf - probability) / np.maximum(pdf, 1e-300)
-            new = np.where((x - step > low) & (x - step < high), x - step, 0.5 * (low + high))
+            new = np.where((x - step >= low) & (x - step <= high), x - step, 0.5 * (low + high))
             # A row stops by itself, so that the rows beside it cannot move its last digit.
-            x, moving = np.where(moving, new, x), moving & (np.abs(new - x) > 1e-10)
+            x, moving = np.where(moving, new, x), moving & (np.abs(new - x) > within)
             if not moving.any():
                 break
         return x
@@ -118,29 +123,36 @@ class LinearLaw:
 def linear_law(terms: Sequence[Term], live: NDArray[np.bool_], tail: float) -> LinearLaw:
     """The law of standardised rows; ``live`` (R,) rows have one; quantiles down to ``tail`` are resolved."""
     left = np.flatnonzero(live)
-    reach = _reaches(terms, len(live), tail)
+    reach = _ladder(_REACH, _quantile_bound(terms, len(live), tail), _REACH[-1])
+    period = _ladder(_PERIODS, reach + _quantile_bound(terms, len(live), _BEYOND), np.inf)
     parts: list[_Part] = []
     for last in _LAST:
         dead = _envelope(terms, left, last) < np.log(_DEAD)
         if last == _LAST[-1]:
             dead[:] = True
         ready, left = left[dead], left[~dead]
-        for far in np.unique(reach[ready]):
-            parts.append(_part(terms, ready[reach[ready] == far], last, float(far)))
+        for far, repeat in sorted(set(zip(reach[ready].tolist(), period[ready].tolist(), strict=True))):
+            rows = ready[(reach[ready] == far) & (period[ready] == repeat)]
+            parts.append(_part(terms, rows, last, far, repeat))
         if not left.size:
             break
     return LinearLaw(count=len(live), parts=tuple(parts))
 
 
-def _reaches(terms: Sequence[Term], rows: int, tail: float) -> Array:
-    """Largest |x| (R,) that a quantile down to ``tail`` can need: heavy tails reach far."""
+def _quantile_bound(terms: Sequence[Term], rows: int, tail: float) -> Array:
+    """Upper bound (R,), roughly, of the quantile to a tail probability: t families reach far."""
     need = np.full(rows, 1.2 * float(-ndtri(tail)))
     for term in terms:
         if term.family.shape is Shape.NORMAL and not np.all(np.isinf(term.dof)):
             finite = np.isfinite(term.dof)
             t = stdtrit(np.where(finite, term.dof, 1.0), 1.0 - tail)
             need += np.where(finite, _length(term.size) * t, 0.0)
-    return np.asarray(_REACH)[np.minimum(np.searchsorted(_REACH, need), len(_REACH) - 1)]
+    return need
+
+
+def _ladder(rungs: Sequence[float], need: Array, otherwise: float) -> Array:
+    """The first rung not below each need, ``otherwise`` past the last."""
+    return np.asarray([*rungs, otherwise])[np.searchsorted(rungs, need)]
 
 
 def _length(size: Array) -> Array:
@@ -191,27 +203,30 @@ def _rectangles(family: Family) -> tuple[float, ...]:
 
 
 @lru_cache(maxsize=64)
-def _grid(last: float, reach: float) -> tuple[Array, Array]:
-    """Frequencies and weights (K,): 16 nodes for less than four waves of sin(ωx).
+def _grid(last: float, reach: float, period: float) -> tuple[Array, Array]:
+    """Frequencies and weights (K,) of the midpoint rule, or of panels where the period is infinite.
 
-    In the first half panel ω goes with the square of the node, which smooths the |ω|^ν of a t family.
+    Panels have 16 nodes for less than four waves of sin(ωx). In the first half panel ω goes with the square of
+    the node, which smooths the |ω|^ν of a t family.
     """
-    panels = ceil(last * (reach + 6.0) / (2.0 * pi) / 3.6) + 1
-    edges = np.concatenate([[0.5], np.arange(1.0, panels + 0.25)]) * (last / panels)
-    half = 0.5 * np.diff(edges)[:, None]
-    omega = edges[:-1, None] + half * (1.0 + _NODES)
-    weight = half * _WEIGHTS
-    x = 0.5 * (1.0 + _NODES)
-    first = edges[0] * x * x
-    omega = np.concatenate([first, omega.ravel()])
-    weight = np.concatenate([edges[0] * x * _WEIGHTS, weight.ravel()])
+    if np.isfinite(period):
+        step = 2.0 * pi / period
+        omega = step * (np.arange(ceil(last / step)) + 0.5)
+        weight = np.full(omega.size, step)
+    else:
+        panels = ceil(last * (reach + 6.0) / (2.0 * pi) / 3.6) + 1
+        edges = np.concatenate([[0.5], np.arange(1.0, panels + 0.25)]) * (last / panels)
+        half = 0.5 * np.diff(edges)[:, None]
+        x = 0.5 * (1.0 + _NODES)
+        omega = np.concatenate([edges[0] * x * x, (edges[:-1, None] + half * (1.0 + _NODES)).ravel()])
+        weight = np.concatenate([edges[0] * x * _WEIGHTS, (half * _WEIGHTS).ravel()])
     omega.setflags(write=False)
     weight.setflags(write=False)
     return omega, weight
 
 
-def _part(terms: Sequence[Term], rows: Rows, last: float, reach: float) -> _Part:
-    omega, weight = _grid(last, reach)
+def _part(terms: Sequence[Term], rows: Rows, last: float, reach: float, period: float) -> _Part:
+    omega, weight = _grid(last, reach, period)
     phi = np.ones((rows.size, omega.size))
     squared = np.zeros(rows.size)
     for term in terms:

@@ -22,6 +22,10 @@ from tapband.probability.linear_law import LinearLaw
 Array = NDArray[np.float64]
 
 
+_ROOT = sqrt(2.0 * pi)
+_FLAT = 1e-300
+
+
 class Smoothing(Protocol):
     """Difference of the conditional distributions of output and linear model."""
 
@@ -106,6 +110,33 @@ class TableBase:
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
+class Normal:
+    """Given the draws, the output is y + s·z exactly, z standard normal, and the linear model l + s0·z."""
+
+    y: Array
+    s: Array
+    l: Array  # noqa: E741  (the linear model's values beside y)
+    s0: Array
+
+    def at(self, t: Array) -> tuple[Array, Array]:
+        """See :class:`Smoothing`.
+
+        Φ(x + h) − Φ(x − h) = 2hφ(x)[1 + h²(x² − 1)/6 + h⁴(x⁴ − 6x² + 3)/120 + …], six times quicker than
+        two Φ and right to 1e-8 while 2h is below 0.4.
+        """
+        upper, lower = (t[..., None] - self.y) / self.s, (t[..., None] - self.l) / self.s0
+        upper_density, lower_density = np.exp(-0.5 * upper * upper), np.exp(-0.5 * lower * lower)
+        middle, half = 0.5 * (upper + lower), 0.5 * (upper - lower)
+        x2, h2 = middle * middle, half * half
+        series = 1.0 + h2 * ((x2 - 1.0) / 6.0 + h2 * ((x2 * (x2 - 6.0) + 3.0) / 120.0))
+        difference = (2.0 / _ROOT) * half * np.exp(-0.5 * x2) * series
+        wide = h2 > 0.04
+        if wide.any():
+            difference[wide] = ndtr(upper[wide]) - ndtr(lower[wide])
+        return difference, (upper_density / self.s - lower_density / self.s0) * (1.0 / _ROOT)
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
 class Integrated:
     """Given the draws, the output is y + s·base exactly, and the linear model l + s0·base."""
 
@@ -124,20 +155,24 @@ class Integrated:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Line:
-    """Along one line of latents, coordinate η of law ``base``, the output is nearly a + bη + cη².
+    """Along one line of latents, coordinate η of law ``base``, the output is nearly a polynomial of η.
 
-    What the parabola leaves is repaired without bias: by the trial itself, which stands somewhere on the
-    line, as the difference of two indicators, almost never other than 0.
+    P(y ≤ t) on the line is taken as that of the set between two roots: one refined, one of the parabola. What
+    that leaves is repaired without bias by the trial itself, which stands somewhere on the line: as the
+    difference of two indicators, almost never other than 0.
     """
 
     base: Base
-    a: Array
-    b: Array
-    c: Array
+    powers: Array
+    """(5, Pb, m, N): coefficients of 1, η, …, η⁴ through the five nodes."""
+    parabola: Array
+    """(3, Pb, m, N): those of the parabola nearest to it."""
+    inside: float
+    """|η| up to which the quartic is trusted."""
+    eta: Array
+    """η of the trial (Pb, 1, N)."""
     y: Array
     """The output at the trial."""
-    fitted: Array
-    """The parabola at the trial."""
     l: Array  # noqa: E741
     """The linear model on the line at η = 0."""
     slope: Array
@@ -146,25 +181,39 @@ class Line:
     def at(self, t: Array) -> tuple[Array, Array]:
         """See :class:`Smoothing`."""
         level = t[..., None]
-        upper, upper_density = self._parabola(level)
-        lower, lower_density = self.base.at((level - self.l) / self.slope)
-        repair = (self.y <= level).astype(np.float64) - (self.fitted <= level)
-        return upper - lower + repair, upper_density - lower_density / self.slope
-
-    def _parabola(self, level: Array) -> tuple[Array, Array]:
-        """P(a + bη + cη² ≤ t) and its derivative by t: both roots, so exact for the parabola."""
-        rise = level - self.a
-        discriminant = self.b * self.b + 4.0 * self.c * rise
-        real = discriminant > 0.0
-        root = np.sqrt(np.where(real, discriminant, 1.0))
-        sum_ = self.b + np.copysign(root, self.b)
-        near = 2.0 * rise / sum_
-        flat = np.abs(self.c) < 1e-14 * np.abs(self.b)
-        far = np.where(flat, -np.copysign(np.inf, self.c * sum_), -sum_ / np.where(flat, 1.0, 2.0 * self.c))
+        near, far, opens_up, real = self._roots(level)
         near_cdf, near_density = self.base.at(near)
         far_cdf, far_density = self.base.at(far)
-        between = np.abs(near_cdf - far_cdf)
-        opens_up = self.c >= 0.0
-        cdf = np.where(opens_up, between, 1.0 - between)
-        density = (near_density + far_density) / root
-        return np.where(real, cdf, np.where(opens_up, 0.0, 1.0)), np.where(real, density, 0.0)
+        between = (self.eta > np.minimum(near, far)) & (self.eta <= np.maximum(near, far))
+        mass = np.abs(near_cdf - far_cdf)
+        upper = np.where(real, np.where(opens_up, mass, 1.0 - mass), ~opens_up)
+        inside = np.where(real, between == opens_up, ~opens_up)
+        repair = (self.y <= level).astype(np.float64) - inside
+        steep = np.abs(self._slope(near)), np.abs(self._slope(far))
+        density = near_density / np.maximum(steep[0], _FLAT) + far_density / np.maximum(steep[1], _FLAT)
+        lower, lower_density = self.base.at((level - self.l) / self.slope)
+        return upper - lower + repair, np.where(real, density, 0.0) - lower_density / self.slope
+
+    def _roots(self, level: Array) -> tuple[Array, Array, NDArray[np.bool_], NDArray[np.bool_]]:
+        """Roots of the parabola, the near one refined; whether y is below t between them; whether there are any."""
+        a, b, c = self.parabola
+        rise = level - a
+        discriminant = b * b + 4.0 * c * rise
+        real = discriminant > 0.0
+        sum_ = b + np.copysign(np.sqrt(np.where(real, discriminant, 1.0)), b)
+        near = 2.0 * rise / sum_
+        flat = np.abs(c) < 1e-14 * np.abs(b)
+        far = np.where(flat, -np.copysign(np.inf, c * sum_), -sum_ / np.where(flat, 1.0, 2.0 * c))
+        root = near
+        p = self.powers
+        for _ in range(3):
+            value = p[0] + root * (p[1] + root * (p[2] + root * (p[3] + root * p[4])))
+            slope = p[1] + root * (2.0 * p[2] + root * (3.0 * p[3] + root * (4.0 * p[4])))
+            root = root - (value - level) / np.where(slope == 0.0, np.inf, slope)
+        close = (np.abs(root) < self.inside) & (np.abs(root - near) < 0.5) & (np.abs(near) < self.inside)
+        return np.where(close, root, near), far, c >= 0.0, real
+
+    def _slope(self, eta: Array) -> Array:
+        """Slope of the parabola; at its far root possibly infinite."""
+        slope: Array = self.parabola[1] + 2.0 * self.parabola[2] * np.clip(eta, -1e3, 1e3)
+        return slope

@@ -96,11 +96,6 @@ class Direction:
         """What points must share to be done together."""
         return tuple(f for f, _ in self.parts), self.shape, self.top
 
-    @property
-    def reach(self) -> float:
-        """Outer nodes ±reach: those of the three-point Gauss rules of normal and rectangular laws."""
-        return sqrt(3.0) if self.shape is Shape.NORMAL else half_width(self.shape, self.top) * sqrt(0.6)
-
 
 def direction(model: Model, point: int, rows: Mask) -> Direction | None:
     """The line that smooths the worst of the outputs ``rows`` (m,) most; None where none is worth it."""

@@ -8,16 +8,18 @@ from __future__ import annotations
 
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
+from itertools import combinations
 
 import numpy as np
 from numpy.typing import NDArray
 
 from tapband.nouns.problem import Draws
 from tapband.nouns.source import Shape
-from tapband.probability.distributions import half_width, log_coefficients, variance
+from tapband.probability.controls import COORDINATES, PAIRS, Coordinates, coordinates, polynomials
+from tapband.probability.distributions import gauss_rule, half_width, log_coefficients, variance
 from tapband.probability.draws import block, scales
 from tapband.probability.model import Model
-from tapband.probability.smoothing import Base, Integrated, Line, NormalBase, ShapeBase, Smoothing
+from tapband.probability.smoothing import Base, Integrated, Line, Normal, NormalBase, ShapeBase, Smoothing
 from tapband.probability.strategy import Direction
 
 Array = NDArray[np.float64]
@@ -33,6 +35,8 @@ class Trials:
     """y − l"""
     square: Array
     """Squared distance from the estimate, less that of the linear model."""
+    controls: Array
+    """(Pb, K, N) variates whose mean is known to be 0."""
     refused: Mask
     """(Pb, m) whether some trial was refused."""
 
@@ -57,32 +61,37 @@ class Tiles:
 
 
 def integrated(
-    model: Model, points: range, rows: Mask, out: tuple[int, ...], base: Base, tiles: Tiles
+    model: Model, points: range, rows: Mask, out: tuple[int, ...], base: Base | None, tiles: Tiles
 ) -> Trials:
-    """Trials in which the families ``out`` are integrated out; other rows than ``rows`` (Pb, m) hold nothing."""
-    drawn = isinstance(base, NormalBase)
-    parts = [_integrated_tile(model, points, out, drawn, tiles, tile) for tile in tiles.numbers()]
-    y, l, s2, s02, gain = (tiles.joined(column) for column in zip(*parts, strict=True))
+    """Trials in which the families ``out`` are integrated out, in the rows ``rows`` (Pb, m) only.
+
+    ``base`` is their law, None where all are normal; t families then have their scales drawn.
+    """
+    drawn = base is None
+    axes = coordinates(model, points, [f for f in range(len(model.families)) if f not in out])
+    parts = [_integrated_tile(model, points, out, axes, drawn, tiles, tile) for tile in tiles.numbers()]
+    y, l, s2, s02, gain, x = (tiles.joined(column) for column in zip(*parts, strict=True))
     refused = rows & ~np.isfinite(y + s2).all(axis=-1)
     good = (rows & ~refused)[..., None]
     y0 = model.estimate[points.start : points.stop, :, None]
     away, away0 = np.where(good, y - y0, 0.0), np.where(good, l - y0, 0.0)
     y0 = np.where(good, y0, 0.0)
-    smoothing = Integrated(
-        base=base,
-        y=y0 + away,
-        s=np.sqrt(np.where(good, s2, 1.0)),
-        l=y0 + away0,
-        s0=np.sqrt(np.where(good, s02, 1.0)),
-    )
+    laws = {
+        "y": y0 + away,
+        "s": np.sqrt(np.where(good, s2, 1.0)),
+        "l": y0 + away0,
+        "s0": np.sqrt(np.where(good, s02, 1.0)),
+    }
+    smoothing = Normal(**laws) if base is None else Integrated(base=base, **laws)
     square = (away - away0) * (away + away0) + np.where(good, gain, 0.0)
-    return Trials(smoothing=smoothing, shift=away - away0, square=square, refused=refused)
+    controls = polynomials(x, axes.fourth, np.zeros((len(points), PAIRS)))
+    return Trials(smoothing=smoothing, shift=away - away0, square=square, controls=controls, refused=refused)
 
 
 def _integrated_tile(
-    model: Model, points: range, out: tuple[int, ...], drawn: bool, tiles: Tiles, tile: int
+    model: Model, points: range, out: tuple[int, ...], axes: Coordinates, drawn: bool, tiles: Tiles, tile: int
 ) -> tuple[Array, ...]:
-    """y, l, the variances s² and s0² that ``out`` adds to each, and the gain in mean variance; (Pb, T, m)."""
+    """y, l, the variances s² and s0² that ``out`` adds to each, the gain in mean variance (Pb, T, m); coordinates."""
     where = slice(points.start, points.stop)
     inside = [f for f in range(len(model.families)) if f not in out]
     draws = block(model.families, inside, points, tiles.seed, tile, tiles.size)
@@ -97,7 +106,15 @@ def _integrated_tile(
         s02 += nominal * factor
         # Where the scale is in doubt its mean is known: a moment needs no draw of it.
         gain += (added[f] - nominal) * variance(model.families[f])[where, None, None]
-    return np.broadcast_to(y, shape), linear_values(model, points, draws, tiles.size), s2, s02, gain
+    roots = _roots(model, tuple(axes.units), points, tiles, tile)
+    x = axes.values(draws, roots, tiles.size)
+    return np.broadcast_to(y, shape), linear_values(model, points, draws, tiles.size), s2, s02, gain, x
+
+
+def _roots(model: Model, which: Sequence[int], points: range, tiles: Tiles, tile: int) -> dict[int, Array]:
+    """Common factors (Pb or 1, T) of the families in doubt."""
+    squares = scales(model.families, which, points, tiles.seed, tile, tiles.size)
+    return {f: np.sqrt(square) for f, square in squares.items()}
 
 
 def linear_values(model: Model, points: range, draws: Draws, size: int) -> Array:
@@ -111,57 +128,108 @@ def linear_values(model: Model, points: range, draws: Draws, size: int) -> Array
 
 
 def line(model: Model, points: range, rows: Mask, along: Sequence[Direction], tiles: Tiles) -> Trials:
-    """Trials in which one direction a point is integrated out, numerically; directions of one key."""
-    parts = [_line_tile(model, points, along, tiles, tile) for tile in tiles.numbers()]
-    y, l, l_line, slope, below, middle, above, eta = (tiles.joined(c) for c in zip(*parts, strict=True))
-    refused = rows & ~np.isfinite(y + below + middle + above).all(axis=-1)
+    """Trials in which one direction a point is integrated out, numerically; directions of one key.
+
+    Moments are taken along the line by its Gauss rule, so that they are means of conditional means.
+    """
+    shape, top = along[0].shape, along[0].top
+    nodes, weights = gauss_rule(shape, top)
+    axes = coordinates(model, points, range(len(model.families)))
+    parts = [_line_tile(model, points, along, axes, nodes, tiles, tile) for tile in tiles.numbers()]
+    y, l_line, slope, eta, x, *at = (tiles.joined(column) for column in zip(*parts, strict=True))
+    values = np.stack(at)
+    refused = rows & ~(np.isfinite(values).all(axis=0) & np.isfinite(y)).all(axis=-1)
     good = (rows & ~refused)[..., None]
     y0 = np.where(good, model.estimate[points.start : points.stop, :, None], 0.0)
-    y, l, l_line, below, middle, above = (
-        np.where(good, values, 0.0) for values in (y, l, l_line, below, middle, above)
+    y, l_line, values = (np.where(good, part, 0.0) for part in (y, l_line, values))
+    slope = np.where(good, np.abs(slope), 1.0)
+    quartic = np.linalg.inv(np.vander(nodes, increasing=True))
+    parabola = np.linalg.solve(*_normal_equations(nodes, weights))
+    away, away0 = values - y0, l_line - y0
+    gain = away - away0
+    linear = away0 + nodes[:, None, None, None] * np.where(good, slope, 0.0)
+    weight = weights[:, None, None, None]
+    return Trials(
+        smoothing=Line(
+            base=NormalBase() if shape is Shape.NORMAL else ShapeBase(shape, top),
+            powers=_combined(quartic, values),
+            parabola=_combined(parabola, values),
+            inside=1.1 * float(nodes[-1]),
+            eta=eta[:, :1],
+            y=y,
+            l=l_line,
+            slope=slope,
+        ),
+        shift=(weight * gain).sum(axis=0),
+        square=(weight * (away - linear) * (away + linear)).sum(axis=0),
+        controls=_beside_line(x, eta[:, :1], axes, along),
+        refused=refused,
     )
-    reach = along[0].reach
-    b = (above - below) / (2.0 * reach)
-    c = (above + below - 2.0 * middle) / (2.0 * reach * reach)
-    smoothing = Line(
-        base=NormalBase() if along[0].shape is Shape.NORMAL else ShapeBase(along[0].shape, along[0].top),
-        a=middle,
-        b=b,
-        c=c,
-        y=y,
-        fitted=middle + eta * (b + eta * c),
-        l=l_line,
-        slope=np.where(good, np.abs(slope), 1.0),
-    )
-    away, away0 = y - y0, l - y0
-    return Trials(smoothing=smoothing, shift=y - l, square=(away - away0) * (away + away0), refused=refused)
+
+
+def _combined(matrix: Array, values: Array) -> Array:
+    """matrix (k, 5) times values (5, ...), term by term: a matrix product would round by its shape."""
+    result = np.empty((len(matrix), *values.shape[1:]))
+    for row, out in zip(matrix, result, strict=True):
+        np.multiply(row[0], values[0], out=out)
+        for factor, value in zip(row[1:], values[1:], strict=True):
+            out += factor * value
+    return result
+
+
+def _normal_equations(nodes: Array, weights: Array) -> tuple[Array, Array]:
+    """Of the parabola nearest in the mean over the law of the line: (3, 3) and (3, 5)."""
+    basis = np.vander(nodes, 3, increasing=True).T
+    return (basis * weights) @ basis.T, basis * weights
 
 
 def _line_tile(
-    model: Model, points: range, along: Sequence[Direction], tiles: Tiles, tile: int
+    model: Model, points: range, along: Sequence[Direction], axes: Coordinates, nodes: Array, tiles: Tiles, tile: int
 ) -> tuple[Array, ...]:
-    """y, l, l and ∂l/∂η at η = 0 of the line, y at its three nodes, η of the trial; (Pb, T, m)."""
+    """y at the trial; l at η = 0 of its line, ∂l/∂η; η; coordinates; y at the nodes. (Pb, T, ·)."""
     where = slice(points.start, points.stop)
     shape = (len(points), tiles.size, model.estimate.shape[1])
     every = range(len(model.families))
     draws = dict(block(model.families, every, points, tiles.seed, tile, tiles.size))
     used = [f for f, _ in along[0].parts]
-    factors = scales(model.families, used, points, tiles.seed, tile, tiles.size)
+    roots = _roots(model, every, points, tiles, tile)
     eta, slope = np.zeros((*shape[:2], 1)), np.zeros(shape)
     step: dict[int, Array] = {}
     for place, f in enumerate(used):
         unit = np.stack([one.parts[place][1] for one in along])[:, :, None]
-        root = np.sqrt(factors[f])[..., None] if f in factors else np.ones((1, 1, 1))
+        root = roots[f][..., None] if f in roots else np.ones((1, 1, 1))
         eta += (draws[f] @ unit) / root
         slope += (model.sensitivity[f][where] @ unit)[:, None, :, 0] * root
         step[f] = root * np.swapaxes(unit, -1, -2)
     values = [model.problem.evaluate(where, draws)]
-    for node in (-along[0].reach, 0.0, along[0].reach):
+    for node in nodes:
         moved = {f: draws[f] + (node - eta) * step[f] for f in used}
         values.append(model.problem.evaluate(where, {**draws, **moved}))
-    y, below, middle, above = (np.broadcast_to(v, shape) for v in values)
-    l = linear_values(model, points, draws, tiles.size)
-    return y, l, l - eta * slope, slope, below, middle, above, np.broadcast_to(eta, shape)
+    y, *at = (np.broadcast_to(v, shape) for v in values)
+    foot = linear_values(model, points, draws, tiles.size) - eta * slope
+    return y, foot, slope, np.broadcast_to(eta, shape), axes.values(draws, roots, tiles.size), *at
+
+
+def _beside_line(x: Array, eta: Array, axes: Coordinates, along: Sequence[Direction]) -> Array:
+    """Controls from coordinates (Pb, c, N) with their share of the line's own coordinate taken out.
+
+    Only the rest of a coordinate can tell what the line does not know; in normal latents it is independent of
+    η. A coordinate that lies along the line has no rest.
+    """
+    parts = [dict(one.parts) for one in along]
+    cosine = np.array(
+        [
+            [float(part[f] @ axes.units[f][p]) if f in part else 0.0 for f in families]
+            for p, (part, families) in enumerate(zip(parts, axes.chosen.tolist(), strict=True))
+        ]
+    )
+    rest = 1.0 - cosine * cosine
+    alone = rest > 1e-6
+    scale = np.sqrt(np.where(alone, rest, 1.0))
+    beside = np.where(alone[..., None], (x - cosine[..., None] * eta) / scale[..., None], 0.0)
+    slanted = np.where(alone, cosine / scale, 0.0)
+    correlation = np.stack([-slanted[:, a] * slanted[:, b] for a, b in combinations(range(COORDINATES), 2)], axis=1)
+    return polynomials(beside, axes.fourth, correlation)
 
 
 def probe(model: Model, points: range, distance: float = 3.0) -> tuple[Array, Array]:
