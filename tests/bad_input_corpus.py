@@ -7,7 +7,7 @@ import tomllib
 from pathlib import Path
 from typing import Any
 
-FOLDER = Path(__file__).parent.parent / "bad_inputs"
+FOLDER = Path(__file__).parent / "bad_inputs"
 GOOD = FOLDER / "good"
 
 
@@ -42,3 +42,12 @@ def build(case: dict[str, Any], folder: Path) -> Path:
 def read(path: Path) -> dict[str, Any]:
     """One case."""
     return tomllib.loads(path.read_text(encoding="utf-8"))
+
+
+def good(folder: Path, *changes: tuple[str, str, str], **files: str) -> Path:
+    """The good campaign in ``folder`` with changes (file, find, put) and files (name_csv=text) of a test."""
+    case = {
+        "change": [{"file": file, "find": find, "put": put} for file, find, put in changes],
+        "file": [{"name": name.replace("_csv", ".csv"), "text": text} for name, text in files.items()],
+    }
+    return build(case, folder)
