@@ -1,0 +1,78 @@
+"""All that sizing answers, one after the other."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from tapband.nouns.campaign import Campaign
+from tapband.questions.allowances import Allowance, allowances
+from tapband.questions.basis import Basis, basis_of
+from tapband.questions.catalogue import Choices, choices_of
+from tapband.questions.choice import Selection, selected
+from tapband.questions.confirm import Confirmed, confirm
+from tapband.questions.ranges import Ranges, ranges
+from tapband.questions.selection import Efficient, Search, frontier
+
+Array = NDArray[np.float64]
+Progress = Callable[[float, float, str], None]
+"""Called as (done, total, doing)."""
+
+
+@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
+class Sized:
+    """The answers; None where the campaign does not ask."""
+
+    basis: Basis
+    declared: Confirmed
+    """Intervals at each demand with the sources as declared."""
+    ranges: Ranges
+    allowances: tuple[Allowance, ...]
+    choices: Choices | None
+    selection: Selection | None
+    frontier: tuple[Efficient, ...]
+    frontier_complete: bool
+    notes: tuple[str, ...]
+
+    @property
+    def met(self) -> NDArray[np.bool_]:
+        """(D,) whether each demand is met with the sources as declared."""
+        return self.basis.demands.met(self.declared.headline)
+
+    @property
+    def can_be_met(self) -> bool:
+        """Whether the targets are met as declared, or by some choice of options."""
+        chosen = self.selection is not None and self.selection.choice is not None
+        return chosen or (self.selection is None and bool(np.all(self.met)))
+
+
+def sized(campaign: Campaign, trials: str | None = None, progress: Progress | None = None) -> Sized:
+    """Size what the campaign asks for. ``trials`` as in :func:`confirm`; default the campaign's."""
+    basis = basis_of(campaign)
+    seen = ranges(basis)
+    choices = choices_of(basis, seen) if campaign.plan.slots else None
+    selection = None if choices is None else selected(choices, trials)
+    efficient, complete = ((), True) if choices is None else frontier(Search(catalogue=choices.catalogue))
+    declared = confirm(basis.campaign, basis.demands, trials)
+    allowed = allowances(basis, declared, trials, _step(progress, "allowances"))
+    result = Sized(
+        basis=basis,
+        declared=declared,
+        ranges=seen,
+        allowances=allowed,
+        choices=choices,
+        selection=selection,
+        frontier=efficient,
+        frontier_complete=complete,
+        notes=basis.notes,
+    )
+    return result
+
+
+def _step(progress: Progress | None, doing: str) -> Callable[[int, int], None] | None:
+    if progress is None:
+        return None
+    return lambda done, total: progress(done, total, doing)
