@@ -47,6 +47,10 @@ def publish(
     if results.campaign is None:
         raise QuestionError("report: needs the campaign; got results read from a folder; reduce it again")
     also: dict[str, Callable[[Path], None]] = {REPORT: partial(_write_report, results, results.campaign)}
+    if figures is not None:
+        from tapband.report.figure_files import figure_jobs
+
+        also |= figure_jobs(results, figures)
     return write.write(results, folder, excel=excel, parquet=parquet, also=also)
 
 
