@@ -29,7 +29,7 @@ def source_of(folder: Path, name: str, *changes: tuple[str, str, str]) -> Source
 @pytest.mark.parametrize(
     ("text", "standard", "shape"),
     [
-        # methods: U with k is U/k; U at level p is U/Φ⁻¹((1+p)/2), 1.959964 at 95 % (tables of the normal law)
+        # U with k is U/k; U at level p is U/Φ⁻¹((1+p)/2), 1.959964 at 95 % (tables of the normal law)
         ('standard = "12 Pa"', 12.0, Shape.NORMAL),
         ('expanded = "30 Pa"\nk = 2', 15.0, Shape.NORMAL),
         ('expanded = "30 Pa"\nlevel = 0.95', 30.0 / 1.959963984540054, Shape.NORMAL),

@@ -51,6 +51,11 @@ def read_section(part: SectionPart, chord: float, folder: Folder) -> Section | N
         _check_shape(table, lines, x, y, findings)
     if len(findings) > before or not np.all(np.isfinite(x)):
         return None
+    span = float(x.max() - x.min())
+    if abs(span - 1.0) > 0.02:
+        findings.warn(
+            f"{table.file}: the contour spans {span:.3f} chords; see whether section.chord is right"
+        )
     return Section(
         x=frozen(x), y=frozen(y), chord=chord, contour_in_lengths=in_lengths(x_column),
         moment_centre=part.moment_centre, full_arm=part.moment_arm == "full",

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import warnings
-from collections.abc import Iterator, Sequence
+from collections.abc import Generator, Iterator, Sequence
 from functools import partial
 from importlib.util import find_spec
 from itertools import islice
@@ -28,6 +28,7 @@ def open_excel(path: Path, name: str, findings: Findings) -> Table | None:
     try:
         rows, others = _rows(path)
         head = next(rows, None)
+        rows.close()
     except Exception as error:  # openpyxl raises what zipfile, its XML parser or its own checks raise
         findings.add(name, "cannot be read as a workbook", _first_line(error), "save it again as .xlsx")
         return None
@@ -48,7 +49,7 @@ def _first_line(error: Exception) -> str:
     return shown((str(error).splitlines() or [type(error).__name__])[0])
 
 
-def _rows(path: Path) -> tuple[Iterator[Row], list[str]]:
+def _rows(path: Path) -> tuple[Generator[Row, None, None], list[str]]:
     """Rows of the first sheet that hold anything, comments left out, and the names of the other sheets."""
     import openpyxl
 
@@ -58,7 +59,7 @@ def _rows(path: Path) -> tuple[Iterator[Row], list[str]]:
     sheet = book.worksheets[0]
     others = [other.title for other in book.worksheets[1:]]
 
-    def rows() -> Iterator[Row]:
+    def rows() -> Generator[Row, None, None]:
         try:
             for number, row in enumerate(sheet.iter_rows(values_only=True), start=1):
                 first = row[0] if row else None

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from typing import Annotated, Any
 
 from pydantic import BaseModel, ConfigDict, Field, PlainValidator, WithJsonSchema
@@ -52,14 +53,13 @@ Sizes = Annotated[
 ]
 """A quantity, or a list of them whose absolute values add."""
 
-Names = Annotated[
-    Any,
-    PlainValidator(_names),
-    WithJsonSchema(
-        {"anyOf": [{"type": "string"}, {"type": "array", "items": {"type": "string"}, "minItems": 1}]}
-    ),
-]
-"""One name or a list of names; read as a list."""
+
+def names_of(known: Sequence[str]) -> tuple[PlainValidator, WithJsonSchema]:
+    """Marks of a type: one name or a list of names, read as a list; an editor offers the known ones."""
+    one = {"type": "string", "enum": list(known)}
+    many = {"type": "array", "items": one, "minItems": 1}
+    return PlainValidator(_names), WithJsonSchema({"anyOf": [one, many]})
+
 
 Pair = Annotated[list[Quantity], Field(min_length=2, max_length=2)]
 """A range: its two ends."""

@@ -2,16 +2,22 @@
 
 from __future__ import annotations
 
-from typing import Annotated, Literal
+from typing import Annotated, Any, Literal
 
 from pydantic import ConfigDict, Discriminator, Tag
 
-from tapband.files.fields import Names, Part, Quantity, Sizes, Text, example
+from tapband.files.acts import ACTS
+from tapband.files.fields import Part, Quantity, Sizes, Text, example, names_of
 
 INTEGRATIONS = Literal["contour-cubic", "contour-linear", "polygon"]
 RULES = Literal["none", "prandtl-glauert", "karman-tsien", "laitone"]
 SHAPES = Literal["rectangular", "triangular", "arcsine", "trapezoidal"]
 STREAMS = Literal["total and static", "difference and static", "dynamic and mach", "mach"]
+
+
+SHARING = {"pattern": "^(independent|common|by .+)$"}
+Acts = Annotated[Any, *names_of(tuple(ACTS))]
+"""One quantity or a list of them; read as a list."""
 
 
 class SectionPart(Part):
@@ -132,7 +138,10 @@ class StatedPart(Part):
     shape: SHAPES | None = example("rectangular", "Distribution between the limits.", default=None)
     top: float | None = example(0.5, "Top over base of a trapezoidal shape.", default=None, ge=0.0, le=1.0)
     across_taps: Text | None = example(
-        "by module", "independent, common, or by a column of the tap table.", default=None
+        "by module",
+        "independent, common, or by a column of the tap table.",
+        default=None,
+        json_schema_extra=SHARING,
     )
     full_scale: Quantity | None = example("7 kPa", "Largest magnitude of the range.", default=None)
     dof: float | None = example(9.0, "Degrees of freedom of the size.", default=None, gt=0.0)
@@ -142,7 +151,9 @@ class StatedPart(Part):
 class SourcePart(StatedPart):
     """An error source."""
 
-    acts_on: Names = example(
+    acts_on: Acts = example(
         "tap pressure", "The quantity the error enters, or a list where one error enters several."
     )
-    across_points: Text = example("by run", "independent, common, or by a column of the points table.")
+    across_points: Text = example(
+        "by run", "independent, common, or by a column of the points table.", json_schema_extra=SHARING
+    )

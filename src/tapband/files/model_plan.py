@@ -6,8 +6,9 @@ from typing import Annotated, Literal
 
 from pydantic import Field
 
-from tapband.files.fields import Names, Pair, Part, Quantity, Text, example
+from tapband.files.fields import Pair, Part, Quantity, Text, example
 from tapband.files.model import (
+    Acts,
     IntervalsPart,
     ReadingsPart,
     ReductionPart,
@@ -73,7 +74,7 @@ class TargetPart(Part):
 class OptionSourcePart(StatedPart):
     """A source as an option would have it; what is not stated is taken from the source it replaces."""
 
-    acts_on: Names | None = example("tap pressure", "As in a source.", default=None)
+    acts_on: Acts | None = example("tap pressure", "As in a source.", default=None)
     across_points: Text | None = example("by run", "As in a source.", default=None)
 
 
@@ -116,22 +117,41 @@ class WiringPart(Part):
     ports: int = example(16, "Ports of each.", ge=1, le=10000)
 
 
+_SOURCE = {
+    "name": "flow angle", "acts_on": "angle", "standard": "0.03 deg", "across_points": "common",
+}  # fmt: skip
+_SLOT = {
+    "name": "pressure scanner", "replaces": ["module zero"],
+    "option": [{"name": "7 kPa range", "cost": 9000.0, "sources": []}],
+}  # fmt: skip
+
+
 class CampaignPart(Part):
     """A campaign file of tapband."""
 
     format: Literal[1] = example(1, "Version of this format.")
     title: str = example("Section B, entry 2", "Title of the report.", default="")
-    section: SectionPart
-    taps: TapsPart
-    readings: ReadingsPart
-    stream: StreamPart
-    reduction: ReductionPart = ReductionPart()
-    intervals: IntervalsPart = IntervalsPart()
-    source: list[SourcePart] = example([], "The declared error sources.", default_factory=list)
-    polar: PolarPart = PolarPart()
-    limit: list[LimitPart] = example([], "Decisions.", default_factory=list)
-    forecast: ForecastPart | None = None
-    target: list[TargetPart] = example([], "Targets.", default_factory=list)
-    slot: list[SlotPart] = example([], "Choices.", default_factory=list)
-    layout: LayoutPart | None = None
-    wiring: WiringPart | None = None
+    section: SectionPart = example({"contour": "contour.csv", "chord": "400 mm"}, "The section under test.")
+    taps: TapsPart = example({"table": "taps.csv"}, "The pressure taps.")
+    readings: ReadingsPart = example(
+        {"table": "points.csv", "pressures": "relative to vacuum"}, "The tap readings."
+    )
+    stream: StreamPart = example({"from": "total and static"}, "Where the stream comes from.")
+    reduction: ReductionPart = example(
+        {"integration": "contour-cubic"}, "How pressures become coefficients.", default=ReductionPart()
+    )
+    intervals: IntervalsPart = example({"level": 0.95}, "Level and trials.", default=IntervalsPart())
+    source: list[SourcePart] = example([_SOURCE], "The declared error sources.", default_factory=list)
+    polar: PolarPart = example({"same_angle": "0.1 deg"}, "How polars are read.", default=PolarPart())
+    limit: list[LimitPart] = example(
+        [{"coefficient": "cm", "upper": 0.0}], "Decisions.", default_factory=list
+    )
+    forecast: ForecastPart | None = example(
+        {"alpha": ["0 deg"], "p_total": "101.3 kPa", "mach": 0.15}, "A test to come.", default=None
+    )
+    target: list[TargetPart] = example(
+        [{"coefficient": "cl", "expanded": 0.005}], "Largest uncertainties wanted.", default_factory=list
+    )
+    slot: list[SlotPart] = example([_SLOT], "Choices to be made.", default_factory=list)
+    layout: LayoutPart | None = example({"taps": 31}, "A tap layout to be found.", default=None)
+    wiring: WiringPart | None = example({"modules": 4, "ports": 16}, "Modules to wire to.", default=None)
