@@ -8,7 +8,7 @@ from __future__ import annotations
 
 import sys
 from collections.abc import Callable, Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from functools import cached_property
 from importlib.metadata import version
 from pathlib import Path
@@ -21,7 +21,6 @@ from tapband import __version__
 from tapband.files.load import load
 from tapband.nouns.campaign import Campaign
 from tapband.nouns.errors import QuestionError
-from tapband.questions.compare import compare as compare_latents
 from tapband.questions.latents import Latents, from_arrays, latents_at, latents_of, to_arrays
 from tapband.questions.statement import statements
 from tapband.reduction import Reduced, assemble, reduce_campaign
@@ -90,6 +89,31 @@ class Results:
         return self._table("tap_ranking")
 
     @property
+    def wiring_comparison(self) -> pd.DataFrame:
+        """One row a point, coefficient and source of tap pressure: the interval under four wirings."""
+        return self._table("wiring_comparison")
+
+    @property
+    def fits(self) -> pd.DataFrame:
+        """One row a polar and fitted quantity."""
+        return self._table("fits")
+
+    @property
+    def repeats(self) -> pd.DataFrame:
+        """One row an angle that was repeated and coefficient: scatter against what changes between repeats."""
+        return self._table("repeats")
+
+    @property
+    def regions(self) -> pd.DataFrame:
+        """One row a point and pair of coefficients: the ellipse that holds both at the level."""
+        return self._table("regions")
+
+    @property
+    def decisions(self) -> pd.DataFrame:
+        """One row a point and limit: probability of conformity, and whether it meets, fails or is undecided."""
+        return self._table("decisions")
+
+    @property
     def warnings(self) -> tuple[str, ...]:
         """Everything the reader should know before quoting a number."""
         return tuple(self.meta.get("warnings", ()))
@@ -125,7 +149,15 @@ class Results:
         Runs and configs are paired at angles that are equal ``within`` a tolerance ("0.1 deg", or a number of
         degrees; default: that of the campaign), and interpolated where they are not. Notes are in ``attrs``.
         """
-        return _differences(self.latents, a, b, within, self.meta)
+        from tapband.files.answers import Setting, compared
+
+        setting = Setting(
+            level=float(self.meta.get("level", 0.95)),
+            seed=int(self.meta.get("seed", 1)),
+            same_angle=np.radians(float(self.meta.get("same_angle", 0.1))),
+            assembled=self.reduced.assembled if self.reduced is not None else None,
+        )
+        return compared(self.latents, setting, a, b, within)
 
     @cached_property
     def _variables(self) -> dict[tuple[str, int, int], UFloat]:
@@ -226,21 +258,58 @@ def size(campaign: Campaign, progress: Callable[[float, float, str], None] | Non
 
 
 def _results(reduced: Reduced, kind: str) -> Results:
+    from tapband.files.answers import between
     from tapband.files.frames import frames
     from tapband.files.frames_plan import outcome_frames
     from tapband.files.frames_rank import rank_tables
 
-    tables = frames(reduced) | rank_tables(reduced)
+    latents = latents_of(reduced)
+    answers = between(reduced, latents)
+    tables = frames(reduced) | rank_tables(reduced) | answers.tables
     planning, said, unmet = outcome_frames(reduced, forecast=kind == "forecast")
     if kind == "forecast":
         tables["cp"]["flag"] = [f"forecast; {flag}" if flag else kind for flag in tables["cp"]["flag"]]
     meta = _meta(reduced)
     targets = planning["targets"].to_dict("records") if "targets" in planning else []
-    status = max(int(meta["exit_status"]), int(unmet))
-    warnings = [*meta["warnings"], *said]
+    status = max(int(meta["exit_status"]), int(unmet), int(answers.failed))
+    warnings = [*meta["warnings"], *said, *answers.warnings]
     return Results(
         tables={**tables, **planning},
         meta={**meta, "kind": kind, "warnings": warnings, "targets": targets, "exit_status": status},
+        arrays=to_arrays(latents),
+        campaign=reduced.campaign,
+        reduced=reduced,
+    )
+
+
+def rank(
+    campaign: Campaign,
+    point: str,
+    sobol: str | None = None,
+    trials: str | int | None = None,
+    seed: int | None = None,
+) -> Results:
+    """What drives one point, POINT or RUN/POINT, without reducing the others.
+
+    Tables ``ranking`` (by group), ``source_ranking``, ``tap_ranking``, ``wiring_comparison`` and, with more
+    than 30 declared sources, ``screening``. ``sobol`` None: as many samples as are needed; "N" or "salib:N".
+    """
+    from tapband.files.frames import frames
+    from tapband.files.frames_rank import point_tables
+    from tapband.questions.rank_point import reduced_at
+
+    if campaign.points is None:
+        raise QuestionError("rank: needs readings; got a campaign without them; add a table of points")
+    stated = campaign.intervals
+    reduced = reduced_at(
+        campaign,
+        point,
+        stated.trials if trials is None else str(trials),
+        stated.seed if seed is None else seed,
+    )
+    return Results(
+        tables={**frames(reduced), **point_tables(reduced, sobol)},
+        meta={**_meta(reduced), "kind": "rank"},
         arrays=to_arrays(latents_of(reduced)),
         campaign=reduced.campaign,
         reduced=reduced,
@@ -252,40 +321,32 @@ def compare(
     a: str,
     b: str,
     within: str | float | None = None,
-    trials: str | int | None = None,
     seed: int | None = None,
 ) -> Results:
     """The table ``differences`` alone, without reducing the whole campaign; see :meth:`Results.compare`."""
     if campaign.points is None:
         raise QuestionError("compare: needs readings; got a campaign without them; add a table of points")
+    from tapband.files.answers import Setting, compared
+
+    stated = campaign.intervals
+    intervals = replace(stated, seed=stated.seed if seed is None else seed)
+    campaign = replace(campaign, intervals=intervals)
     assembled = assemble(campaign)
     latents = latents_at(assembled)
-    meta = {
-        "format": 1,
-        "kind": "compare",
-        "title": campaign.title,
-        "name": campaign.name,
-        "level": campaign.intervals.level,
-        "same_angle": float(np.degrees(campaign.plan.polar.same_angle)),
-        "inputs": dict(campaign.inputs),
-        "warnings": [*campaign.warnings, *assembled.warnings],
-        "cautions": list(CAUTIONS),
-    }
-    table = _differences(latents, a, b, within, meta)
-    return Results(tables={"differences": table}, meta=meta, arrays=to_arrays(latents), campaign=campaign)
-
-
-def _differences(
-    latents: Latents, a: str, b: str, within: str | float | None, meta: Mapping[str, Any]
-) -> pd.DataFrame:
-    from tapband.files.frames_between import differences
-    from tapband.files.tolerance import tolerance
-
-    same = np.radians(float(meta.get("same_angle", 0.1)))
-    found = compare_latents(
-        latents, a, b, within=tolerance(within, same), level=float(meta.get("level", 0.95))
+    setting = Setting(
+        level=intervals.level,
+        seed=intervals.seed,
+        same_angle=campaign.plan.polar.same_angle,
+        assembled=assembled,
     )
-    return differences(found)
+    table = compared(latents, setting, a, b, within)
+    warnings = [*campaign.warnings, *assembled.warnings, *table.attrs["notes"]]
+    return Results(
+        tables={"differences": table},
+        meta={**_head(campaign), "kind": "compare", "warnings": warnings},
+        arrays=to_arrays(latents),
+        campaign=campaign,
+    )
 
 
 def _meta(reduced: Reduced) -> dict[str, Any]:

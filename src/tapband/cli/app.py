@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import typer
 
-from tapband.cli import comparing, planning, reading, reducing
+from tapband.cli import comparing, planning, ranking, reading, reducing
 from tapband.cli.options import Quiet, Version
 
 app = typer.Typer(
@@ -31,5 +31,5 @@ def _top(context: typer.Context, version: Version = False, quiet: Quiet = False)
         raise typer.Exit(2)
 
 
-for module in (reading, reducing, comparing, planning):
+for module in (reading, reducing, ranking, comparing, planning):
     module.add_to(app)

@@ -2,13 +2,19 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
+
 import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
-from tapband.probability.sensitivity import sobol
+from tapband.nouns.problem import Problem
+from tapband.probability.by_salib import sobol_by_salib
+from tapband.probability.sensitivity import Indices, sobol
 from tapband.questions.rank import Ranking, rank_groups
+from tapband.questions.rank_screening import MANY, Screened, screen_sources
 from tapband.questions.rank_taps import NOT_AT_A_TAP, TapRanking, rank_taps
+from tapband.questions.rank_wiring import ARRANGEMENTS, Wirings, compare_wirings
 from tapband.reduction import Reduced
 
 Array = NDArray[np.float64]
@@ -83,10 +89,90 @@ def _outputs(reduced: Reduced, each: int) -> NDArray[np.object_]:
     return np.tile(names, len(reduced.assembled.points.names))
 
 
+def wiring_comparison(reduced: Reduced, found: Wirings) -> pd.DataFrame:
+    """One row a point, coefficient and source of tap pressure, then one for all of them together.
+
+    ``declared`` is how the campaign shares the source, ``U`` the interval as declared; then for each
+    arrangement the source's contribution and the whole U it leads to.
+    """
+    size, outputs, rows = found.contribution.shape[:3]
+    columns: dict[str, object] = {
+        **_labels(reduced, outputs * rows),
+        "coefficient": _outputs(reduced, rows),
+        "source": np.tile(np.array(found.sources, dtype=object), size * outputs),
+        "declared": np.tile(np.array(found.declared, dtype=object), size * outputs),
+        "U": np.repeat(reduced.linear.U.ravel(), rows),
+    }
+    for word, values in (("contribution", found.contribution), ("U", found.expanded)):
+        for a, name in enumerate(ARRANGEMENTS):
+            columns[f"{word}_{name.replace(' ', '_')}"] = values[..., a].ravel()
+    frame = pd.DataFrame(columns)
+    frame.attrs["notes"] = list(found.left_out)
+    return frame
+
+
+def screening(reduced: Reduced, found: Screened) -> pd.DataFrame:
+    """One row a coefficient and source of one point, the most important first.
+
+    ``loss`` is the part of U that is lost when the source and all behind it are left out.
+    """
+    order, outputs = np.argsort(found.place, kind="stable"), reduced.outputs
+    groups = [one.group for one in reduced.assembled.loaded]
+    names = np.array(found.sources, dtype=object)[order]
+    return pd.DataFrame(
+        {
+            **_labels(reduced, len(outputs) * order.size),
+            "coefficient": _outputs(reduced, order.size),
+            "source": np.tile(names, len(outputs)),
+            "group": np.tile(np.array(groups, dtype=object)[order], len(outputs)),
+            "mu_star": found.mu_star[:, order].ravel(),
+            "mu_star_ci": found.mu_star_ci[:, order].ravel(),
+            "loss": found.loss[:, order].ravel(),
+            "rank": np.tile(found.place[order], len(outputs)),
+            "leave_out": np.tile(np.where(found.leave_out[order], "yes", "no").astype(object), len(outputs)),
+        }
+    )
+
+
 def rank_tables(reduced: Reduced, threads: int | None = None) -> dict[str, pd.DataFrame]:
-    """ranking and tap_ranking by file name without its ending."""
+    """ranking, tap_ranking and wiring_comparison of every point, by file name without its ending."""
     assembled, intervals = reduced.assembled, reduced.campaign.intervals
     groups = [one.group for one in assembled.loaded]
     indices = sobol(assembled.problem, groups, intervals.seed, threads=threads)
     found = rank_groups(assembled.problem, reduced.linear, groups, intervals.level, indices)
-    return {"ranking": ranking(reduced, found), "tap_ranking": tap_ranking(reduced, rank_taps(assembled))}
+    wirings = compare_wirings(assembled, reduced.linear, intervals.level)
+    return {
+        "ranking": ranking(reduced, found),
+        "tap_ranking": tap_ranking(reduced, rank_taps(assembled)),
+        "wiring_comparison": wiring_comparison(reduced, wirings),
+    }
+
+
+def point_tables(reduced: Reduced, method: str | None) -> dict[str, pd.DataFrame]:
+    """The same of a campaign of one point, and ranking by source and screening beside them.
+
+    ``method`` None (as many samples as are needed), "N" base samples, or "salib:N".
+    """
+    assembled, linear, intervals = reduced.assembled, reduced.linear, reduced.campaign.intervals
+    tables = {}
+    for name, of in (
+        ("ranking", [one.group for one in assembled.loaded]),
+        ("source_ranking", [one.family.source for one in assembled.loaded]),
+    ):
+        indices = _indices(assembled.problem, of, intervals.seed, method)
+        found = rank_groups(assembled.problem, linear, of, intervals.level, indices)
+        tables[name] = ranking(reduced, found)
+    tables["tap_ranking"] = tap_ranking(reduced, rank_taps(assembled))
+    tables["wiring_comparison"] = wiring_comparison(
+        reduced, compare_wirings(assembled, linear, intervals.level)
+    )
+    if len(reduced.campaign.sources) > MANY:
+        found_few = screen_sources(assembled.problem, linear, intervals.level, intervals.seed)
+        tables["screening"] = screening(reduced, found_few)
+    return tables
+
+
+def _indices(problem: Problem, groups: Sequence[str], seed: int, method: str | None) -> Indices:
+    if method is not None and method.startswith("salib:"):
+        return sobol_by_salib(problem, 0, groups, int(method.removeprefix("salib:")), seed)
+    return sobol(problem, groups, seed, samples=None if method is None else int(method))

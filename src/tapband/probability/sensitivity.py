@@ -94,7 +94,7 @@ def sobol(
 
 
 def _climb(design: Design, points: range, samples: int | None) -> Iterator[tuple[range, int, Sums]]:
-    """Blocks of points with their base samples and sums; a point with wide intervals comes again with more."""
+    """Blocks of points, base samples and sums; a point with wide intervals comes again with more samples."""
     ladder = LADDER if samples is None else ((samples, np.inf),)
     work = [(points, 0)]
     while work:

@@ -12,6 +12,7 @@ from tapband.experiment.chain import Equation
 from tapband.experiment.jacobian import Jacobian, jacobian
 from tapband.experiment.stream import Stream
 from tapband.reduction.assemble import Assembled
+from tapband.reduction.loads import Loaded
 from tapband.reduction.sensitivities import At
 
 Array = NDArray[np.float64]
@@ -53,3 +54,19 @@ def differentiated(assembled: Assembled) -> Iterator[Place]:
             yield Place(
                 equation=one.equation, at=At(points=i, live=live, cp=cp[i], q=stream.q[i], slopes=slopes)
             )
+
+
+def by_latent(loaded: Loaded, place: Place) -> Array:
+    """∂y/∂ξ (Pb, m, G) of any source at the points of a block, through all that it acts on."""
+    i, slopes, count = place.at.points, place.slopes, len(loaded.family.members)
+    total = np.zeros((*slopes.extra.shape[:2], count))
+    for entry in loaded.entries:
+        load = entry.load[i]
+        if entry.slot == "added":
+            total += load
+        elif entry.on_taps:
+            moved = getattr(slopes, entry.slot) * load[:, None, :]
+            total += moved @ (entry.member[:, None] == np.arange(count)).astype(np.float64)
+        else:
+            total[..., entry.member[0]] += slopes.scalars[entry.slot] * load[:, None]
+    return total
