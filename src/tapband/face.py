@@ -100,7 +100,7 @@ class Results:
 
     @property
     def repeats(self) -> pd.DataFrame:
-        """One row an angle that was repeated and coefficient: scatter against what changes between repeats."""
+        """One row a repeated angle and coefficient: scatter against what changes between repeats."""
         return self._table("repeats")
 
     @property
@@ -110,7 +110,7 @@ class Results:
 
     @property
     def decisions(self) -> pd.DataFrame:
-        """One row a point and limit: probability of conformity, and whether it meets, fails or is undecided."""
+        """One row a point and limit: probability of conformity; meets, fails or undecided."""
         return self._table("decisions")
 
     @property

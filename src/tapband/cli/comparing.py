@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING, Annotated, Any
 
 import typer
 
-from tapband.cli.options import CampaignFile, Quiet, Seed, Trials, Version
+from tapband.cli.options import CampaignFile, Quiet, Seed, Version
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -18,7 +18,7 @@ if TYPE_CHECKING:
 FIRST = ("cl", "cd_pressure", "cm")
 MANY, ENDS = 16, 7
 """A comparison of more pairs shows this many at either end."""
-NAME = 13
+NAME = 11
 """Widest name of a point."""
 
 Name = Annotated[str, typer.Argument(help="A point (POINT or RUN/POINT), a run or a config.")]
@@ -47,7 +47,6 @@ def compare(
     b: Name,
     within: Within = None,
     out: Folder = None,
-    trials: Trials = None,
     seed: Seed = None,
     quiet: Quiet = False,
     version: Version = False,
@@ -65,7 +64,7 @@ def compare(
     silent = quiet or bool(context.obj)
     if out is not None:
         check_target(out)
-    results = face.compare(face.load(campaign), a, b, within=within, trials=trials, seed=seed)
+    results = face.compare(face.load(campaign), a, b, within=within, seed=seed)
     if out is not None:
         from tapband.files.write import write
 

@@ -8,14 +8,17 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
-from tapband.questions.compare import Differences
+from tapband.questions.compare import ROUNDING, Differences
+from tapband.questions.fit import SHOWN, Fits
+from tapband.questions.fit_plan import QUANTITIES
+from tapband.questions.law import Drawn
 
 NAMED, SMALL = 3, 0.005
 """Sources named in a cell, and the share of variance below which none is."""
 
 
-def differences(found: Differences) -> pd.DataFrame:
-    """One row a pair and coefficient."""
+def differences(found: Differences, drawn: Drawn) -> pd.DataFrame:
+    """One row a pair and coefficient; significance is that of the Monte Carlo interval where it differs."""
     size, m = found.value.shape
 
     def each(values: object) -> NDArray[np.object_]:
@@ -26,6 +29,9 @@ def differences(found: Differences) -> pd.DataFrame:
 
     equal_significant = np.abs(found.equal_angle_value) > found.equal_angle_expanded
     known = np.isfinite(found.value)
+    trusted = drawn.agrees(found.low, found.high, found.u) | ~np.isfinite(drawn.low)
+    low, high = np.where(trusted, found.low, drawn.low), np.where(trusted, found.high, drawn.high)
+    significant = (low > ROUNDING) | (high < -ROUNDING)
     frame = pd.DataFrame(
         {
             "a": each(found.a),
@@ -38,8 +44,11 @@ def differences(found: Differences) -> pd.DataFrame:
             "low": flat(found.low),
             "high": flat(found.high),
             "u_if_independent": flat(found.u_independent),
-            "significant": flat(_yes(found.significant, known)),
+            "significant": flat(_yes(significant, known)),
             "dof": flat(np.where(np.isinf(found.dof), np.nan, found.dof)),
+            "mc_low": flat(drawn.low),
+            "mc_high": flat(drawn.high),
+            "agrees": flat(_yes(trusted, known & np.isfinite(drawn.low))),
             "alpha_a": np.repeat(np.degrees(found.alpha[:, 0]), m),
             "alpha_b": np.repeat(np.degrees(found.alpha[:, 1]), m),
             "mach_a": np.repeat(found.mach[:, 0], m),
@@ -71,3 +80,37 @@ def _remaining(found: Differences, r: int, j: int) -> str:
     share = found.variance[r, j] / total
     largest = [s for s in np.argsort(-share, kind="stable")[:NAMED] if share[s] >= SMALL]
     return ", ".join(f"{found.sources[s]} {100 * share[s]:.0f}%" for s in largest)
+
+
+def fits(found: Fits, drawn: Drawn) -> pd.DataFrame:
+    """One row a polar and quantity; a quantity that a polar does not give has its note alone."""
+    rows, columns = len(found.plans), [QUANTITIES.index(name) for name in SHOWN]
+    low, high = found.value - found.U, found.value + found.U
+    agrees = drawn.agrees(low, high, found.u)
+
+    def each(values: list[object]) -> NDArray[np.object_]:
+        return np.repeat(np.array(values, dtype=object), len(columns))
+
+    def flat(values: NDArray[Any]) -> NDArray[Any]:
+        return values[:, columns].reshape(-1)
+
+    return pd.DataFrame(
+        {
+            "run": each([plan.polar.run for plan in found.plans]),
+            "config": each([plan.polar.config for plan in found.plans]),
+            "quantity": np.tile(np.array(SHOWN, dtype=object), rows),
+            "value": flat(found.value),
+            "u": flat(found.u),
+            "U": flat(found.U),
+            "k": flat(found.k),
+            "low": flat(low),
+            "high": flat(high),
+            "points_used": flat(found.used),
+            "note": flat(np.array(found.notes, dtype=object)),
+            "dof": flat(np.where(np.isinf(found.dof), np.nan, found.dof)),
+            "mach": each([plan.polar.mach for plan in found.plans]).astype(float),
+            "mc_low": flat(drawn.low),
+            "mc_high": flat(drawn.high),
+            "agrees": flat(_yes(agrees, np.isfinite(drawn.low))),
+        }
+    )

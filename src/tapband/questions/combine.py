@@ -22,18 +22,35 @@ Codes = NDArray[np.int64]
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
 class Combination:
-    """N terms: the row (N,) and point (N,) of each, weights (N, q, m) and weights of alpha (N, q) per rad."""
+    """N terms: the row (N,) and point (N,) of each, and weights (N, q, m).
+
+    ``on_alpha`` and ``on_centre`` (N, q) are the weights of the errors of alpha [per rad] and of the moment
+    centre.
+    """
 
     rows: int
     row: Codes
     point: Codes
     weight: Array
     on_alpha: Array
+    on_centre: Array | None = None
 
     @property
     def quantities(self) -> int:
         """q."""
         return int(self.weight.shape[1])
+
+    def only(self, rows: Codes) -> Combination:
+        """Some rows alone, in increasing order."""
+        kept = np.isin(self.row, rows)
+        return Combination(
+            rows=rows.size,
+            row=np.searchsorted(rows, self.row[kept]),
+            point=self.point[kept],
+            weight=self.weight[kept],
+            on_alpha=self.on_alpha[kept],
+            on_centre=None if self.on_centre is None else self.on_centre[kept],
+        )
 
     def value(self, latents: Latents) -> Array:
         """(R, q) of the coefficients alone."""
@@ -110,6 +127,9 @@ def projected(latents: Latents, combination: Combination, source: int) -> Array:
     if source in latents.on_alpha:
         moved = latents.on_alpha[source][combination.point]
         terms = terms + combination.on_alpha[:, :, None] * moved[:, None, :]
+    if combination.on_centre is not None and source in latents.on_centre:
+        moved = latents.on_centre[source][combination.point]
+        terms = terms + combination.on_centre[:, :, None] * moved[:, None, :]
     return np.asarray(terms)
 
 

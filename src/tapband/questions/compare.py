@@ -81,11 +81,6 @@ class Differences:
         """Upper end of the interval."""
         return self.value + self.U
 
-    @property
-    def significant(self) -> NDArray[np.bool_]:
-        """Whether the interval leaves zero out."""
-        return np.abs(self.value) > self.U + ROUNDING
-
 
 def compare(latents: Latents, a: str, b: str, *, within: float, level: float) -> Differences:
     """Every difference between two sides; ``within`` [rad] is what counts as one angle."""

@@ -47,6 +47,8 @@ class Latents:
     """∂alpha/∂ξ (P, G) [rad] of the sources, by index, that move the angle."""
     on_mach: Mapping[int, Array]
     """∂M/∂ξ (P, G) of the sources, by index, that move the Mach number."""
+    on_centre: Mapping[int, Array]
+    """∂(moment centre)/∂ξ (P, G) [x/c] of the sources, by index, that move it."""
     random: NDArray[np.bool_]
     """(S,) sources that are drawn anew at every point."""
 
@@ -85,7 +87,7 @@ def latents_at(assembled: Assembled) -> Latents:
     """The latents of an assembled campaign; no propagation is needed."""
     problem, points = assembled.problem, assembled.points
     families = problem.families
-    on_alpha, on_mach = _on_conditions(assembled)
+    on_alpha, on_mach, on_centre = _on_conditions(assembled)
     return Latents(
         keys=points.keys,
         names=points.names,
@@ -102,6 +104,7 @@ def latents_at(assembled: Assembled) -> Latents:
         scale=tuple(_codes(f.scale_group) for f in families),
         on_alpha=on_alpha,
         on_mach=on_mach,
+        on_centre=on_centre,
         random=np.array([not f.systematic for f in families], dtype=np.bool_),
     )
 
@@ -110,22 +113,25 @@ def _codes(groups: Sequence[str]) -> Codes:
     return np.unique(np.asarray(groups, dtype=object).astype(str), return_inverse=True)[1].ravel()
 
 
-def _on_conditions(assembled: Assembled) -> tuple[dict[int, Array], dict[int, Array]]:
-    """What each source adds to alpha and to M, (P, G) by its index."""
+def _on_conditions(assembled: Assembled) -> tuple[dict[int, Array], dict[int, Array], dict[int, Array]]:
+    """What each source adds to alpha, to M and to the moment centre, (P, G) by its index."""
     slopes = stream_slopes(assembled.sets[0].equation, assembled.points.channels, assembled.corrected.shifts)
-    on_alpha: dict[int, Array] = {}
-    on_mach: dict[int, Array] = {}
+    alpha: dict[int, Array] = {}
+    mach: dict[int, Array] = {}
+    centre: dict[int, Array] = {}
     for s, one in enumerate(assembled.loaded):
         for entry in one.entries:
             if entry.slot == "alpha":
-                into, by = on_alpha, entry.load
+                into, by = alpha, entry.load
+            elif entry.slot == "centre":
+                into, by = centre, entry.load
             elif entry.slot in slopes:
-                into, by = on_mach, entry.load * slopes[entry.slot].mach
+                into, by = mach, entry.load * slopes[entry.slot].mach
             else:
                 continue
             rows = into.setdefault(s, np.zeros((len(entry.load), len(one.family.members))))
             rows[:, int(entry.member[0])] += by
-    return on_alpha, on_mach
+    return alpha, mach, centre
 
 
 def to_arrays(latents: Latents) -> dict[str, Array | Codes | NDArray[np.str_] | NDArray[np.bool_]]:
@@ -138,7 +144,11 @@ def to_arrays(latents: Latents) -> dict[str, Array | Codes | NDArray[np.str_] | 
     for i, (s, codes) in enumerate(zip(latents.sensitivity, latents.group, strict=True)):
         arrays[f"sensitivity {i}"], arrays[f"group {i}"] = s, codes
         arrays[f"scale {i}"] = latents.scale[i]
-    for word, parts in (("alpha", latents.on_alpha), ("mach", latents.on_mach)):
+    for word, parts in (
+        ("alpha", latents.on_alpha),
+        ("mach", latents.on_mach),
+        ("centre", latents.on_centre),
+    ):
         arrays |= {f"on {word} {i}": part for i, part in parts.items()}
     return arrays
 
@@ -149,7 +159,7 @@ def from_arrays(arrays: Mapping[str, Array]) -> Latents:
     count = range(len(words["sources"]))
     sizes = {
         word: {i: arrays[f"on {word} {i}"] for i in count if f"on {word} {i}" in arrays}
-        for word in ("alpha", "mach")
+        for word in ("alpha", "mach", "centre")
     }
     return Latents(
         **{name: tuple(str(item) for item in items) for name, items in words.items()},
@@ -163,4 +173,5 @@ def from_arrays(arrays: Mapping[str, Array]) -> Latents:
         scale=tuple(np.asarray(arrays[f"scale {i}"], dtype=np.int64) for i in count),
         on_alpha=sizes["alpha"],
         on_mach=sizes["mach"],
+        on_centre=sizes["centre"],
     )
