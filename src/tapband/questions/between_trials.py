@@ -15,7 +15,7 @@ from tapband.questions.fit import Fits
 from tapband.questions.fit_plan import OUTPUTS
 from tapband.questions.joint import Joint, applied, joint_trials
 from tapband.questions.latents import Latents
-from tapband.questions.law import Drawn, corrected, counted, linear_reach
+from tapband.questions.law import Drawn, corrected, counted, law_of, linear_reach
 from tapband.reduction.assemble import Assembled
 
 Array = NDArray[np.float64]
@@ -76,7 +76,8 @@ def _drawn(
 ) -> Drawn:
     points = np.unique(combination.point)
     size = int(np.clip(budget // points.size, FEWEST, MOST))
-    reach = linear_reach(assembled.problem.families, latents, combination, u, half, level)
+    law = law_of(assembled.problem.families, latents, combination, u, half, level)
+    reach = linear_reach(law, u.shape, level)
     joint = joint_trials(assembled, latents, points, seed, 0, size)
     extra = _rectangular(seed, 0, half, size)
     away = joint.linear - latents.estimate[joint.points][:, None, :]

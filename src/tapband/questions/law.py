@@ -20,7 +20,7 @@ from tapband.nouns.problem import Family
 from tapband.nouns.source import Shape
 from tapband.probability.coverage import symmetric_of, tolerance
 from tapband.probability.distributions import doubt
-from tapband.probability.linear_law import Term, linear_law
+from tapband.probability.linear_law import LinearLaw, Term, linear_law
 from tapband.questions.combine import Combination, grouped, projected
 from tapband.questions.latents import Latents
 
@@ -59,17 +59,23 @@ class Drawn:
         )
 
 
-def linear_reach(
+def linear_reach(law: LinearLaw, shape: tuple[int, ...], level: float) -> Array:
+    """x with P(|quantity − estimate| ≤ x u) = ``level`` by the linear model; NaN where there is no law."""
+    return law.quantile(0.5 * (1.0 + level)).reshape(shape)
+
+
+def law_of(
     families: Sequence[Family],
     latents: Latents,
     combination: Combination,
     u: Array,
     half: Array,
     level: float,
-) -> Array:
-    """x (R, q) with P(|quantity − estimate| ≤ x u) = ``level`` by the linear model; NaN where u is zero.
+) -> LinearLaw:
+    """The law of the R q standardised quantities, row by row, by the linear model; none where u is zero.
 
-    ``half`` (R, q) is the half-width of a further rectangular term; u includes it.
+    ``u`` and ``half`` (R, q): the latter is the half-width of a further rectangular term, which u includes.
+    Quantiles as far out as ``level`` asks are resolved.
     """
     unit = np.where(u > 0.0, u, np.inf)
     terms: list[Term] = []
@@ -82,8 +88,7 @@ def linear_reach(
     )  # fmt: skip
     width = (half / np.sqrt(3.0) / unit).reshape(rows, 1)
     terms.append(Term(family=extra, size=width, dof=np.full(rows, np.inf), doubt=np.zeros(rows)))
-    law = linear_law(terms, (np.isfinite(u) & (u > 0.0)).ravel(), 0.5 * (1.0 - level))
-    return law.quantile(0.5 * (1.0 + level)).reshape(u.shape)
+    return linear_law(terms, (np.isfinite(u) & (u > 0.0)).ravel(), 0.5 * (1.0 - level))
 
 
 def _terms(
