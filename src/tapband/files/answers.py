@@ -9,9 +9,12 @@ from tapband.files import frames_between as frames
 from tapband.files.tolerance import tolerance
 from tapband.questions.between_trials import of_differences, of_fits
 from tapband.questions.compare import compare
+from tapband.questions.decide import decisions
 from tapband.questions.fit import fits
 from tapband.questions.latents import Latents
 from tapband.questions.law import Drawn
+from tapband.questions.regions import regions
+from tapband.questions.repeats import repeats
 from tapband.reduction import Reduced
 from tapband.reduction.assemble import Assembled
 
@@ -59,4 +62,14 @@ def between(reduced: Reduced, latents: Latents) -> Between:
     found = fits(latents, campaign.plan.polar, centre, level)
     if found is not None:
         tables["fits"] = frames.fits(found, of_fits(assembled, latents, found, level, seed))
-    return Between(tables=tables, warnings=(), failed=False)
+    again = repeats(latents, campaign.plan.polar.same_angle, level)
+    if again:
+        tables["repeats"] = frames.repeats(again, latents)
+    joint = regions(reduced, latents)
+    if joint:
+        tables["regions"] = frames.regions(joint, latents)
+    decided, said = decisions(reduced, latents)
+    if decided:
+        tables["decisions"] = frames.decisions(decided, latents)
+    failed = any(one.answer == "fails" for one in decided)
+    return Between(tables=tables, warnings=tuple(said), failed=failed)

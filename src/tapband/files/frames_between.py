@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterable, Sequence
 from typing import Any
 
 import numpy as np
@@ -9,9 +10,13 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from tapband.questions.compare import ROUNDING, Differences
+from tapband.questions.decide import Decision
 from tapband.questions.fit import SHOWN, Fits
 from tapband.questions.fit_plan import QUANTITIES
+from tapband.questions.latents import Latents
 from tapband.questions.law import Drawn
+from tapband.questions.regions import Region
+from tapband.questions.repeats import Repeats
 
 NAMED, SMALL = 3, 0.005
 """Sources named in a cell, and the share of variance below which none is."""
@@ -114,3 +119,80 @@ def fits(found: Fits, drawn: Drawn) -> pd.DataFrame:
             "agrees": flat(_yes(agrees, np.isfinite(drawn.low))),
         }
     )
+
+
+def repeats(found: Sequence[Repeats], latents: Latents) -> pd.DataFrame:
+    """One row a repeated angle and coefficient; alpha missing where all angles are judged together."""
+    return pd.DataFrame(
+        {
+            "config": _texts(one.config for one in found),
+            "alpha": np.degrees([one.alpha for one in found]),
+            "coefficient": _texts(one.coefficient for one in found),
+            "n": [len(one.points) for one in found],
+            "scatter": [one.scatter for one in found],
+            "predicted": [one.predicted for one in found],
+            "dof": [one.dof for one in found],
+            "chi2": [one.chi2 for one in found],
+            "p": [one.p for one in found],
+            "verdict": _texts(one.verdict for one in found),
+            "within_run": [one.within for one in found],
+            "within_run_dof": [one.within_dof for one in found],
+            "between_runs": [one.between for one in found],
+            "between_runs_dof": [one.between_dof for one in found],
+            "points": _texts(_listed(one.points, latents) for one in found),
+            "changing": _texts(", ".join(one.sources) for one in found),
+            "at_one_angle": _texts("yes" if one.moved else "no" for one in found),
+        }
+    )
+
+
+def regions(found: Sequence[Region], latents: Latents) -> pd.DataFrame:
+    """One row a point and pair of coefficients."""
+    axes = np.array([one.axes for one in found]).reshape(-1, 3)
+    return pd.DataFrame(
+        {
+            "point": _texts(latents.names[one.point] for one in found),
+            "run": _texts(latents.runs[one.point] for one in found),
+            "a": _texts(one.a for one in found),
+            "b": _texts(one.b for one in found),
+            "k": [one.k for one in found],
+            "semi_major": axes[:, 0],
+            "semi_minor": axes[:, 1],
+            "tilt": axes[:, 2],
+            "method": _texts(one.method for one in found),
+            "centre_a": [one.centre[0] for one in found],
+            "centre_b": [one.centre[1] for one in found],
+        }
+    )
+
+
+def decisions(found: Sequence[Decision], latents: Latents) -> pd.DataFrame:
+    """One row a point and limit; an end that is not limited is missing."""
+
+    def end(value: float) -> float:
+        return value if np.isfinite(value) else np.nan
+
+    return pd.DataFrame(
+        {
+            "point": _texts(latents.names[one.point] for one in found),
+            "coefficient": _texts(one.coefficient for one in found),
+            "value": [one.value for one in found],
+            "U": [one.expanded for one in found],
+            "lower": [end(one.lower) for one in found],
+            "upper": [end(one.upper) for one in found],
+            "probability": [one.probability for one in found],
+            "rule": _texts(one.rule for one in found),
+            "answer": _texts(one.answer for one in found),
+            "run": _texts(latents.runs[one.point] for one in found),
+            "alpha": np.degrees([latents.alpha[one.point] for one in found]),
+        }
+    )
+
+
+def _texts(values: Iterable[str]) -> NDArray[np.object_]:
+    return np.array(list(values), dtype=object)
+
+
+def _listed(points: Sequence[int], latents: Latents) -> str:
+    names = [latents.keys[i] for i in points]
+    return ", ".join(names[:8]) + (f" and {len(names) - 8} more" if len(names) > 8 else "")
