@@ -7,8 +7,8 @@ from math import nan
 from tapband.files.acts import Arrangement
 from tapband.files.faults import offer, shown
 from tapband.files.folder import Folder
+from tapband.files.full_scales import read_full_scale
 from tapband.files.model import ChannelPart, StreamPart
-from tapband.files.sources import read_full_scale
 from tapband.files.taps import TapList
 from tapband.nouns.campaign import Channel
 

@@ -78,10 +78,12 @@ FRACTIONS = frozenset({"", "-", "1", "c", "chord", "chords"})
 
 
 def place_factor(table: Table, column: Column, chord: float, findings: Findings) -> float:
-    """What turns the numbers of a place column into chords."""
+    """What turns the numbers of a place column into chords, NaN where the unit or the chord is not known."""
     if not in_lengths(column):
         return 1.0
-    return column_unit(table, column, LENGTH, findings).factor / chord
+    before = len(findings)
+    factor = column_unit(table, column, LENGTH, findings).factor
+    return factor / chord if len(findings) == before else nan
 
 
 def _head(column: Column) -> str:

@@ -8,7 +8,7 @@ import numpy as np
 
 from tapband.files.contours import frozen
 from tapband.files.faults import shown
-from tapband.files.sources import Setting
+from tapband.files.setting import Setting
 from tapband.files.tables import Column, column_unit, need
 from tapband.files.units import ANGLE, NUMBER
 from tapband.nouns.plan import ExpectedTable
@@ -27,7 +27,11 @@ def read_expected(name: str, alpha: Sequence[float], setting: Setting) -> Expect
     columns: list[Column] = []
     at: list[int] = []
     for i, (tap, dead) in enumerate(zip(taps.names, taps.excluded.tolist(), strict=True)):
-        column = table.column(tap) if dead else need(table, tap, findings, f"a tap of {taps.table.file}")
+        column = (
+            table.column(tap)
+            if dead
+            else need(table, tap, findings, f"a tap of {taps.table.file}", taps.names)
+        )
         if column is not None:
             columns.append(column)
             at.append(i)

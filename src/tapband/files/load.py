@@ -31,8 +31,9 @@ from tapband.files.planning import (
     read_wiring,
 )
 from tapband.files.points import PointList, read_points
+from tapband.files.setting import Place, Setting
 from tapband.files.slots import read_slots
-from tapband.files.sources import Place, Setting, read_source
+from tapband.files.sources import read_source
 from tapband.files.tables import BrokenTableError
 from tapband.files.taps import TapList, read_taps
 from tapband.nouns.campaign import (

@@ -13,7 +13,7 @@ import numpy as np
 from tapband.files.expected import read_expected
 from tapband.files.faults import RuleError, nearest, offer, shown
 from tapband.files.model_plan import ForecastPart, LayoutPart, LimitPart, PolarPart, TargetPart, WiringPart
-from tapband.files.sources import Setting
+from tapband.files.setting import Setting
 from tapband.files.tables import BrokenTableError
 from tapband.files.units import ANGLE, PRESSURE, TEMPERATURE, TIME, bare, chords, fraction, quantity, split
 from tapband.nouns.plan import Forecast, Layout, Limit, Polar, Target, Wiring

@@ -5,10 +5,12 @@ from __future__ import annotations
 from collections.abc import Mapping, Sequence
 
 from tapband.files.faults import nearest, offer, shown
+from tapband.files.full_scales import read_full_scale
 from tapband.files.model import StatedPart
 from tapband.files.model_plan import OptionPart, OptionSourcePart, SlotPart
+from tapband.files.setting import Place, Setting
 from tapband.files.sizes import STATEMENTS
-from tapband.files.sources import Place, Setting, read_full_scale, read_source
+from tapband.files.sources import read_source
 from tapband.files.validate import dotted
 from tapband.nouns.plan import Option, Slot
 from tapband.nouns.source import Source

@@ -2,51 +2,15 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
-from dataclasses import dataclass, field
-from math import isfinite, nan
-
-from tapband.files.acts import ACTS, AUTOMATIC, Arrangement
-from tapband.files.faults import RuleError, listed, offer, shown
-from tapband.files.folder import Folder
+from tapband.files.acts import ACTS, AUTOMATIC
+from tapband.files.faults import RuleError, offer, shown
+from tapband.files.full_scales import check_full_scale, own_full_scale
 from tapband.files.model import StatedPart
-from tapband.files.points import PointList
+from tapband.files.setting import Place, Setting
 from tapband.files.sizes import Measured, read_size
-from tapband.files.taps import TapList
-from tapband.files.units import PRESSURE, quantity
-from tapband.files.validate import dotted
-from tapband.nouns.campaign import Channel
-from tapband.nouns.source import COMMON, INDEPENDENT, Scale, Source
+from tapband.nouns.source import COMMON, INDEPENDENT, Source
 
 _KINDS = ("by COLUMN", INDEPENDENT, COMMON)
-
-
-@dataclass(frozen=True, slots=True, kw_only=True)
-class Setting:
-    """What sources are checked against; what could not be read is None and not checked against."""
-
-    folder: Folder
-    arrangement: Arrangement
-    chord: float
-    taps: TapList | None
-    points: PointList | None
-    forecast: bool
-    channels: Mapping[str, Channel]
-    blanks: set[str] = field(default_factory=set)
-    """Grouping columns whose blank cells are said already."""
-
-
-@dataclass(frozen=True, slots=True, kw_only=True)
-class Place:
-    """Where a source stands in the campaign file: its path, and how it is named as a whole."""
-
-    folder: Folder
-    path: tuple[str | int, ...]
-    whole: str
-
-    def at(self, key: str) -> str:
-        """The place of one of its keys."""
-        return self.folder.at(f"{dotted(self.path)}.{key}")
 
 
 def read_source(
@@ -66,7 +30,7 @@ def read_source(
             "choose another name",
         )  # fmt: skip
     acts = _acts(part, place, setting)
-    own = _full_scale(part, place, setting)
+    own = own_full_scale(part, place, setting)
     across_points = _across_points(part, place, setting)
     if not acts:
         return None
@@ -80,7 +44,7 @@ def read_source(
         name=part.name, group=part.group or part.name, acts_on=acts, size=size, across_taps=across_taps,
         across_points=across_points, full_scale=own if full_scale is None else full_scale, place=place.whole,
     )  # fmt: skip
-    _check_full_scale(source, place, setting)
+    check_full_scale(source, place, setting)
     return source
 
 
@@ -113,22 +77,6 @@ def _acts(part: StatedPart, place: Place, setting: Setting) -> tuple[str, ...]:
         )  # fmt: skip
         return ()
     return acts
-
-
-def _full_scale(part: StatedPart, place: Place, setting: Setting) -> float | None:
-    if part.full_scale is None:
-        return None
-    return read_full_scale(part.full_scale, place.at("full_scale"), setting.folder)
-
-
-def read_full_scale(value: object, where: str, folder: Folder) -> float:
-    """A full scale [Pa], NaN with its fault noted."""
-    found = folder.findings.take(where, lambda: quantity(value, PRESSURE), nan)
-    if found <= 0.0:
-        folder.findings.add(
-            where, "must be above zero", shown(value), "write the largest magnitude of the range"
-        )
-    return found
 
 
 def _sharing(text: str) -> str:
@@ -252,48 +200,4 @@ def _check_list(
             setting.folder.findings.add(
                 place.at(key), f"a list of sizes cannot be an error that {what}", shown(value),
                 "declare gain and zero as separate sources",
-            )  # fmt: skip
-
-
-def _check_full_scale(source: Source, place: Place, setting: Setting) -> None:
-    """Where a size is per cent of full scale, the full scale of everything acted on is known."""
-    if source.full_scale is not None or not any(t.scale is Scale.FULL_SCALE for t in source.size.terms):
-        return
-    findings, taps = setting.folder.findings, setting.taps
-    say = 'write full_scale = "..." in the source'
-    for act in source.acts_on:
-        channel = setting.arrangement.channel(act)
-        if channel == "taps":
-            if taps is None:
-                continue
-            lacking = [
-                name
-                for name, scale, dead in zip(taps.names, taps.full_scale, taps.excluded.tolist(), strict=True)
-                if not dead and not isfinite(scale)
-            ]
-            if lacking:
-                what = "any tap" if len(lacking) == int((~taps.excluded).sum()) else listed(lacking)
-                findings.add(
-                    place.whole, "needs the full scale that its per cent are of", f"none for {what}",
-                    f"{say}, or a column full_scale [kPa] in {taps.table.file}",
-                )  # fmt: skip
-            if act == "tap pressure" and not lacking:
-                _check_ports_scale(source, place, setting)
-        elif channel not in setting.channels or not isfinite(setting.channels[channel].full_scale):
-            findings.add(
-                place.whole, "needs the full scale that its per cent are of", f"none for {act}",
-                say + (f", or for {channel} in [stream.channels]" if channel else ""),
-            )  # fmt: skip
-
-
-def _check_ports_scale(source: Source, place: Place, setting: Setting) -> None:
-    """A channel on a module is one more port of the taps and needs its full scale too."""
-    stated = {setting.arrangement.channel(act) for act in source.acts_on}
-    for name, channel in setting.channels.items():
-        shares = source.across_taps in {INDEPENDENT, COMMON} or source.across_taps in channel.columns
-        if shares and name not in stated and not isfinite(channel.full_scale):
-            setting.folder.findings.add(
-                place.whole, "needs the full scale that its per cent are of",
-                f"none for {name}, which hangs on a module",
-                f'write {name} = {{ ..., full_scale = "..." }} in [stream.channels]',
             )  # fmt: skip

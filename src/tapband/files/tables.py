@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import re
-from collections.abc import Callable, Iterator, Sequence
+from collections.abc import Callable, Collection, Iterator, Sequence
 from dataclasses import dataclass
 from pathlib import Path
 
@@ -169,11 +169,13 @@ def read_header(cells: Sequence[str], file: str, place: str, findings: Findings)
     return tuple(column for column in columns if seen[column.name] == column.index)
 
 
-def need(table: Table, name: str, findings: Findings, why: str = "") -> Column | None:
-    """The column of this name; its absence is noted, with the nearest name."""
+def need(
+    table: Table, name: str, findings: Findings, why: str = "", taken: Collection[str] = STANDARD
+) -> Column | None:
+    """The column of this name; its absence is noted, with the nearest name that is not ``taken``."""
     found = table.column(name)
     if found is None:
-        near = nearest(name, [other for other in table.names if other not in STANDARD])
+        near = nearest(name, [other for other in table.names if other not in taken])
         do = f"rename column {near} or add {name}" if near else f"add the column {name}"
         findings.add(
             table.file, f"needs the column {name}" + (f" ({why})" if why else ""), "none of that name", do

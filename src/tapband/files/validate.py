@@ -34,7 +34,8 @@ def check(
     the whole table in a message where its path alone would not help.
     """
     if not isinstance(data, dict):
-        findings.add(f"{file}, {dotted(path)}", "must be a table", shown(data), f"write [{dotted(path)}]")
+        head = f"[[{path[0]}]]" if isinstance(path[-1], int) else f"[{dotted(path)}]"
+        findings.add(f"{file}, {dotted(path)}", "must be a table", shown(data), f"write {head}")
         return Checked(part=None, doubtful=True)
     left = deepcopy(data)
     doubtful = False
@@ -98,7 +99,7 @@ def _rule_broken(
     key = str(loc[-1]) if loc else ""
     if kind == "extra_forbidden":
         return RuleError("unknown key", shown(key), _offer_key(key, _keys(model, loc[:-1])))
-    sample = _example(model, loc)
+    sample = _example(model, loc) or _example(model, loc[:-1])
     if kind == "missing":
         return RuleError(f"needs {key}", "nothing", _offer_missing((*path, *loc), sample))
     do = f"write for example {sample}" if sample else ""
@@ -114,7 +115,9 @@ def _rule_broken(
             return RuleError(
                 f"must be one of {one}", shown(got), f"write {shown(near)}" if near else "choose one"
             )
-        case "string_type" | "string_too_short" | "list_type" if kind != "list_type" or "Text" in text:
+        case "string_too_short":
+            return RuleError("must not be empty", shown(got), do)
+        case "string_type" | "list_type" if kind != "list_type" or "Text" in text:
             return RuleError("must be text in quotes", shown(got), do)
         case "list_type":
             return RuleError("must be a list", shown(got), do)
@@ -197,6 +200,8 @@ def _leave_out(error: ValidationError, data: dict[str, Any]) -> bool:
         loc = _plain(item["loc"])
         if item["type"] == "missing" or not loc:
             return False
+        if loc[0] == "channels":  # a channel of which one key is wrong says too little
+            loc = loc[:2]
         owner: Any = data
         for step in loc[:-1]:
             try:
