@@ -13,6 +13,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from tapband.experiment.chain import Equation, moved_nodes, prandtl_glauert, turn
+from tapband.experiment.rowwise import each_row
 from tapband.experiment.stream import Stream, solve
 
 Array = NDArray[np.float64]
@@ -77,7 +78,7 @@ def jacobian(
     """Derivatives for P points: cp (P, n) zero at dead taps, alpha (P,) [rad], channels and shifts (P,)."""
     live = equation.quadrature.live
     slopes = stream_slopes(equation, channels, shifts)
-    cp_slope = np.where(live, cp @ equation.quadrature.slope.T + equation.quadrature.slope_constant, 0.0)
+    cp_slope = np.where(live, each_row(cp, equation.quadrature.slope.T) + equation.quadrature.slope_constant, 0.0)
     blocks = [_measured(equation, cp, stream.mach)]
     if equation.compressibility != "none":
         scaled = equation.on_coefficients
@@ -147,7 +148,7 @@ class _Body:
 
 
 def _measured(equation: Equation, cp: Array, mach: Array) -> _Body:
-    rows = cp @ equation.tap_weights.T + equation.constant
+    rows = each_row(cp, equation.tap_weights.T) + equation.constant
     one = np.ones((mach.size, 1))
     return _Body(
         value=rows,
@@ -175,17 +176,17 @@ def _scaled(equation: Equation, body: _Body, mach: Array) -> _Body:
 def _moved(equation: Equation, cp: Array, mach: Array) -> _Body:
     """The result of a rule that acts on Cp."""
     rule = equation.quadrature
-    nodes = cp @ rule.nodes_of.T + rule.nodes_constant
+    nodes = each_row(cp, rule.nodes_of.T) + rule.nodes_constant
     after = moved_nodes(equation, nodes, mach)
     by_node = np.imag(moved_nodes(equation, nodes + 1j * STEP, mach + 0j)) / STEP
     by_mach = np.imag(moved_nodes(equation, nodes + 0j, mach + 1j * STEP)) / STEP
     weights = rule.node_weights[0]
-    rows = after @ weights.T
+    rows = each_row(after, weights.T)
     bent = weights[None] * by_node[:, None, :]
     return _Body(
         value=rows,
         by_cp=bent @ rule.nodes_of,
-        by_mach=by_mach @ weights.T,
+        by_mach=each_row(by_mach, weights.T),
         edge_common=bent @ rule.edge_common,
         edge_loading=bent @ rule.edge_loading,
     )

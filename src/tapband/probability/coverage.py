@@ -15,6 +15,8 @@ if TYPE_CHECKING:
     from tapband.probability.montecarlo import MonteCarlo
 
 Array = NDArray[np.float64]
+ROUNDING = 1e-13
+"""Relative rounding of a mean over trials."""
 
 
 def tolerance(u: ArrayLike, digits: int = 2) -> Array:
@@ -39,7 +41,9 @@ def agreement(linearised: Linearised, montecarlo: MonteCarlo) -> NDArray[np.bool
 
     *Source* JCGM 101:2008, 8.1; δ of the uncertainty under test, of the Monte Carlo one where that is zero.
     """
-    delta = tolerance(np.where(linearised.u > 0, linearised.u, np.nan_to_num(montecarlo.u)))
+    u = np.where(linearised.u > 0, linearised.u, np.nan_to_num(montecarlo.u))
+    # Where no error acts, a mean of equal numbers still rounds.
+    delta = tolerance(u) + ROUNDING * np.maximum(np.abs(np.nan_to_num(linearised.estimate)), 1.0)
     low = np.abs(linearised.low - montecarlo.low) > delta + 2.0 * montecarlo.low_sd
     high = np.abs(linearised.high - montecarlo.high) > delta + 2.0 * montecarlo.high_sd
     # A Monte Carlo interval that could not be had confirms nothing.

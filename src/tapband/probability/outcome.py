@@ -8,7 +8,7 @@ from dataclasses import dataclass, fields
 import numpy as np
 from numpy.typing import NDArray
 
-from tapband.probability.coverage import tolerance
+from tapband.probability.coverage import ROUNDING, tolerance
 
 Array = NDArray[np.float64]
 
@@ -84,9 +84,10 @@ def tolerance_met(numbers: Numbers, fallback_u: Array) -> NDArray[np.bool_]:
     moves has met it.
     """
     delta = tolerance(np.where(np.isnan(numbers.u), fallback_u, numbers.u))
+    rounding = ROUNDING * np.maximum(np.abs(np.nan_to_num(numbers.mean)), 1.0)
     met = np.ones(numbers.low.shape, dtype=bool)
     for value, sd in (("mean", "mean_sd"), ("u", "u_sd"), ("low", "low_sd"), ("high", "high_sd")):
         exists = ~np.isnan(getattr(numbers, value))
         spread = getattr(numbers, sd)
-        met &= ~exists | (2.0 * spread < delta) | (spread == 0.0)
+        met &= ~exists | (2.0 * spread < delta) | (spread <= rounding)
     return met

@@ -11,6 +11,7 @@ from numpy.typing import NDArray
 from tapband.experiment.chain import MEASURED, REFERENCE, Equation, Inputs, evaluate
 from tapband.experiment.contour import Contour
 from tapband.experiment.jacobian import jacobian
+from tapband.experiment.rowwise import each_row
 from tapband.experiment.rule import concerns, refused
 from tapband.experiment.stream import Stream, solve
 from tapband.nouns.campaign import Campaign, Points
@@ -130,21 +131,22 @@ def _rows(stream: Stream, rows: NDArray[np.int64]) -> Stream:
 def _estimate(
     equation: Equation, points: Points, corrected: Corrected, nominal: Nominal, rows: NDArray[np.int64]
 ) -> Array:
+    one = (rows, None)  # a second axis of one trial: rows are then computed one by one
     inputs = Inputs(
-        reading=np.where(nominal.live[rows], points.readings[rows], 0.0),
-        alpha=points.alpha[rows],
-        channels={k: v[rows] for k, v in points.channels.items()},
-        extra=corrected.extra[rows],
+        reading=np.where(nominal.live, points.readings, 0.0)[one],
+        alpha=points.alpha[one],
+        channels={k: v[one] for k, v in points.channels.items()},
+        extra=corrected.extra[one],
         mach_shift=_of(corrected.shifts, "mach_shift", rows),
         q_shift=_of(corrected.shifts, "q_shift", rows),
-        added=corrected.added[rows],
+        added=corrected.added[one],
     )
     with np.errstate(invalid="ignore", divide="ignore"):
-        return np.asarray(evaluate(equation, inputs))
+        return np.asarray(evaluate(equation, inputs)[:, 0])
 
 
 def _of(values: Mapping[str, Array], name: str, rows: NDArray[np.int64]) -> Array | None:
-    return values[name][rows] if name in values else None
+    return values[name][rows, None] if name in values else None
 
 
 def _rule_holds(
@@ -158,7 +160,7 @@ def _rule_holds(
     said = []
     for one in sets:
         q = one.equation.quadrature
-        nodes = cp[one.points] @ q.nodes_of.T + q.nodes_constant
+        nodes = each_row(cp[one.points], q.nodes_of.T) + q.nodes_constant
         for point, values in zip(one.points.tolist(), nodes, strict=True):
             m = float(mach[point])
             for name in dict.fromkeys((rule, "karman-tsien")):

@@ -47,19 +47,21 @@ def _evaluate(one: LiveSet, block: Rows, rows: NDArray[np.int64], corrected: Cor
     moved = corrected.points
     live = one.equation.quadrature.live
     reading = block.readings[rows] + (moved.readings - raw.readings)[point]
+    shift = {name: value[point, None] for name, value in corrected.shifts.items()}
     inputs = Inputs(
-        reading=np.where(live, reading, 0.0),
-        alpha=block.alpha[rows] + (moved.alpha - raw.alpha)[point],
+        reading=np.where(live, reading, 0.0)[:, None],
+        alpha=(block.alpha[rows] + (moved.alpha - raw.alpha)[point])[:, None],
         channels={
-            k: v[rows] + (moved.channels[k] - raw.channels[k])[point] for k, v in block.channels.items()
+            k: (v[rows] + (moved.channels[k] - raw.channels[k])[point])[:, None]
+            for k, v in block.channels.items()
         },
-        extra=corrected.extra[point],
-        mach_shift=corrected.shifts["mach_shift"][point] if "mach_shift" in corrected.shifts else None,
-        q_shift=corrected.shifts["q_shift"][point] if "q_shift" in corrected.shifts else None,
-        added=corrected.added[point],
+        extra=corrected.extra[point, None],
+        mach_shift=shift.get("mach_shift"),
+        q_shift=shift.get("q_shift"),
+        added=corrected.added[point, None],
     )
     with np.errstate(invalid="ignore", divide="ignore"):
-        return np.asarray(evaluate(one.equation, inputs))
+        return np.asarray(evaluate(one.equation, inputs)[:, 0])
 
 
 def sample_scatter(
