@@ -3,7 +3,7 @@
 // Sources are independent, so variances add: u² = Σ (f c)², with f the factor of a source and c its contribution
 // at its declared size. Degrees of freedom by Welch-Satterthwaite (JCGM 100, G.4): ν = u⁴ / Σ (f c)⁴/ν.
 
-const TYPES = { f8: Float64Array, f4: Float32Array, u1: Uint8Array };
+const TYPES = { f8: Float64Array, f4: Float32Array, u1: Uint8Array, i2: Int16Array };
 
 function unpack(part) {
   const text = atob(part.b), bytes = new Uint8Array(text.length);

@@ -39,11 +39,16 @@ function scale(low, high, from, to, count, zero = false) {
   if (!Number.isFinite(a) || !Number.isFinite(b)) [a, b] = [0, 1];
   if (zero) [a, b] = [0, b > 0 ? b : 1];
   if (a === b) [a, b] = [a - (Math.abs(a) || 1) * 0.5, b + (Math.abs(b) || 1) * 0.5];
-  const widen = 0.045 * (b - a), step = niceStep(b - a, count);
+  const widen = 0.045 * (b - a);
   b += widen;
   if (!zero) a -= widen;
   const map = (v) => from + (v - a) / (b - a) * (to - from);
-  const first = Math.ceil(a / step - 1e-9), last = Math.floor(b / step + 1e-9);
+  let step, first, last, wanted = count;
+  do {  // at least two labels, or nobody can read the axis
+    step = niceStep(b - a, wanted++);
+    first = Math.ceil(a / step - 1e-9);
+    last = Math.floor(b / step + 1e-9);
+  } while (last === first && wanted < 20);
   const ticks = Array.from({ length: last - first + 1 }, (_, i) => (first + i) * step);
   const places = Math.max(0, -Math.floor(Math.log10(step) + 1e-9));
   return Object.assign(map, { ticks, label: (v) => fixed(v, places) });

@@ -127,7 +127,7 @@ function start() {
     if (window.innerWidth === width) return;
     width = window.innerWidth;
     widths.clear();
-    showPolars(); showDrivers(); showCp(state.point);
+    showPolars(); showDrivers(); showCp(state.point); showRanks(state.point);
   });
   showAll();
 }

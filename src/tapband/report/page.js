@@ -122,8 +122,10 @@ function showPoint() {
   ].flatMap(([name, value]) => [html("dt", {}, name), html("dd", {}, value)]));
   replace($("stated"), ...points.stated[p].map((line) => html("li", {}, line)));
   showIntervals(p);
+  showMore(p);
   showCp(p);
   showBudget(p);
+  showRanks(p);
   showCorrelation(p);
   if ($("taps-table").closest("details").open) showTaps(p);
 }
@@ -138,9 +140,21 @@ function showIntervals(p) {
     const doubted = budget.unconfirmed[j].has(p), verdict = !Number.isFinite(c.est[p]) ? MISSING : doubted ? "no" : "yes";
     return html("tr", { "data-c": c.name, "data-headline": doubted && !budget.changed ? "trials" : "linear" },
       html("th", { scope: "row" }, c.name), number(c.est[p]), number(u, decimals(u)),
-      html("td", { class: "n" }, Number.isFinite(nu) ? nu.toFixed(nu < 100 ? 1 : 0) : Number.isFinite(c.est[p]) ? "∞" : MISSING),
+      html("td", { class: "n" }, Number.isFinite(c.est[p]) ? freedom(nu) : MISSING),
       html("td", { class: "n" }, fixed(k, 3)), number(0.5 * (linear.high - linear.low)), pair(linear.low, linear.high), pair(c.mcLow[p], c.mcHigh[p]),
       html("td", { class: doubted ? "bad" : "" }, verdict), html("td", { class: "sketch" }, intervalSketch(c, p, linear)));
+  }));
+}
+
+// Degrees of freedom; past a thousand the factor is that of infinitely many.
+function freedom(nu) { return !Number.isFinite(nu) ? "∞" : nu > 1000 ? "> 1000" : nu.toFixed(nu < 100 ? 1 : 0); }
+
+// What else is known of each interval: its parts, the trials' own mean and width, the shortest interval.
+function showMore(p) {
+  replace($("more-rows"), ...data.coefficients.map((c) => {
+    const d = decimals(c.U[p]), number = (value, places) => html("td", { class: "n" }, fixed(value, places));
+    return html("tr", {}, html("th", { scope: "row" }, c.name), number(c.b[p], decimals(c.b[p])), number(c.s[p], decimals(c.s[p])),
+      number(c.mc[p], d), number(c.mcU[p], decimals(c.mcU[p])), html("td", { class: "n" }, `${fixed(c.shortLow[p], d)} … ${fixed(c.shortHigh[p], d)}`));
   }));
 }
 
@@ -156,20 +170,20 @@ function showBudget(p) {
   replace($("budget-rows"), ...order.map((s) => {
     const source = data.sources[s], f = budget.factor[s], size = f * data.size[p * n + s], part = budget.contribution(p, j, s), nu = data.dof[p * n + s];
     return html("tr", { class: f === 1 ? "" : "changed" }, html("th", { scope: "row" }, sourceName(source)), html("td", {}, html("bdi", {}, source.group === source.name ? "" : source.group)),
-      html("td", { class: "n" }, Number.isFinite(size) ? `${significant(size)} ${source.unit === "1" ? "" : source.unit}`.trim() : "by tap"),
+      html("td", { class: "n" }, Number.isFinite(size) ? `${significant(size)} ${source.unit === "1" ? "" : source.unit}`.trim() : "varies"),
       html("td", { class: "n" }, source.single && size > 0 ? significant(part / size) : MISSING),
       html("td", { class: "n" }, html("data", { value: String(part) }, significant(part))),
       html("td", { class: "bar" }, bar(budget.share(p, j, s))), html("td", { class: "n" }, percent(budget.share(p, j, s))),
-      html("td", { class: "n" }, Number.isFinite(nu) ? significant(nu, 3) : "∞"));
+      html("td", { class: "n" }, freedom(nu)));
   }));
 }
 
 function showCorrelation(p) {
   const table = $("correlation");
   if (!table || !data.correlation) return;
-  const m = budget.outputs, names = data.coefficients.map((c) => c.name).filter((name) => !/_(ref|stated)$/.test(name));
-  const rows = names.map((a) => html("tr", {}, html("th", { scope: "row" }, a), ...names.map((b) => {
-    const r = data.correlation[(p * m + index.get(a)) * m + index.get(b)], cell = html("td", { class: "n" }, Number.isFinite(r) ? fixed(r, 3) : MISSING);
+  const { names } = data.correlation, m = names.length;
+  const rows = names.map((a, i) => html("tr", {}, html("th", { scope: "row" }, a), ...names.map((_, k) => {
+    const r = data.correlation.r[(p * m + i) * m + k], cell = html("td", { class: "n" }, Number.isFinite(r) ? fixed(r, 3) : MISSING);
     cell.style.setProperty("--r", Math.abs(r) || 0);
     return cell;
   })));
@@ -193,7 +207,7 @@ function choosePoint(p) { state.point = p; showPolars(); showPoint(); remember()
 function chooseCoefficient(j) {
   state.of = j;
   for (const node of document.querySelectorAll("select.of")) node.value = String(j);
-  showDrivers(); showBudget(state.point); showSliderShares(); remember();
+  showDrivers(); showBudget(state.point); showRanks(state.point); showSliderShares(); remember();
 }
 function chooseSet(i) {
   state.set = i;

@@ -6,17 +6,17 @@ P points, m coefficients, S sources, n taps.
 
 from __future__ import annotations
 
-import json
-from base64 import b64encode
-from collections.abc import Iterable, Mapping, Sequence
+from collections.abc import Mapping, Sequence
 from statistics import NormalDist
 from typing import TYPE_CHECKING
 
 import numpy as np
 from numpy.typing import NDArray
 
-from tapband.files.write_json import plain
+from tapband.files.write_columns import COEFFICIENTS
 from tapband.report.headline import coefficients_of, keys, verdicts
+from tapband.report.packing import codes, packed
+from tapband.report.page_rank import group_indices, tap_shares, wirings
 from tapband.report.source_text import templates
 
 if TYPE_CHECKING:
@@ -39,18 +39,6 @@ SHOWN_COLUMNS = {
 }  # fmt: skip
 
 
-def packed(values: object, kind: str = "<f8") -> dict[str, str]:
-    """An array as the page unpacks it: its type and its bytes."""
-    array = np.ascontiguousarray(values, dtype=np.dtype(kind))
-    return {"t": kind[1:], "b": b64encode(array.tobytes()).decode("ascii")}
-
-
-def embedded(data: Mapping[str, object]) -> str:
-    """The object as JSON that is safe inside a script element: no character there can end it."""
-    text = json.dumps(plain(data), ensure_ascii=True, allow_nan=False, separators=(",", ":"))
-    return text.replace("<", "\\u003c").replace(">", "\\u003e").replace("&", "\\u0026")
-
-
 def page_data(results: Outcome, campaign: Campaign) -> dict[str, object]:
     """Everything the page draws and recomputes."""
     frame = results.tables["coefficients"]
@@ -70,6 +58,9 @@ def page_data(results: Outcome, campaign: Campaign) -> dict[str, object]:
         "taps": _taps(results, keys(frame), campaign),
         "correlation": _correlation(results.tables.get("correlation"), keys(frame), names),
         "outline": _outline(campaign),
+        "tapShares": tap_shares(results.tables.get("tap_ranking"), keys(frame), campaign.taps.names),
+        "wirings": wirings(results.tables.get("wiring_comparison"), keys(frame)),
+        "groups": group_indices(results.tables.get("ranking"), keys(frame)),
         "file": campaign.name,
     }  # fmt: skip
 
@@ -139,12 +130,6 @@ def _budget(
     }
 
 
-def codes(values: Iterable[object], known: Sequence[str]) -> NDArray[np.int64]:
-    """Index of each value in ``known``."""
-    place: dict[object, int] = {name: i for i, name in enumerate(known)}
-    return np.fromiter((place[value] for value in values), dtype=np.int64)
-
-
 def _taps(results: Outcome, labels: Sequence[str], campaign: Campaign) -> dict[str, object]:
     """Cp with its band (P, n), flags by "point,tap", and how much of each band a source makes (P, n, S)."""
     frame, taps = results.tables["cp"], campaign.taps
@@ -180,14 +165,18 @@ def _tap_parts(results: Outcome) -> dict[str, str] | None:
 
 def _correlation(
     frame: pd.DataFrame | None, labels: Sequence[str], names: Sequence[str]
-) -> dict[str, str] | None:
-    """(P, m, m), symmetric, ones on the diagonal."""
+) -> dict[str, object] | None:
+    """Of the coefficients as measured (P, c, c), symmetric, ones on the diagonal."""
     if frame is None or frame.empty:
         return None
-    p, a, b = codes(keys(frame), labels), codes(frame["a"], names), codes(frame["b"], names)
-    out = np.broadcast_to(np.eye(len(names)), (len(labels), len(names), len(names))).copy()
-    out[p, a, b] = out[p, b, a] = np.asarray(frame["correlation"], dtype=float)
-    return packed(out, "<f4")
+    known = [name for name in COEFFICIENTS if name in names]
+    rows = frame.loc[
+        np.asarray(frame["a"].astype(object).isin(known) & frame["b"].astype(object).isin(known))
+    ]
+    p, a, b = codes(keys(rows), labels), codes(rows["a"], known), codes(rows["b"], known)
+    out = np.broadcast_to(np.eye(len(known)), (len(labels), len(known), len(known))).copy()
+    out[p, a, b] = out[p, b, a] = np.asarray(rows["correlation"], dtype=float)
+    return {"names": known, "r": packed(out, "<f4")}
 
 
 def _outline(campaign: Campaign) -> dict[str, object]:

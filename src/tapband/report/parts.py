@@ -1,13 +1,16 @@
-"""Sections of the report that exist only where their tables do: questions between points, and planning."""
+"""Sections of the report that exist only where their tables do: questions between points, and planning.
+
+What each table shows is a list of columns; every further column stays in its file.
+"""
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
-from tapband.files.write_columns import cells, ordered, units_of
-from tapband.report.rounding import significant
+from tapband.files.write_columns import cells
+from tapband.report.rounding import MISSING, decimals, fixed, significant
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -17,23 +20,27 @@ if TYPE_CHECKING:
 MOST_ROWS = 400
 """Rows shown of one table; the file has all."""
 
+Row = Mapping[str, "Cell"]
+Write = Callable[[Row], str]
+
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Column:
-    """A column's heading."""
+    """A column: its heading, what it needs, how a row writes it, and whether it is a number."""
 
-    name: str
-    unit: str
-    number: bool
+    head: str
+    needs: tuple[str, ...]
+    write: Write
+    number: bool = True
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Table:
-    """A table ready to print."""
+    """A table ready to print: headings (text, is a number), rows, and what was left out."""
 
     title: str
     note: str
-    columns: tuple[Column, ...]
+    heads: tuple[tuple[str, bool], ...]
     rows: tuple[tuple[str, ...], ...]
     left: str
 
@@ -47,81 +54,102 @@ class Part:
     tables: tuple[Table, ...]
 
 
-SECTIONS: Mapping[str, tuple[str, tuple[str, ...]]] = {
-    "decisions": ("Decisions", ("decisions",)),
-    "between": ("Between points", ("differences", "fits", "repeats", "regions")),
-    "rankings": ("Rankings", ("ranking",)),
-    "planning": (
-        "Before the test",
-        ("ranges", "allowances", "selection", "frontier", "wiring", "layout"),
-    ),
-}
-TITLES: Mapping[str, tuple[str, str]] = {
-    "decisions": (
-        "Limits on the measured value",
-        "Probability that the value lies within its limits, and the answer by the guard band (JCGM 106).",
-    ),
-    "differences": (
-        "Differences",
-        "What the two sides share cancels; u_if_independent is what it would be if nothing did.",
-    ),
-    "fits": (
-        "Polar fits",
-        "Weighted by the random part alone, so that shared errors do not bias a slope; covariance in full.",
-    ),
-    "repeats": (
-        "Repeats",
-        "Scatter of repeated points against the sources that change between them, and no others.",
-    ),
-    "regions": ("Joint regions", "Ellipses that hold two coefficients together (JCGM 102)."),
-    "ranking": (
-        "Groups of sources",
-        "Linear shares beside Sobol' indices; where they differ, products or curvature are at work.",
-    ),
-    "ranges": ("Ranges", "What each tap will see, with the margin asked for, against its full scale."),
-    "allowances": (
-        "Allowances",
-        "The largest standard uncertainty of a source, all others as declared, that meets every target.",
-    ),
-    "selection": ("Selection", "The cheapest set of options that meets every target at every point."),
-    "frontier": ("Cost against interval", "Every set that no cheaper one beats."),
-    "wiring": ("Wiring", "The assignment of taps to modules with the smallest widest interval."),
-    "layout": ("Tap layout", "Positions found for the number of taps asked for."),
-}
+def _number(cell: Cell) -> float:
+    return float(cell) if isinstance(cell, int | float) else float("nan")
 
 
-def parts_of(tables: Mapping[str, pd.DataFrame]) -> tuple[Part, ...]:
-    """The sections whose tables exist and have rows."""
-    found = []
-    for id_, (title, names) in SECTIONS.items():
-        shown = tuple(_table(name, tables[name]) for name in names if name in tables and len(tables[name]))
-        if shown:
-            found.append(Part(id=id_, title=title, tables=shown))
-    return tuple(found)
-
-
-def _table(name: str, frame: pd.DataFrame) -> Table:
-    table = ordered(name, frame)
-    units = units_of(name, table)
-    numbers = {str(c): table[c].dtype.kind in "fiu" for c in table.columns}
-    head = tuple(
-        Column(name=c, unit=units[c] if units[c] not in ("", "1", "by row") else "", number=numbers[c])
-        for c in numbers
-    )
-    columns = [[_shown(v) for v in cells(table[c].iloc[:MOST_ROWS])] for c in table.columns]
-    left = len(table) - MOST_ROWS
-    title, note = TITLES[name]
-    return Table(
-        title=title, note=note, columns=head, rows=tuple(zip(*columns, strict=True)),
-        left=f"{left} more rows in {name}.csv" if left > 0 else "",
+def text(column: str, head: str = "") -> Column:
+    """The cell as it stands."""
+    return Column(
+        head=head or column.replace("_", " "), needs=(column,), number=False,
+        write=lambda row: "" if row[column] is None else str(row[column]),
     )  # fmt: skip
 
 
-def _shown(cell: Cell) -> str:
-    if cell is None:
-        return ""
-    if isinstance(cell, bool):
-        return "yes" if cell else "no"
-    if isinstance(cell, int):
-        return str(cell)
-    return significant(cell, 4) if isinstance(cell, float) else cell
+def number(column: str, head: str = "", digits: int = 3) -> Column:
+    """The cell to so many significant digits."""
+    return Column(
+        head=head or column.replace("_", " "), needs=(column,),
+        write=lambda row: str(row[column]) if isinstance(row[column], int | str)
+        else significant(_number(row[column]), digits),
+    )  # fmt: skip
+
+
+def angle(column: str, head: str) -> Column:
+    """An angle to hundredths of a degree."""
+    return Column(head=head, needs=(column,), write=lambda row: fixed(_number(row[column]), 2))
+
+
+def percent(column: str, head: str) -> Column:
+    """A fraction as per cent."""
+    return Column(head=head, needs=(column,), write=lambda row: _percent(_number(row[column])))
+
+
+def _percent(value: float) -> str:
+    return MISSING if value != value else f"{100 * value:.1f} %"
+
+
+def interval(value: str, half: str = "U", head: str = "") -> Column:
+    """Value ± half-width; where ``agrees`` says no, value and the ends by Monte Carlo."""
+
+    def write(row: Row) -> str:
+        v, u = _number(row[value]), _number(row[half])
+        if row.get("agrees") == "no" and row.get("mc_low") is not None:
+            low, high = _number(row["mc_low"]), _number(row["mc_high"])
+            d = decimals(0.5 * (high - low))
+            return f"{fixed(v, d)} ({fixed(low, d)} … {fixed(high, d)})*"
+        d = decimals(u)
+        return f"{fixed(v, d)} ± {fixed(u, d)}" if u == u else fixed(v, 4)
+
+    return Column(head=head or value, needs=(value, half), write=write)
+
+
+def between(low: str, high: str, head: str) -> Column:
+    """Two ends."""
+    return Column(
+        head=head, needs=(low, high),
+        write=lambda row: f"{significant(_number(row[low]))} … {significant(_number(row[high]))}",
+    )  # fmt: skip
+
+
+def with_unit(column: str, head: str) -> Column:
+    """A number and the unit of its row."""
+
+    def write(row: Row) -> str:
+        unit = row.get("unit")
+        value = row[column] if isinstance(row[column], str) else significant(_number(row[column]))
+        return f"{value} {unit}" if isinstance(unit, str) and unit != "1" and value != MISSING else str(value)
+
+    return Column(head=head, needs=(column,), write=write)
+
+
+def parts_of(
+    tables: Mapping[str, pd.DataFrame], layout: Mapping[str, tuple[str, tuple[str, ...]]],
+    shown: Mapping[str, tuple[str, str, Sequence[Column]]],
+) -> tuple[Part, ...]:  # fmt: skip
+    """The sections of ``layout`` whose tables exist and have rows, each table as ``shown`` says."""
+    found = []
+    for id_, (title, names) in layout.items():
+        here = tuple(
+            table_of(name, tables[name], *shown[name]) for name in names if len(tables.get(name, ()))
+        )
+        if here:
+            found.append(Part(id=id_, title=title, tables=here))
+    return tuple(found)
+
+
+def table_of(name: str, frame: pd.DataFrame, title: str, note: str, columns: Sequence[Column] = ()) -> Table:
+    """The table with the columns it has of those wanted; without any, all of its columns as text."""
+    flat = frame.reset_index() if any(level is not None for level in frame.index.names) else frame
+    wanted = [c for c in columns if all(n in flat.columns for n in c.needs)]
+    if not wanted:
+        wanted = [(number if flat[c].dtype.kind in "fiu" else text)(str(c)) for c in flat.columns]
+    raw = {str(c): cells(flat[c].iloc[:MOST_ROWS]) for c in flat.columns}
+    names = list(raw)
+    rows = [dict(zip(names, values, strict=True)) for values in zip(*raw.values(), strict=True)]
+    left = len(flat) - MOST_ROWS
+    return Table(
+        title=title, note=note, heads=tuple((c.head, c.number) for c in wanted),
+        rows=tuple(tuple(c.write(row) for c in wanted) for row in rows),
+        left=f"{left} more rows in {name}.csv" if left > 0 else "",
+    )  # fmt: skip

@@ -14,15 +14,32 @@ from markupsafe import Markup
 from tapband.files.write_text import one_line
 from tapband.report import summary
 from tapband.report.headline import coefficients_of
-from tapband.report.page_data import embedded, page_data
+from tapband.report.packing import embedded
+from tapband.report.page_data import page_data
 from tapband.report.parts import parts_of
+from tapband.report.parts_shown import LAYOUT, SHOWN
 from tapband.report.sketch import polar_sketch
 
 if TYPE_CHECKING:
     from tapband.nouns.campaign import Campaign
     from tapband.report.publish import Outcome
 
-SCRIPTS = ("quantile.js", "budget.js", "rounding.js", "draw.js", "figures.js", "page.js", "live.js")
+SCRIPTS = (
+    "quantile.js",
+    "budget.js",
+    "rounding.js",
+    "draw.js",
+    "figures.js",
+    "ranks.js",
+    "page.js",
+    "live.js",
+)
+WIRING_MARKS = (
+    ("independent", "s0", "M4 6a4 4 0 1 0 8 0a4 4 0 1 0 -8 0"),
+    ("common", "s1", "M4 2h8v8h-8z"),
+    ("by module, as wired", "s2", "M8 1.2l4.6 8h-9.2z"),
+    ("interleaved", "s3", "M8 .6l5.4 5.4l-5.4 5.4l-5.4 -5.4z"),
+)
 WALLS = (
     "No value is corrected for the walls of the tunnel, and cd_pressure is not the total drag: "
     "taps do not see friction."
@@ -74,7 +91,11 @@ def _words(results: Outcome, campaign: Campaign) -> dict[str, object]:
         "point_tables": summary.point_tables(frame),
         "tap_parts": results.reduced is not None,
         "correlation": len(results.tables.get("correlation", ())) > 0,
-        "parts": parts_of(results.tables),
+        "tap_shares": len(results.tables.get("tap_ranking", ())) > 0,
+        "wirings": len(results.tables.get("wiring_comparison", ())) > 0,
+        "groups": len(results.tables.get("ranking", ())) > 0,
+        "wiring_marks": WIRING_MARKS,
+        "parts": parts_of(results.tables, LAYOUT, SHOWN),
         "facts": summary.facts(meta, campaign),
         "corrections": _lines(meta.get("corrections")),
         "cautions": _lines(meta.get("cautions")) or [WALLS],
