@@ -45,7 +45,10 @@ def place_taps(
         return None
     s = _on_contour(table, block, way, at, upper, contour, findings)
     _check_agreement(table, block, way, at, upper if surface else None, s, findings)
-    return s, (upper if way == "x" else s > 0.0)
+    if way != "x":
+        upper = s > 0.0
+    upper.setflags(write=False)
+    return s, upper
 
 
 def _check_given(table: Table, block: Block, at: dict[str, Array], findings: Findings) -> None:
