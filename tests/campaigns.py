@@ -6,9 +6,9 @@ from collections.abc import Mapping, Sequence
 from math import inf
 
 import numpy as np
-from exact_sections import KarmanTrefftz, TapPlaces, section_of
 from numpy.typing import NDArray
 
+from exact_sections import KarmanTrefftz, TapPlaces, section_of
 from tapband.experiment.contour import Contour
 from tapband.experiment.stream import solve
 from tapband.nouns.campaign import Campaign, Channel, Intervals, Points, Reduction, Section, Taps

@@ -7,10 +7,10 @@ from dataclasses import replace
 from itertools import product
 
 import numpy as np
-from campaigns import TWELVE, campaign, size, source
-from exact_sections import KarmanTrefftz, TapPlaces, section_of
 from numpy.typing import NDArray
 
+from campaigns import TWELVE, campaign, size, source
+from exact_sections import KarmanTrefftz, TapPlaces, section_of
 from tapband.nouns.campaign import Campaign
 from tapband.nouns.source import INDEPENDENT, Scale, Shape
 from tapband.probability.linearised import propagate
@@ -23,7 +23,9 @@ PORT, MODULE, GAIN, PLACE, ANGLE, STATIC = 4.0, 6.0, 0.001, 2e-4, 0.02, 8.0
 """Sizes as declared and as drawn: Pa, Pa (half-width), 1 (half-width), chords, degrees, Pa."""
 
 
-def declared_errors(*, tests: int, taps: int, rearmost: float, automatic: bool, seed: int) -> dict[str, float]:
+def declared_errors(
+    *, tests: int, taps: int, rearmost: float, automatic: bool, seed: int
+) -> dict[str, float]:
     """Share of tests whose 95 % interval holds the exact coefficient, by coefficient.
 
     Every test is a run of its own, so that its shared errors are drawn afresh. Without the automatic terms

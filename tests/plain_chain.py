@@ -8,6 +8,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
+from itertools import pairwise
 from typing import Any
 
 import numpy as np
@@ -35,7 +36,7 @@ def plain(contour: Contour, s: Sequence[float], live: Sequence[bool]) -> Plain:
     breaks = sorted({*nodes, *contour.knots.tolist()})
     gauss, gauss_weight = np.polynomial.legendre.leggauss(12)
     at, w = [], []
-    for low, high in zip(breaks[:-1], breaks[1:], strict=True):
+    for low, high in pairwise(breaks):
         for g, gw in zip(gauss, gauss_weight, strict=True):
             at.append(0.5 * (low + high) + 0.5 * (high - low) * g)
             w.append(0.5 * (high - low) * gw)
@@ -45,7 +46,9 @@ def plain(contour: Contour, s: Sequence[float], live: Sequence[bool]) -> Plain:
     for k in range(len(nodes)):
         spline = CubicSpline(nodes, np.eye(len(nodes))[k])
         value = spline(at_)
-        by_node.append([-np.sum(w_ * value * dx), np.sum(w_ * value * dy), np.sum(w_ * value * (x * dx + y * dy))])
+        by_node.append(
+            [-np.sum(w_ * value * dx), np.sum(w_ * value * dy), np.sum(w_ * value * (x * dx + y * dy))]
+        )
         slopes.append([spline(s[i], 1) for i in order])
         bends.append([spline(s[i], 2) for i in order])
 

@@ -7,11 +7,13 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING
 
+from tapband.nouns.version import VERSION
+
 if TYPE_CHECKING:
     from tapband.face import Campaign, Plan, Results, forecast, load, reduce, size
     from tapband.nouns.errors import TapbandError
 
-__version__ = "0.1.0"
+__version__ = VERSION
 __all__ = ["Campaign", "Plan", "Results", "TapbandError", "forecast", "load", "reduce", "size"]
 
 

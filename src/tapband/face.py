@@ -17,11 +17,12 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from numpy.typing import NDArray
 
-from tapband import __version__
 from tapband.files.load import load
 from tapband.nouns.campaign import Campaign
 from tapband.nouns.errors import QuestionError
-from tapband.questions.latents import Latents, from_arrays, latents_at, latents_of, to_arrays
+from tapband.nouns.version import VERSION
+from tapband.questions.latents import Latents, from_arrays, latents_of, to_arrays
+from tapband.questions.stated import full_latents
 from tapband.questions.statement import statements
 from tapband.reduction import Reduced, assemble, reduce_campaign
 from tapband.reduction.undeclared import NO_WALL_CORRECTION, NOT_TOTAL_DRAG, undeclared
@@ -131,7 +132,7 @@ class Results:
     @cached_property
     def latents(self) -> Latents:
         """What correlates points."""
-        return latents_of(self.reduced) if self.reduced is not None else from_arrays(self.arrays)
+        return from_arrays(self.arrays) if self.reduced is None else full_latents(self.reduced.assembled)
 
     def covariance(self, a: str, b: str) -> pd.DataFrame:
         """Covariance of the coefficients of point ``a`` (rows) with those of ``b`` (columns), linearised."""
@@ -151,12 +152,15 @@ class Results:
         """
         from tapband.files.answers import Setting, compared
 
-        setting = Setting(
-            level=float(self.meta.get("level", 0.95)),
-            seed=int(self.meta.get("seed", 1)),
-            same_angle=np.radians(float(self.meta.get("same_angle", 0.1))),
-            assembled=self.reduced.assembled if self.reduced is not None else None,
-        )
+        if self.reduced is not None:
+            setting = Setting.of(self.reduced.assembled)
+        else:
+            setting = Setting(
+                level=float(self.meta.get("level", 0.95)),
+                seed=int(self.meta.get("seed", 1)),
+                same_angle=float(np.radians(self.meta.get("same_angle", 0.1))),
+                problem=None,
+            )
         return compared(self.latents, setting, a, b, within)
 
     @cached_property
@@ -263,9 +267,9 @@ def _results(reduced: Reduced, kind: str) -> Results:
     from tapband.files.frames_plan import outcome_frames
     from tapband.files.frames_rank import rank_tables
 
-    latents = latents_of(reduced)
-    answers = between(reduced, latents)
-    tables = frames(reduced) | rank_tables(reduced) | answers.tables
+    tables = frames(reduced)
+    answers = between(reduced, tables)
+    tables = tables | rank_tables(reduced) | answers.tables
     planning, said, unmet = outcome_frames(reduced, forecast=kind == "forecast")
     if kind == "forecast":
         tables["cp"]["flag"] = [f"forecast; {flag}" if flag else kind for flag in tables["cp"]["flag"]]
@@ -276,7 +280,7 @@ def _results(reduced: Reduced, kind: str) -> Results:
     return Results(
         tables={**tables, **planning},
         meta={**meta, "kind": kind, "warnings": warnings, "targets": targets, "exit_status": status},
-        arrays=to_arrays(latents),
+        arrays=to_arrays(answers.latents),
         campaign=reduced.campaign,
         reduced=reduced,
     )
@@ -332,14 +336,8 @@ def compare(
     intervals = replace(stated, seed=stated.seed if seed is None else seed)
     campaign = replace(campaign, intervals=intervals)
     assembled = assemble(campaign)
-    latents = latents_at(assembled)
-    setting = Setting(
-        level=intervals.level,
-        seed=intervals.seed,
-        same_angle=campaign.plan.polar.same_angle,
-        assembled=assembled,
-    )
-    table = compared(latents, setting, a, b, within)
+    latents = full_latents(assembled)
+    table = compared(latents, Setting.of(assembled), a, b, within)
     warnings = [*campaign.warnings, *assembled.warnings, *table.attrs["notes"]]
     return Results(
         tables={"differences": table},
@@ -379,7 +377,7 @@ def _head(campaign: Campaign) -> dict[str, Any]:
         "seed": campaign.intervals.seed,
         "trials": campaign.intervals.trials,
         "versions": {
-            "tapband": __version__,
+            "tapband": VERSION,
             "python": sys.version.split()[0],
             **{n: version(n) for n in names},
         },

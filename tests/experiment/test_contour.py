@@ -3,8 +3,8 @@
 from __future__ import annotations
 
 import numpy as np
-from exact_sections import section
 
+from exact_sections import section
 from tapband.experiment.contour import Contour
 
 CIRCLE = np.linspace(0.0, 2.0 * np.pi, 201)

@@ -4,9 +4,9 @@ from __future__ import annotations
 
 import numpy as np
 import pytest
-from exact_sections import section
 from numpy.typing import NDArray
 
+from exact_sections import section
 from tapband.experiment.contour import Contour
 from tapband.experiment.quadrature import Quadrature, quadrature
 
@@ -40,7 +40,9 @@ def _forces(weights: Quadrature, cp: Array, alpha: float) -> dict[str, float]:
 
 
 @pytest.mark.parametrize("row", TABLE)
-def test_101_taps_to_the_edge_hold_the_closed_form(row: tuple[complex, float, float, float, float, float, float]):
+def test_101_taps_to_the_edge_hold_the_closed_form(
+    row: tuple[complex, float, float, float, float, float, float],
+):
     weights, cp, alpha = _setup(row, 101, "contour-cubic")
     found = _forces(weights, cp, alpha)
     cl, cm, cn, ct = row[3:]
@@ -51,7 +53,9 @@ def test_101_taps_to_the_edge_hold_the_closed_form(row: tuple[complex, float, fl
     assert found["cd"] == pytest.approx(0.0, abs=1e-4)
 
 
-@pytest.mark.parametrize(("rule", "least"), [("contour-cubic", 3.0), ("contour-linear", 1.8), ("polygon", 1.8)])
+@pytest.mark.parametrize(
+    ("rule", "least"), [("contour-cubic", 3.0), ("contour-linear", 1.8), ("polygon", 1.8)]
+)
 def test_order_of_convergence(rule: str, least: float) -> None:
     """The cubic converges at order three or better, straight lines at order two, in cl of a cambered section."""
     row = TABLE[2]
@@ -70,7 +74,9 @@ def test_the_cubic_beats_straight_lines_at_thirty_taps() -> None:
 @pytest.mark.parametrize("rule", RULES)
 @pytest.mark.parametrize("closure", ["rear taps", "extrapolate"])
 @pytest.mark.parametrize("full_arm", [True, False])
-def test_uniform_offset_leaves_closed_contour_forces_unchanged(rule: str, closure: str, full_arm: bool) -> None:
+def test_uniform_offset_leaves_closed_contour_forces_unchanged(
+    rule: str, closure: str, full_arm: bool
+) -> None:
     exact = section(-0.1 + 0.1j, 1.9)
     for contour in (Contour.of(*exact.contour(401)), _blunt()):
         taps = np.linspace(0.9 * contour.s_lower, 0.93 * contour.s_upper, 31)

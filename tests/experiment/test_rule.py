@@ -36,7 +36,9 @@ def test_critical_mach_number_by_each_rule() -> None:
     """Recomputed independently for Cp₀ = −0.43."""
     for rule, expected in zip(RULES, (0.7371, 0.7229, 0.7000), strict=True):
         found = brentq(
-            lambda m, rule=rule: float(to_mach(np.array(-0.43), np.array(m), rule) - critical_cp(np.array(m))),
+            lambda m, rule=rule: float(
+                to_mach(np.array(-0.43), np.array(m), rule) - critical_cp(np.array(m))
+            ),
             0.5,
             0.78,
         )

@@ -6,10 +6,10 @@ from dataclasses import replace
 
 import numpy as np
 import pytest
-from campaigns import TWELVE, campaign, every_kind, size, source
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
+from campaigns import TWELVE, campaign, every_kind, size, source
 from tapband.nouns.campaign import Campaign
 from tapband.nouns.source import COMMON, INDEPENDENT, Shape
 from tapband.probability.linearised import propagate

@@ -5,11 +5,11 @@ from __future__ import annotations
 from functools import cache
 
 import numpy as np
-import plain_chain
 import pytest
-from campaigns import campaign, every_kind
 from uncertainties import ufloat, umath
 
+import plain_chain
+from campaigns import campaign, every_kind
 from tapband.probability.linearised import propagate
 from tapband.reduction import Assembled, assemble, reduce_campaign
 
@@ -79,7 +79,9 @@ def test_sensitivities_equal_those_of_uncertainties() -> None:
                     expected[j, entry.member[0]] += by * entry.load[POINT]
         # Relative to the largest of the family: a common zero has sensitivities that cancel to rounding.
         scale = max(float(np.abs(expected).max()), 1e-9)
-        np.testing.assert_allclose(s[POINT], expected, rtol=0, atol=1e-9 * scale, err_msg=loaded.family.source)
+        np.testing.assert_allclose(
+            s[POINT], expected, rtol=0, atol=1e-9 * scale, err_msg=loaded.family.source
+        )
 
 
 def test_combined_uncertainty_equals_the_root_sum_of_squares_of_the_sensitivities() -> None:
@@ -92,7 +94,11 @@ def test_combined_uncertainty_equals_the_root_sum_of_squares_of_the_sensitivitie
 @pytest.mark.parametrize("trials", ["plain:200000", "auto"])
 def test_monte_carlo_equals_trials_of_a_plain_loop(trials: str) -> None:
     """200,000 trials of each: differences stay within five standard errors of both together."""
-    kinds = [s for s in every_kind() if s.name in ("port zero", "module zero", "static", "tunnel", "place", "angle")]
+    kinds = [
+        s
+        for s in every_kind()
+        if s.name in ("port zero", "module zero", "static", "tunnel", "place", "angle")
+    ]
     c = campaign(kinds, alphas=(4.0,), spacing=False, trials=trials, seed=11)
     r = reduce_campaign(c)
     a = r.assembled
@@ -124,9 +130,7 @@ def _drawn(a: Assembled, trials: int) -> list[np.ndarray]:
     return plain_chain.coefficients(
         chain,
         FLOATS,
-        reading={
-            i: points.readings[0, i] + rng.normal(0.0, 4.0, size) + modules[wired[i]] for i in range(n)
-        },
+        reading={i: points.readings[0, i] + rng.normal(0.0, 4.0, size) + modules[wired[i]] for i in range(n)},
         p_total=points.channels["p_total"][0] + np.zeros(size),
         p_static=points.channels["p_static"][0] + static,
         alpha=points.alpha[0] + rng.normal(0.0, np.radians(0.03), size),

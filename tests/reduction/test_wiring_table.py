@@ -10,10 +10,10 @@ from functools import cache
 
 import numpy as np
 import pytest
-from campaigns import campaign, size, source
-from exact_sections import TapPlaces
 from numpy.typing import NDArray
 
+from campaigns import campaign, size, source
+from exact_sections import TapPlaces
 from tapband.experiment.contour import Contour
 from tapband.experiment.inviscid import solve
 from tapband.experiment.sections import four_digit

@@ -22,9 +22,9 @@ class FigureKind(StrEnum):
 
 def _show_version(asked: bool) -> None:
     if asked:
-        from tapband import __version__
+        from tapband.nouns.version import VERSION
 
-        typer.echo(f"tapband {__version__}")
+        typer.echo(f"tapband {VERSION}")
         raise typer.Exit
 
 

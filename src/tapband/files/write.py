@@ -10,11 +10,11 @@ from typing import TYPE_CHECKING, Protocol
 
 import numpy as np
 
-from tapband import __version__
 from tapband.files.write_excel import write_excel
 from tapband.files.write_folder import MARKER, replacing
 from tapband.files.write_json import json_text
 from tapband.files.write_tables import write_csv, write_parquet
+from tapband.nouns.version import VERSION
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -59,7 +59,7 @@ def write(
         for name, job in jobs.items():
             (stage / name).parent.mkdir(parents=True, exist_ok=True)
             job(stage / name)
-        text = json_text(__version__, [*jobs, MARKER], results.meta, results.tables)
+        text = json_text(VERSION, [*jobs, MARKER], results.meta, results.tables)
         (stage / MARKER).write_text(text, encoding="utf-8")
     return folder
 

@@ -152,7 +152,7 @@ class Campaign:
     reduction: Reduction
     intervals: Intervals
     sources: tuple[Source, ...]
-    plan: Plan = Plan()
+    plan: Plan = field(default_factory=Plan)
     warnings: tuple[str, ...] = ()
     inputs: Mapping[str, str] = field(default_factory=dict)
     """SHA-256 of each file read, by its path relative to the campaign's folder."""
