@@ -2,19 +2,23 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
 from tapband.files import frames_between as frames
+from tapband.files.frames_stated import unmoved, with_stated_columns
 from tapband.files.tolerance import tolerance
 from tapband.questions.between_trials import of_differences, of_fits
 from tapband.questions.compare import compare
 from tapband.questions.decide import decisions
 from tapband.questions.fit import fits
-from tapband.questions.latents import Latents
+from tapband.questions.joint import Evaluated
+from tapband.questions.latents import Latents, latents_at
 from tapband.questions.law import Drawn
 from tapband.questions.regions import regions
 from tapband.questions.repeats import repeats
+from tapband.questions.stated import Together, stated, stated_problem, with_stated
 from tapband.reduction import Reduced
 from tapband.reduction.assemble import Assembled
 
@@ -26,21 +30,33 @@ if TYPE_CHECKING:
 class Setting:
     """What every question needs beside the latents: level, seed, and what counts as one angle [rad].
 
-    ``assembled`` None (results read back): no joint trials, so no Monte Carlo intervals.
+    ``problem`` None (results read back): no joint trials, so no Monte Carlo intervals.
     """
 
     level: float
     seed: int
     same_angle: float
-    assembled: Assembled | None
+    problem: Evaluated | None
+
+    @classmethod
+    def of(cls, assembled: Assembled) -> Setting:
+        """That of a campaign."""
+        campaign = assembled.campaign
+        stated_too = stated_problem(assembled, latents_at(assembled))
+        return cls(
+            level=campaign.intervals.level,
+            seed=campaign.intervals.seed,
+            same_angle=campaign.plan.polar.same_angle,
+            problem=assembled.problem if stated_too is None else Together(stated=stated_too),
+        )
 
 
 def compared(latents: Latents, setting: Setting, a: str, b: str, within: str | float | None) -> pd.DataFrame:
     """The table of differences of two sides."""
     found = compare(latents, a, b, within=tolerance(within, setting.same_angle), level=setting.level)
-    if setting.assembled is None:
+    if setting.problem is None:
         return frames.differences(found, Drawn.none(found.value.shape))
-    drawn = of_differences(setting.assembled, latents, found, setting.level, setting.seed)
+    drawn = of_differences(setting.problem, latents, found, setting.level, setting.seed)
     return frames.differences(found, drawn)
 
 
@@ -51,25 +67,36 @@ class Between:
     tables: dict[str, pd.DataFrame]
     warnings: tuple[str, ...]
     failed: bool
+    latents: Latents
+    """With the stated condition, where there is one."""
 
 
-def between(reduced: Reduced, latents: Latents) -> Between:
-    """Fits, and every other table that needs no further question. Empty ones are left out."""
+def between(reduced: Reduced, tables: Mapping[str, pd.DataFrame]) -> Between:
+    """Fits, repeats, regions, decisions and the stated condition; ``tables`` are those of the main job.
+
+    Empty tables are left out; ``coefficients`` and ``budget`` gain what is at the stated condition.
+    """
     campaign, assembled = reduced.campaign, reduced.assembled
+    latents = latents_at(assembled)
     level, seed = campaign.intervals.level, campaign.intervals.seed
-    tables: dict[str, pd.DataFrame] = {}
+    found: dict[str, pd.DataFrame] = {}
     centre = campaign.section.moment_centre + assembled.corrected.centre
-    found = fits(latents, campaign.plan.polar, centre, level)
-    if found is not None:
-        tables["fits"] = frames.fits(found, of_fits(assembled, latents, found, level, seed))
+    lines = fits(latents, campaign.plan.polar, centre, level)
+    if lines is not None:
+        found["fits"] = frames.fits(lines, of_fits(assembled.problem, latents, lines, level, seed))
     again = repeats(latents, campaign.plan.polar.same_angle, level)
     if again:
-        tables["repeats"] = frames.repeats(again, latents)
+        found["repeats"] = frames.repeats(again, latents)
     joint = regions(reduced, latents)
     if joint:
-        tables["regions"] = frames.regions(joint, latents)
+        found["regions"] = frames.regions(joint, latents)
     decided, said = decisions(reduced, latents)
     if decided:
-        tables["decisions"] = frames.decisions(decided, latents)
+        found["decisions"] = frames.decisions(decided, latents)
+    moved = stated(reduced, latents)
+    if moved is not None:
+        found |= with_stated_columns(tables, moved, reduced)
+        latents = with_stated(latents, moved.problem)
+        said = [*said, *unmoved(moved, reduced)]
     failed = any(one.answer == "fails" for one in decided)
-    return Between(tables=tables, warnings=tuple(said), failed=failed)
+    return Between(tables=found, warnings=tuple(said), failed=failed, latents=latents)

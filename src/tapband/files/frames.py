@@ -2,10 +2,14 @@
 
 from __future__ import annotations
 
+from typing import Protocol
+
 import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
+from tapband.probability.linearised import Linearised
+from tapband.probability.montecarlo import MonteCarlo
 from tapband.reduction import Reduced
 
 Array = NDArray[np.float64]
@@ -38,7 +42,7 @@ def coefficients(reduced: Reduced) -> pd.DataFrame:
         "taps_used": assembled.nominal.live.sum(axis=1),
     }
     for j, name in enumerate(reduced.outputs):
-        columns |= {f"{name}{ending}": value for ending, value in _of_coefficient(reduced, j).items()}
+        columns |= {f"{name}{ending}": value for ending, value in of_coefficient(reduced, j).items()}
     return pd.DataFrame(columns)
 
 
@@ -47,7 +51,19 @@ def _or_missing(reduced: Reduced, values: Array) -> Array:
     return np.full_like(values, np.nan) if reduced.campaign.stream == "mach" else values
 
 
-def _of_coefficient(reduced: Reduced, j: int) -> dict[str, object]:
+class BothWays(Protocol):
+    """What both propagators say of coefficients, and whether they agree (P, m)."""
+
+    @property
+    def linear(self) -> Linearised: ...
+    @property
+    def montecarlo(self) -> MonteCarlo: ...
+    @property
+    def agrees(self) -> NDArray[np.bool_]: ...
+
+
+def of_coefficient(reduced: BothWays, j: int) -> dict[str, object]:
+    """The columns of one coefficient by what follows its name."""
     linear, drawn = reduced.linear, reduced.montecarlo
     dof = linear.dof[:, j]
     known = np.isfinite(linear.estimate[:, j])

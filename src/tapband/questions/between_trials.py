@@ -13,10 +13,9 @@ from tapband.questions.combine import Combination
 from tapband.questions.compare import Differences
 from tapband.questions.fit import Fits
 from tapband.questions.fit_plan import OUTPUTS
-from tapband.questions.joint import Joint, applied, joint_trials
+from tapband.questions.joint import Evaluated, Joint, applied, joint_trials
 from tapband.questions.latents import Latents
 from tapband.questions.law import Drawn, corrected, counted, law_of, linear_reach
-from tapband.reduction.assemble import Assembled
 
 Array = NDArray[np.float64]
 Codes = NDArray[np.int64]
@@ -28,7 +27,7 @@ MORE = 8
 
 
 def of_differences(
-    assembled: Assembled, latents: Latents, found: Differences, level: float, seed: int
+    problem: Evaluated, latents: Latents, found: Differences, level: float, seed: int
 ) -> Drawn:
     """Monte Carlo intervals (R, m) of differences."""
     half = np.sqrt(3.0 * found.added)
@@ -38,11 +37,11 @@ def of_differences(
         return applied(found.combination.only(rows), joint, away)
 
     return _drawn(
-        assembled, latents, found.combination, found.value, found.u, half, true, level, seed, DIFFERENCES
+        problem, latents, found.combination, found.value, found.u, half, true, level, seed, DIFFERENCES
     )
 
 
-def of_fits(assembled: Assembled, latents: Latents, found: Fits, level: float, seed: int) -> Drawn:
+def of_fits(problem: Evaluated, latents: Latents, found: Fits, level: float, seed: int) -> Drawn:
     """Monte Carlo intervals (R, 8) of fitted quantities; points and weights stay as planned."""
     columns = [latents.outputs.index(name) for name in OUTPUTS]
 
@@ -58,12 +57,12 @@ def of_fits(assembled: Assembled, latents: Latents, found: Fits, level: float, s
         return moved - found.value[rows][:, :, None]
 
     return _drawn(
-        assembled, latents, found.combination, found.value, found.u, found.local, true, level, seed, FITS
+        problem, latents, found.combination, found.value, found.u, found.local, true, level, seed, FITS
     )
 
 
 def _drawn(
-    assembled: Assembled,
+    problem: Evaluated,
     latents: Latents,
     combination: Combination,
     value: Array,
@@ -76,9 +75,9 @@ def _drawn(
 ) -> Drawn:
     points = np.unique(combination.point)
     size = int(np.clip(budget // points.size, FEWEST, MOST))
-    law = law_of(assembled.problem.families, latents, combination, u, half, level)
+    law = law_of(problem.families, latents, combination, u, half, level)
     reach = linear_reach(law, u.shape, level)
-    joint = joint_trials(assembled, latents, points, seed, 0, size)
+    joint = joint_trials(problem, latents, points, seed, 0, size)
     extra = _rectangular(seed, 0, half, size)
     away = joint.linear - latents.estimate[joint.points][:, None, :]
     linear = np.nan_to_num(applied(combination, joint, np.nan_to_num(away))) + extra
@@ -88,7 +87,7 @@ def _drawn(
         return first
     rows = np.flatnonzero(rough.any(axis=1))
     more = _more_trials(
-        assembled, latents, combination.only(rows), lambda j: true(j, rows), half[rows], seed, budget
+        problem, latents, combination.only(rows), lambda j: true(j, rows), half[rows], seed, budget
     )
     second = counted(value[rows], more, level)
     ends = {}
@@ -99,7 +98,7 @@ def _drawn(
 
 
 def _more_trials(
-    assembled: Assembled,
+    problem: Evaluated,
     latents: Latents,
     combination: Combination,
     true: Callable[[Joint], Array],
@@ -113,7 +112,7 @@ def _more_trials(
     size = min(count, MOST)
     parts = []
     for tile in range(1, 1 + -(-count // size)):
-        joint = joint_trials(assembled, latents, points, seed, tile, size)
+        joint = joint_trials(problem, latents, points, seed, tile, size)
         parts.append(true(joint) + _rectangular(seed, tile, half, size))
     return np.concatenate(parts, axis=2)
 

@@ -174,32 +174,32 @@ class _Terms:
 
     def __init__(self, latents: Latents) -> None:
         self._latents = latents
-        self._parts: list[tuple[int, int, float, Array]] = []
+        self._parts: list[tuple[int, int, Array, Array]] = []
 
-    def add(self, row: int, node: Node, weight: float, slope: Array | float) -> None:
-        """``weight`` times a node, its angle errors moved along ``slope`` (m,)."""
-        moved = np.broadcast_to(slope, (len(self._latents.outputs),)) * (-weight / len(node.points))
-        self._parts += [(row, p, weight / len(node.points), moved) for p in node.points]
+    def add(self, row: int, node: Node, weight: Array | float, slope: Array | float) -> None:
+        """``weight`` () or (m,) times a node, its angle errors moved along ``slope`` () or (m,)."""
+        share = np.broadcast_to(weight, (len(self._latents.outputs),)) / len(node.points)
+        self._parts += [(row, p, share, -slope * share) for p in node.points]
 
     def combination(self, rows: int) -> Combination:
         row, point, share, moved = (np.array(column) for column in zip(*self._parts, strict=True))
-        m = len(self._latents.outputs)
-        return Combination(
-            rows=rows, row=row, point=point, weight=share[:, None, None] * np.eye(m), on_alpha=moved
-        )
+        weight = share[:, :, None] * np.eye(share.shape[1])
+        return Combination(rows=rows, row=row, point=point, weight=weight, on_alpha=moved)
 
 
 def _combination(latents: Latents, rows: _Rows, at_equal_angle: NDArray[np.bool_]) -> Combination:
     """The differences; rows marked are asked at one true angle, NaN where a slope is not known."""
     terms = _Terms(latents)
+    # What is at the stated condition stands at its nominal angle already.
+    free = np.array([not name.endswith("_stated") for name in latents.outputs])
     for r, (pair, (mine, theirs)) in enumerate(zip(rows.pairs, rows.slopes, strict=True)):
         along = at_equal_angle[r]
-        terms.add(r, pair.first, 1.0, _rate(latents, mine) if along else 0.0)
+        terms.add(r, pair.first, 1.0, np.where(free, _rate(latents, mine), 0.0) if along else 0.0)
         for node, weight, slope in zip(pair.nodes, pair.weights, theirs, strict=True):
-            terms.add(r, node, -float(weight), _rate(latents, slope) if along else 0.0)
+            terms.add(r, node, -float(weight), np.where(free, _rate(latents, slope), 0.0) if along else 0.0)
         if along and pair.apart != 0.0 and theirs[0] is not None:
             for node, weight in zip(theirs[0].nodes, theirs[0].weights, strict=True):
-                terms.add(r, node, pair.apart * float(weight), 0.0)
+                terms.add(r, node, pair.apart * float(weight) * free, 0.0)
     return terms.combination(len(rows.pairs))
 
 
@@ -215,8 +215,8 @@ def _differences(latents: Latents, kind: str, rows: _Rows, level: float, notes: 
     found = spread(latents, combination).plus(added)
     moved = _combination(latents, rows, np.ones(len(pairs), dtype=np.bool_))
     equal = spread(latents, moved).plus(added)
-    unknown = np.zeros((len(pairs), 1))
-    np.add.at(unknown, moved.row, np.sum(moved.on_alpha, axis=1, keepdims=True) * 0.0)
+    unknown = np.zeros((len(pairs), len(latents.outputs)))
+    np.add.at(unknown, moved.row, moved.on_alpha * 0.0)
     k = found.k(level)
     blank = np.where(_void(latents, combination), np.nan, 0.0)
     unknown = unknown + blank

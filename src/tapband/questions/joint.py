@@ -2,21 +2,33 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
+from typing import Protocol
 
 import numpy as np
 from numpy.typing import NDArray
 
+from tapband.nouns.problem import Draws, Family
 from tapband.probability.draws import block
 from tapband.questions.combine import Combination
 from tapband.questions.latents import Latents
-from tapband.reduction.assemble import Assembled
 
 Array = NDArray[np.float64]
 Codes = NDArray[np.int64]
 TOGETHER = 8_192
 """Trials times points evaluated at once, so that memory stays bounded."""
+
+
+class Evaluated(Protocol):
+    """As much of a :class:`tapband.nouns.problem.Problem` as trials need."""
+
+    @property
+    def families(self) -> Sequence[Family]: ...
+
+    def evaluate(self, points: slice, draws: Draws) -> Array:
+        """y (Pb, T, m) of a block of points."""
+        ...
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
@@ -38,19 +50,19 @@ class Joint:
 
 
 def joint_trials(
-    assembled: Assembled, latents: Latents, points: Codes, seed: int, tile: int, size: int
+    problem: Evaluated, latents: Latents, points: Codes, seed: int, tile: int, size: int
 ) -> Joint:
     """Trials of tile ``tile`` for some points, in increasing order; keyed, so the same in any company."""
     wanted = np.unique(points)
     m = len(latents.outputs)
     y, linear = np.empty((wanted.size, size, m)), np.empty((wanted.size, size, m))
     alpha, centre = np.zeros((2, wanted.size, size))
-    families = assembled.problem.families
+    families = problem.families
     for chunk in _chunks(wanted, max(TOGETHER // size, 1)):
         where = range(int(wanted[chunk.start]), int(wanted[chunk.stop - 1]) + 1)
         inside = wanted[chunk] - where.start
         drawn = block(families, range(len(families)), where, seed, tile, size)
-        values = assembled.problem.evaluate(slice(where.start, where.stop), drawn)
+        values = problem.evaluate(slice(where.start, where.stop), drawn)
         y[chunk] = np.broadcast_to(values, (len(where), size, m))[inside]
         model = np.repeat(latents.estimate[wanted[chunk], None, :], size, axis=1)
         for s, xi in drawn.items():
