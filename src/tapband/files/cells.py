@@ -14,14 +14,15 @@ from tapband.files.tables import MISSING, Array
 
 
 def text_of(value: object) -> str:
-    """A cell as text; whole numbers without a decimal point, nothing as the empty text."""
+    """A cell as text; whole numbers without a decimal point, a missing one as the empty text."""
     if value is None or (isinstance(value, float) and value != value):
         return ""
     if isinstance(value, float) and value.is_integer() and abs(value) < 1e15:
         return str(int(value))
     if isinstance(value, datetime) and not (value.hour or value.minute or value.second):
         return value.date().isoformat()
-    return value.isoformat() if isinstance(value, date) else str(value).strip()
+    text = value.isoformat() if isinstance(value, date) else str(value).strip()
+    return "" if text in MISSING else text
 
 
 def numbers_of(

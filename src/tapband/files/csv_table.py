@@ -195,7 +195,7 @@ def _read(
     else:
         last = max(texts, default=0) + 1
         cells = [row.split(dialect.delimiter, last) for row in lines.rows] if texts else []
-    columns = tuple([row[i].strip() for row in cells] for i in texts)
+    columns = tuple(["" if (cell := row[i].strip()) in MISSING else cell for row in cells] for i in texts)
     return Block(lines=lines.at, numbers=plain, texts=columns)
 
 
