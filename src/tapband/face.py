@@ -86,12 +86,20 @@ class Results:
 
     @property
     def tap_ranking(self) -> pd.DataFrame:
-        """One row a point, coefficient and tap."""
+        """One row a point, coefficient and tap; made on demand where the campaign is too large to store it."""
+        if "tap_ranking" not in self.tables and self.reduced is not None:
+            from tapband.files.frames_rank import tap_rows
+
+            return tap_rows(self.reduced)
         return self._table("tap_ranking")
 
     @property
     def wiring_comparison(self) -> pd.DataFrame:
         """One row a point, coefficient and source of tap pressure: the interval under four wirings."""
+        if "wiring_comparison" not in self.tables and self.reduced is not None:
+            from tapband.files.frames_rank import wiring_rows
+
+            return wiring_rows(self.reduced)
         return self._table("wiring_comparison")
 
     @property
@@ -269,14 +277,15 @@ def _results(reduced: Reduced, kind: str) -> Results:
 
     tables = frames(reduced)
     answers = between(reduced, tables)
-    tables = tables | rank_tables(reduced) | answers.tables
+    ranked, left_out = rank_tables(reduced)
+    tables = tables | ranked | answers.tables
     planning, said, unmet = outcome_frames(reduced, forecast=kind == "forecast")
     if kind == "forecast":
         tables["cp"]["flag"] = [f"forecast; {flag}" if flag else kind for flag in tables["cp"]["flag"]]
     meta = _meta(reduced)
     targets = planning["targets"].to_dict("records") if "targets" in planning else []
     status = max(int(meta["exit_status"]), int(unmet), int(answers.failed))
-    warnings = [*meta["warnings"], *said, *answers.warnings]
+    warnings = [*meta["warnings"], *said, *answers.warnings, *left_out]
     return Results(
         tables={**tables, **planning},
         meta={**meta, "kind": kind, "warnings": warnings, "targets": targets, "exit_status": status},

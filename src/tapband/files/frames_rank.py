@@ -19,6 +19,12 @@ from tapband.reduction import Reduced
 
 Array = NDArray[np.float64]
 
+INDEXED = 4_000
+"""Most points that get Sobol' indices by default: a few seconds."""
+ROWS = 400_000
+"""Most rows of tap_ranking that are made by default."""
+ASK = "tapband rank gives them point by point"
+
 
 def ranking(reduced: Reduced, found: Ranking) -> pd.DataFrame:
     """One row a point, coefficient and group.
@@ -134,18 +140,37 @@ def screening(reduced: Reduced, found: Screened) -> pd.DataFrame:
     )
 
 
-def rank_tables(reduced: Reduced, threads: int | None = None) -> dict[str, pd.DataFrame]:
-    """ranking, tap_ranking and wiring_comparison of every point, by file name without its ending."""
+def rank_tables(reduced: Reduced) -> tuple[dict[str, pd.DataFrame], tuple[str, ...]]:
+    """ranking, tap_ranking and wiring_comparison by file name without its ending, and what was left out.
+
+    A campaign of very many points leaves out what would take longer than its reduction.
+    """
     assembled, intervals = reduced.assembled, reduced.campaign.intervals
+    points, outputs = reduced.linear.estimate.shape
     groups = [one.group for one in assembled.loaded]
-    indices = sobol(assembled.problem, groups, intervals.seed, threads=threads)
+    few = points <= INDEXED
+    indices = sobol(assembled.problem, groups, intervals.seed) if few else None
     found = rank_groups(assembled.problem, reduced.linear, groups, intervals.level, indices)
-    wirings = compare_wirings(assembled, reduced.linear, intervals.level)
-    return {
-        "ranking": ranking(reduced, found),
-        "tap_ranking": tap_ranking(reduced, rank_taps(assembled)),
-        "wiring_comparison": wiring_comparison(reduced, wirings),
-    }
+    tables = {"ranking": ranking(reduced, found)}
+    said = () if few else (f"ranking.csv: {points} points are too many for Sobol' indices; {ASK}",)
+    rows = points * outputs * (assembled.cp.shape[1] + 1)
+    if rows > ROWS:
+        return tables, (*said, f"tap_ranking.csv, wiring_comparison.csv: left out ({rows} rows); {ASK}")
+    return tables | {
+        "tap_ranking": tap_rows(reduced),
+        "wiring_comparison": wiring_rows(reduced),
+    }, said
+
+
+def tap_rows(reduced: Reduced) -> pd.DataFrame:
+    """tap_ranking of every point."""
+    return tap_ranking(reduced, rank_taps(reduced.assembled))
+
+
+def wiring_rows(reduced: Reduced) -> pd.DataFrame:
+    """wiring_comparison of every point."""
+    level = reduced.campaign.intervals.level
+    return wiring_comparison(reduced, compare_wirings(reduced.assembled, reduced.linear, level))
 
 
 def point_tables(reduced: Reduced, method: str | None) -> dict[str, pd.DataFrame]:
@@ -162,10 +187,7 @@ def point_tables(reduced: Reduced, method: str | None) -> dict[str, pd.DataFrame
         indices = _indices(assembled.problem, of, intervals.seed, method)
         found = rank_groups(assembled.problem, linear, of, intervals.level, indices)
         tables[name] = ranking(reduced, found)
-    tables["tap_ranking"] = tap_ranking(reduced, rank_taps(assembled))
-    tables["wiring_comparison"] = wiring_comparison(
-        reduced, compare_wirings(assembled, linear, intervals.level)
-    )
+    tables |= {"tap_ranking": tap_rows(reduced), "wiring_comparison": wiring_rows(reduced)}
     if len(reduced.campaign.sources) > MANY:
         found_few = screen_sources(assembled.problem, linear, intervals.level, intervals.seed)
         tables["screening"] = screening(reduced, found_few)
