@@ -13,27 +13,11 @@ import pytest
 from scipy.special import ndtri, stdtrit
 from selenium.webdriver import Chrome
 
+from browser_checks import SHOWN, move
 from synthetic_results import LEVEL, Synthetic, synthetic
 from tapband.report.publish import publish
 
 Show = Callable[..., Chrome]
-
-MOVE = """
-const item = [...document.querySelectorAll('#sliders li')]
-  .find((node) => node.querySelector('label').textContent === arguments[0]);
-const slider = item.querySelector('input[type=range]');
-slider.value = arguments[1]; slider.dispatchEvent(new Event('input'));
-const done = arguments[arguments.length - 1];
-requestAnimationFrame(() => requestAnimationFrame(() => done(true)));
-"""
-SHOWN = """
-const row = document.querySelector(`#interval-rows tr[data-c="${arguments[0]}"]`);
-return [...row.querySelectorAll('data')].slice(0, 5).map((node) => Number(node.value));
-"""
-
-
-def move(browser: Chrome, source: str, factor: float) -> None:
-    browser.execute_async_script(MOVE, source, str(factor))
 
 
 def expanded(results: Synthetic, point: int, coefficient: str, factors: dict[str, float]) -> float:
