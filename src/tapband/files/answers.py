@@ -93,6 +93,9 @@ def between(reduced: Reduced, tables: Mapping[str, pd.DataFrame]) -> Between:
     decided, said = decisions(reduced, latents)
     if decided:
         found["decisions"] = frames.decisions(decided, latents)
+    rows = assembled.samples
+    if rows is not None and any(one is not None for one in rows.series):
+        found["samples"] = frames.samples(rows.series, latents)
     moved = stated(reduced, latents)
     if moved is not None:
         found |= with_stated_columns(tables, moved, reduced)

@@ -9,6 +9,7 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
+from tapband.probability.series import SeriesMean
 from tapband.questions.compare import ROUNDING, Differences
 from tapband.questions.decide import Decision
 from tapband.questions.fit import SHOWN, Fits
@@ -196,3 +197,31 @@ def _texts(values: Iterable[str]) -> NDArray[np.object_]:
 def _listed(points: Sequence[int], latents: Latents) -> str:
     names = [latents.keys[i] for i in points]
     return ", ".join(names[:8]) + (f" and {len(names) - 8} more" if len(names) > 8 else "")
+
+
+def samples(found: Sequence[SeriesMean | None], latents: Latents) -> pd.DataFrame:
+    """One row a point with several samples and coefficient: what the series is worth.
+
+    ``time_scale`` in samples; ``drift`` along the record, ``drift_p`` its probability by chance.
+    """
+    outputs = latents.outputs
+    kept = [(p, one) for p, one in enumerate(found) if one is not None]
+
+    def each(values: Iterable[object]) -> NDArray[np.object_]:
+        return np.repeat(np.array(list(values), dtype=object), len(outputs))
+
+    return pd.DataFrame(
+        {
+            "point": each(latents.names[p] for p, _ in kept),
+            "run": each(latents.runs[p] for p, _ in kept),
+            "coefficient": np.tile(np.array(outputs, dtype=object), len(kept)),
+            "samples": each(one.samples for _, one in kept).astype(int),
+            "effective": np.concatenate([one.effective for _, one in kept]),
+            "time_scale": np.concatenate([one.time_scale for _, one in kept]),
+            "batches": each(one.batches for _, one in kept).astype(int),
+            "u": np.concatenate([np.sqrt(np.diag(one.covariance)) for _, one in kept]),
+            "drift": np.concatenate([one.drift for _, one in kept]),
+            "drift_p": np.concatenate([one.drift_p for _, one in kept]),
+            "short": each("yes" if one.short else "no" for _, one in kept),
+        }
+    )

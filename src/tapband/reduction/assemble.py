@@ -21,7 +21,7 @@ from tapband.reduction.live_sets import LiveSet, contour_of, live_sets
 from tapband.reduction.loads import Loaded, load
 from tapband.reduction.nominal import Nominal, nominal_of
 from tapband.reduction.problem import CampaignProblem
-from tapband.reduction.samples import sample_scatter
+from tapband.reduction.samples import Scatter, sample_scatter
 from tapband.reduction.sensitivities import At, sensitivities
 
 Array = NDArray[np.float64]
@@ -50,6 +50,8 @@ class Assembled:
     condition_variance: Array
     """(P, 3, S) variance of alpha [rad²], Mach number, q [Pa²] by source."""
     warnings: tuple[str, ...]
+    samples: Scatter | None = None
+    """Of repeated rows; None where every point has one."""
 
 
 def assemble(campaign: Campaign) -> Assembled:
@@ -86,10 +88,11 @@ def assemble(campaign: Campaign) -> Assembled:
         )
         slopes.append(At(points=i, live=one.equation.quadrature.live, cp=cp[i], q=stream.q[i], slopes=slope))
     estimate[~ok, len(MEASURED) :] = np.nan
+    samples = None
     if raw.blocks is not None:
-        factor, batches, said = sample_scatter(campaign, corrected, sets, raw, len(outputs))
-        loaded.append(scatter(factor, batches, points.keys))
-        warnings += said
+        samples = sample_scatter(campaign, corrected, sets, raw, outputs)
+        loaded.append(scatter(samples.factor, samples.batches, points.keys))
+        warnings += samples.warnings
     parts = [sensitivities(one, slopes, len(outputs), cp.shape) for one in loaded]
     problem = CampaignProblem(
         sets=sets,
@@ -119,6 +122,7 @@ def assemble(campaign: Campaign) -> Assembled:
         cp_variance=np.stack([p.cp_variance for p in parts], axis=-1),
         condition_variance=np.stack([p.condition_variance for p in parts], axis=-1),
         warnings=warnings,
+        samples=samples,
     )
 
 
