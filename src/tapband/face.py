@@ -20,6 +20,7 @@ from numpy.typing import NDArray
 from tapband.files.load import load
 from tapband.nouns.campaign import Campaign
 from tapband.nouns.errors import QuestionError
+from tapband.nouns.plan import Polar
 from tapband.nouns.version import VERSION
 from tapband.questions.latents import Latents, from_arrays, latents_of, to_arrays
 from tapband.questions.stated import full_latents
@@ -32,6 +33,8 @@ if TYPE_CHECKING:
     import pandas as pd
     from distributed import Client
     from uncertainties import UFloat
+
+    from tapband.files.answers import Setting
 
 __all__ = ["Campaign", "Plan", "Results", "forecast", "load", "reduce", "size"]
 
@@ -158,18 +161,35 @@ class Results:
         Runs and configs are paired at angles that are equal ``within`` a tolerance ("0.1 deg", or a number of
         degrees; default: that of the campaign), and interpolated where they are not. Notes are in ``attrs``.
         """
-        from tapband.files.answers import Setting, compared
+        from tapband.files.answers import compared
+
+        return compared(self.latents, self._setting(), a, b, within)
+
+    def fit(self, name: str, linear_range: tuple[str | float, str | float] | None = None) -> pd.DataFrame:
+        """Fits of one run or config, over a linear range ("-4 deg", "6 deg") of your own; as in ``fits``."""
+        from tapband.files.answers import fit_by_name
+
+        asked = Polar() if self.campaign is None else self.campaign.plan.polar
+        centre = float(self.meta.get("moment_centre", 0.25))
+        return fit_by_name(self.latents, self._setting(), asked, name, linear_range, centre)
+
+    def repeat(self, *points: str) -> pd.DataFrame:
+        """Scatter of repeats that you name, against the sources that change between them."""
+        from tapband.files.answers import repeats_by_name
+
+        return repeats_by_name(self.latents, self._setting(), points)
+
+    def _setting(self) -> Setting:
+        from tapband.files.answers import Setting
 
         if self.reduced is not None:
-            setting = Setting.of(self.reduced.assembled)
-        else:
-            setting = Setting(
-                level=float(self.meta.get("level", 0.95)),
-                seed=int(self.meta.get("seed", 1)),
-                same_angle=float(np.radians(self.meta.get("same_angle", 0.1))),
-                problem=None,
-            )
-        return compared(self.latents, setting, a, b, within)
+            return Setting.of(self.reduced.assembled)
+        return Setting(
+            level=float(self.meta.get("level", 0.95)),
+            seed=int(self.meta.get("seed", 1)),
+            same_angle=float(np.radians(self.meta.get("same_angle", 0.1))),
+            problem=None,
+        )
 
     @cached_property
     def _variables(self) -> dict[tuple[str, int, int], UFloat]:
@@ -368,6 +388,7 @@ def _meta(reduced: Reduced) -> dict[str, Any]:
         "method": list(drawn.method),
         "corrections": [str(c) for c in reduced.assembled.corrected.made],
         "warnings": list(reduced.warnings),
+        "moment_centre": campaign.section.moment_centre + reduced.assembled.corrected.centre,
         "stated": statements(reduced),
         "exit_status": int(empty),
     }

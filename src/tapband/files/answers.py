@@ -2,13 +2,14 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
 from tapband.files import frames_between as frames
 from tapband.files.frames_stated import unmoved, with_stated_columns
-from tapband.files.tolerance import tolerance
+from tapband.files.tolerance import angle, tolerance
+from tapband.nouns.plan import Polar
 from tapband.questions.between_trials import of_differences, of_fits
 from tapband.questions.compare import compare
 from tapband.questions.decide import decisions
@@ -16,8 +17,9 @@ from tapband.questions.fit import fits
 from tapband.questions.joint import Evaluated
 from tapband.questions.latents import Latents, latents_at
 from tapband.questions.law import Drawn
+from tapband.questions.one_polar import fit_of
 from tapband.questions.regions import regions
-from tapband.questions.repeats import repeats
+from tapband.questions.repeats import repeats, repeats_of
 from tapband.questions.stated import Together, stated, stated_problem, with_stated
 from tapband.reduction import Reduced
 from tapband.reduction.assemble import Assembled
@@ -58,6 +60,27 @@ def compared(latents: Latents, setting: Setting, a: str, b: str, within: str | f
         return frames.differences(found, Drawn.none(found.value.shape))
     drawn = of_differences(setting.problem, latents, found, setting.level, setting.seed)
     return frames.differences(found, drawn)
+
+
+def fit_by_name(
+    latents: Latents,
+    setting: Setting,
+    asked: Polar,
+    name: str,
+    linear_range: tuple[str | float, str | float] | None,
+    centre: float,
+) -> pd.DataFrame:
+    """The table of fits of one run or config, over a linear range of the user's own."""
+    limits = None if linear_range is None else (angle(linear_range[0]), angle(linear_range[1]))
+    found = fit_of(latents, name, asked, limits, centre, setting.level)
+    if setting.problem is None:
+        return frames.fits(found, Drawn.none(found.value.shape))
+    return frames.fits(found, of_fits(setting.problem, latents, found, setting.level, setting.seed))
+
+
+def repeats_by_name(latents: Latents, setting: Setting, names: Sequence[str]) -> pd.DataFrame:
+    """The table of repeats of points that the user names."""
+    return frames.repeats(repeats_of(latents, names, setting.same_angle, setting.level), latents)
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
