@@ -17,7 +17,7 @@ from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy.linalg import block_diag, helmert
+from scipy.linalg import block_diag, helmert, solve_triangular
 from scipy.special import chdtrc, fdtrc
 
 from tapband.nouns.errors import QuestionError
@@ -166,7 +166,9 @@ def _one(latents: Latents, together: _Together, output: int, y: Array, rate: Arr
     z, seen = contrasts @ y, contrasts @ covariance @ contrasts.T
     predicted = float(np.sqrt(np.trace(seen) / dof))
     scatter = float(np.sqrt(z @ z / dof))
-    chi2, p = _test(z, seen, _freedom([contrasts @ part @ contrasts.T for part in parts], nus))
+    centring = contrasts.T @ contrasts
+    traces = [float(np.sum(part * centring)) for part in parts]
+    chi2, p = _test(z, seen, _freedom(traces, nus))
     runs = np.array([latents.runs[i] for i in points], dtype=object)
     inside, inside_dof, across, across_dof = _by_run(y, runs, together.angle)
     return Repeats(
@@ -221,25 +223,36 @@ def _pooled(own: Array, scale: Codes, dof: Array) -> float:
     return float(np.sum(sums) ** 2 / np.sum(sums**2 / dof[first]))
 
 
-def _freedom(parts: Sequence[Array], nus: Sequence[float]) -> float:
-    """ν of the predicted variance (Welch-Satterthwaite on the traces)."""
-    total = sum(float(np.trace(part)) for part in parts)
-    terms = sum(float(np.trace(part)) ** 2 / nu for part, nu in zip(parts, nus, strict=True))
-    return total**2 / terms if terms > 0.0 else np.inf
+def _freedom(traces: Sequence[float], nus: Sequence[float]) -> float:
+    """ν of the predicted variance (Welch-Satterthwaite) from that of each source."""
+    terms = sum(trace**2 / nu for trace, nu in zip(traces, nus, strict=True))
+    return sum(traces) ** 2 / terms if terms > 0.0 else np.inf
 
 
 def _test(z: Array, covariance: Array, nu: float) -> tuple[float, float]:
     """χ² of contrasts and its probability of being exceeded; 0 where scatter is seen and none predicted."""
+    chi2, dof = _distance(z, covariance)
+    if dof == 0 or np.isinf(chi2):
+        return chi2, float(np.isfinite(chi2))
+    return chi2, float(chdtrc(dof, chi2) if np.isinf(nu) else fdtrc(dof, nu, chi2 / dof))
+
+
+def _distance(z: Array, covariance: Array) -> tuple[float, int]:
+    """zᵀ V⁻¹ z and its degrees of freedom; infinite where z has a part that V does not predict at all."""
+    try:
+        factor = np.linalg.cholesky(covariance)
+    except np.linalg.LinAlgError:
+        factor = np.zeros_like(covariance)
+    diagonal = np.diag(factor)
+    if np.all(diagonal > 1e-4 * np.max(diagonal, initial=1e-300)):
+        along = solve_triangular(factor, z, lower=True)
+        return float(along @ along), z.size
     values, vectors = np.linalg.eigh(covariance)
     along = vectors.T @ z
     kept = values > TINY * max(float(values[-1]), 0.0)
-    if np.any(np.abs(along[~kept]) > 1e-12) and not kept.all():
-        return float("inf"), 0.0
-    if not kept.any():
-        return 0.0, 1.0
-    chi2 = float(np.sum(along[kept] ** 2 / values[kept]))
-    dof = int(kept.sum())
-    return chi2, float(chdtrc(dof, chi2) if np.isinf(nu) else fdtrc(dof, nu, chi2 / dof))
+    if np.any(np.abs(along[~kept]) > 1e-12):
+        return float("inf"), z.size
+    return float(np.sum(along[kept] ** 2 / values[kept])), int(kept.sum())
 
 
 def _by_run(y: Array, runs: NDArray[np.object_], angle: Codes) -> tuple[float, int, float, int]:
