@@ -32,6 +32,7 @@ from tapband.report.plan_result import Plan
 if TYPE_CHECKING:
     import pandas as pd
     from distributed import Client
+    from matplotlib.axes import Axes
     from uncertainties import UFloat
 
     from tapband.files.answers import Setting
@@ -214,6 +215,44 @@ class Results:
                     if by_latent[j, g] != 0.0:
                         numbers[name] = numbers[name] + by_latent[j, g] * variable
         return numbers
+
+    def plot_groups(self, coefficient: str, point: str, ax: Axes | None = None) -> Axes:
+        """Linear shares and Sobol' indices of the groups of sources at one point."""
+        from tapband.report.figures_rank import groups
+
+        return groups(self, coefficient, point, ax=ax)
+
+    def plot_taps_on_section(self, coefficient: str, point: str, ax: Axes | None = None) -> Axes:
+        """Shares of the taps on the section's outline."""
+        from tapband.report.figures_rank import taps_on_section
+
+        return taps_on_section(self, coefficient, point, ax=ax)
+
+    def plot_taps_along_chord(self, coefficient: str, point: str, ax: Axes | None = None) -> Axes:
+        """Shares of the taps along the chord."""
+        from tapband.report.figures_rank import taps_along_chord
+
+        return taps_along_chord(self, coefficient, point, ax=ax)
+
+    def plot_shares(self, coefficient: str, ax: Axes | None = None) -> Axes:
+        """Shares of the groups of sources against angle."""
+        from tapband.report.figures_rank import shares
+
+        return shares(self, coefficient, ax=ax)
+
+    def plot_drivers(self, ax: Axes | None = None) -> Axes:
+        """The leading group of every point and coefficient."""
+        from tapband.report.figures_rank import drivers
+
+        return drivers(self, ax=ax)
+
+    def plot_wiring(
+        self, coefficient: str, point: str, source: str | None = None, ax: Axes | None = None
+    ) -> Axes:
+        """The interval that four wirings of the taps would give, of one source or of all of tap pressure."""
+        from tapband.report.figure_wiring import wiring
+
+        return wiring(self, coefficient, point, source, ax=ax)
 
     def write(self, folder: str | Path, *, excel: bool = False, figures: str | None = None) -> Path:
         """Write every table, ``results.json`` and the report; whole or not at all."""

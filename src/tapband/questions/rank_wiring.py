@@ -107,19 +107,34 @@ def _rewired(campaign: Campaign) -> tuple[list[Source], tuple[str, ...]]:
 def _variants(source: Source, assembled: Assembled) -> list[Loaded | None]:
     """The source's latents under each arrangement; None where the taps name no modules."""
     campaign, points = assembled.campaign, assembled.points
-    shared = source.across_taps not in (INDEPENDENT, COMMON)
-    column = source.across_taps.removeprefix("by ") if shared else MODULE
-    values = campaign.taps.columns.get(column, ())
-    dead = campaign.taps.excluded
-    wired = bool(values) and all(value or gone for value, gone in zip(values, dead.tolist(), strict=True))
+    column = module_column(source.across_taps, campaign)
     by_column = replace(source, across_taps=f"by {column}")
     pairs: list[tuple[Source, Campaign] | None] = [
         (replace(source, across_taps=INDEPENDENT), campaign),
         (replace(source, across_taps=COMMON), campaign),
-        (by_column, campaign) if wired else None,
-        (by_column, _interleaved(campaign, column)) if wired else None,
+        None if column is None else (by_column, campaign),
+        None if column is None else (by_column, _interleaved(campaign, column)),
     ]
     return [None if pair is None else load(*pair, points, assembled.nominal) for pair in pairs]
+
+
+def module_column(across_taps: str, campaign: Campaign) -> str | None:
+    """The column of the tap table that says which module a tap is on; None where a live tap has none."""
+    shared = across_taps not in ("", INDEPENDENT, COMMON)
+    column = across_taps.removeprefix("by ") if shared else MODULE
+    values = campaign.taps.columns.get(column, ())
+    dead = campaign.taps.excluded.tolist()
+    return column if values and all(v or gone for v, gone in zip(values, dead, strict=True)) else None
+
+
+def members(across_taps: str, campaign: Campaign) -> tuple[tuple[str, ...] | None, ...]:
+    """For each arrangement what each tap (n,) shares its error with; None where the taps name no modules."""
+    taps, column = campaign.taps, module_column(across_taps, campaign)
+    first = (taps.names, ("",) * len(taps.names))
+    if column is None:
+        return (*first, None, None)
+    wired = taps.columns[column]
+    return (*first, wired, interleaved(wired, taps.s, taps.excluded))
 
 
 def _interleaved(campaign: Campaign, column: str) -> Campaign:
