@@ -15,13 +15,13 @@ from tapband.questions.fit import Fits
 from tapband.questions.fit_plan import OUTPUTS
 from tapband.questions.joint import Evaluated, Joint, applied, joint_trials
 from tapband.questions.latents import Latents
-from tapband.questions.law import Drawn, corrected, counted, law_of, linear_reach
+from tapband.questions.law import Drawn, corrected, counted, reaches
 
 Array = NDArray[np.float64]
 Codes = NDArray[np.int64]
 FITS, DIFFERENCES = 6_400, 25_600
 """Trials times points of the first look, from which a small correction to the linear law is had."""
-FEWEST, MOST = 32, 1_024
+FEWEST, MOST = 16, 1_024
 MORE = 8
 """Times as many trials where the correction is not small, in tiles of their own."""
 
@@ -75,8 +75,7 @@ def _drawn(
 ) -> Drawn:
     points = np.unique(combination.point)
     size = int(np.clip(budget // points.size, FEWEST, MOST))
-    law = law_of(problem.families, latents, combination, u, half, level)
-    reach = linear_reach(law, u.shape, level)
+    reach = reaches(problem.families, latents, combination, u, half, level)
     joint = joint_trials(problem, latents, points, seed, 0, size)
     extra = _rectangular(seed, 0, half, size)
     away = joint.linear - latents.estimate[joint.points][:, None, :]
@@ -108,7 +107,7 @@ def _more_trials(
 ) -> Array:
     """Values less their estimates (R, q, N) of rows that the linear law does not serve, from fresh tiles."""
     points = np.unique(combination.point)
-    count = max(MORE * FEWEST, min(MORE * budget // points.size, MORE * MOST))
+    count = max(256, min(MORE * budget // points.size, MORE * MOST))
     size = min(count, MOST)
     parts = []
     for tile in range(1, 1 + -(-count // size)):

@@ -140,9 +140,10 @@ def grouped(terms: Array, combination: Combination, codes: Codes) -> tuple[Array
 
 def _summed(terms: Array, row: Codes, codes: Codes, point: Codes) -> tuple[Array, Codes, Codes]:
     key = row.astype(np.int64) * (int(codes.max(initial=0)) + 1) + codes
-    _, first, place = np.unique(key, return_index=True, return_inverse=True)
-    sums = np.zeros((first.size, *terms.shape[1:]))
-    np.add.at(sums, place.ravel(), terms)
+    order = np.argsort(key, kind="stable")
+    starts = np.flatnonzero(np.diff(key[order], prepend=-1))
+    sums = np.add.reduceat(terms[order], starts, axis=0)
+    first = order[starts]
     return sums, row[first], point[first]
 
 

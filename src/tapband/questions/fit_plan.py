@@ -133,15 +133,75 @@ def _parabola(x: Values, y: Values, weights: Array) -> Values:
 
 
 def derivatives(plan: FitPlan, alpha: Array, y: Array) -> tuple[Array, Array]:
-    """∂/∂y (n, 8, 3) and ∂/∂alpha (n, 8) of the estimates, by complex step."""
-    n = alpha.size
-    angles = np.broadcast_to(alpha, (4, n, n)).astype(np.complex128)
-    values = np.broadcast_to(y, (4, n, n, 3)).astype(np.complex128)
-    for i in range(3):
-        values[i, np.arange(n), np.arange(n), i] += 1j * STEP
-    angles[3, np.arange(n), np.arange(n)] += 1j * STEP
-    slopes = plan.estimate(angles, values).imag / STEP
-    return np.moveaxis(slopes[:3], 0, -1), slopes[3]
+    """∂/∂y (n, 8, 3) and ∂/∂alpha (n, 8) of the estimates: lines by formula, parabolas by complex step."""
+    by_y, by_alpha = np.zeros((alpha.size, 8, 3)), np.zeros((alpha.size, 8))
+    if plan.linear.any():
+        inside = np.flatnonzero(plan.linear)
+        by_y[inside], by_alpha[inside] = _line_slopes(alpha[inside], y[inside], plan.weights[inside])
+    for peak, output, places in ((plan.highest, 0, (4, 5)), (plan.lowest, 2, (6,))):
+        own, angle = _extreme_slopes(peak, alpha, y[:, output])
+        for i, place in enumerate(places):
+            unit = DEGREE if place == 5 else 1.0
+            by_y[peak.points, place, output] = own[:, i] / unit
+            by_alpha[peak.points, place] = angle[:, i] / unit
+    return by_y, by_alpha
+
+
+def _line_slopes(alpha: Array, y: Array, weights: Array) -> tuple[Array, Array]:
+    """Derivatives (n, 8, 3) and (n, 8) of what the straight lines give.
+
+    With x and y about their weighted means and b = Σ w x y/Σ w x²: ∂b/∂y = w x/Σ w x²,
+    ∂b/∂x = w (y − 2 b x)/Σ w x².
+    """
+    w = weights / weights.sum()
+    x = alpha - w @ alpha
+    square = float(w @ (x * x))
+    lift = w @ y[:, 0]
+    b, m = (float((w * x) @ y[:, j]) / square for j in (0, 1))
+    rate = m / b
+    by_y = w * x / square
+    b_x, m_x = (w * (y[:, j] - (w @ y[:, j]) - 2.0 * slope * x) / square for j, slope in ((0, b), (1, m)))
+    own, angle = np.zeros((x.size, 8, 3)), np.zeros((x.size, 8))
+    own[:, 0, 0], angle[:, 0] = by_y * DEGREE, b_x * DEGREE
+    own[:, 1, 0] = (lift / b**2 * by_y - w / b) / DEGREE
+    angle[:, 1] = (w + lift / b**2 * b_x) / DEGREE
+    rate_cl, rate_cm, rate_x = -rate / b * by_y, by_y / b, m_x / b - rate / b * b_x
+    own[:, 2, 0], own[:, 2, 1] = -rate * w - lift * rate_cl, w - lift * rate_cm
+    angle[:, 2] = -lift * rate_x
+    own[:, 3, 0], own[:, 3, 1], angle[:, 3] = -rate_cl, -rate_cm, -rate_x
+    if x.size > 3:
+        own[:, 7, 0], angle[:, 7] = _bend_slopes(x, y[:, 0], weights)
+    return own, angle
+
+
+def _bend_slopes(x: Array, y: Array, weights: Array) -> tuple[Array, Array]:
+    """Derivatives (n,) of the quadratic term [per deg²] by y and by x.
+
+    With basis X, normal matrix A and residuals r: ∂c/∂x_i = w_i A⁻¹ (X'_i r_i − X_i (X'_i c)).
+    """
+    size = float(np.max(np.abs(x)))
+    v = x / size
+    basis = np.stack([np.ones_like(v), v, v * v], axis=1)
+    rise = np.stack([np.zeros_like(v), np.ones_like(v), 2.0 * v], axis=1) / size
+    inverse = np.linalg.inv((basis * weights[:, None]).T @ basis)
+    c = inverse @ (basis.T @ (weights * y))
+    left, slope = y - basis @ c, rise @ c
+    third = inverse[2] * DEGREE**2 / size**2
+    return weights * (basis @ third), weights * ((rise @ third) * left - (basis @ third) * slope)
+
+
+def _extreme_slopes(peak: Peak, alpha: Array, y: Array) -> tuple[Array, Array]:
+    """Derivatives (k, 2) of value and angle of an extreme by its readings and angles, by complex step."""
+    k = peak.points.size
+    own = np.arange(k)
+    results = []
+    for i in (0, 1):
+        near = np.broadcast_to(alpha[peak.points], (k, k)).astype(np.complex128)
+        values = np.broadcast_to(y[peak.points], (k, k)).astype(np.complex128)
+        (values, near)[i][own, own] += 1j * STEP
+        moved = _extreme(own, peak.weights, near, values)
+        results.append(np.stack([part.imag for part in moved], axis=1) / STEP)
+    return results[0], results[1]
 
 
 def plan_of(latents: Latents, polar: Polar, asked: Asked, centre: float) -> FitPlan:

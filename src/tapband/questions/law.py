@@ -27,6 +27,8 @@ from tapband.questions.latents import Latents
 Array = NDArray[np.float64]
 Codes = NDArray[np.int64]
 Mask = NDArray[np.bool_]
+TOGETHER = 2_000_000
+"""Sensitivities held at once for the law."""
 NEARLY = 0.2
 """Root mean square difference to the linear model, in u, that is a small correction."""
 
@@ -59,9 +61,34 @@ class Drawn:
         )
 
 
-def linear_reach(law: LinearLaw, shape: tuple[int, ...], level: float) -> Array:
-    """x with P(|quantity − estimate| ≤ x u) = ``level`` by the linear model; NaN where there is no law."""
-    return law.quantile(0.5 * (1.0 + level)).reshape(shape)
+def reaches(
+    families: Sequence[Family],
+    latents: Latents,
+    combination: Combination,
+    u: Array,
+    half: Array,
+    level: float,
+) -> Array:
+    """x (R, q) with P(|quantity − estimate| ≤ x u) = ``level`` by the linear model; NaN where u is zero.
+
+    Rows of about as many terms are done together, so that a long row does not widen short ones.
+    """
+    sizes = np.bincount(combination.row, minlength=combination.rows)
+    found = np.full(u.shape, np.nan)
+    widest = max((s.shape[2] for s in latents.sensitivity), default=1)
+    order = np.argsort(sizes, kind="stable")
+    start = 0
+    while start < order.size:
+        stop = start + 1
+        while stop < order.size and (
+            (stop + 1 - start) * int(sizes[order[stop]]) * widest * u.shape[1] <= TOGETHER
+        ):
+            stop += 1
+        rows = np.sort(order[start:stop])
+        law = law_of(families, latents, combination.only(rows), u[rows], half[rows], level)
+        found[rows] = law.quantile(0.5 * (1.0 + level)).reshape(rows.size, -1)
+        start = stop
+    return found
 
 
 def law_of(
@@ -104,9 +131,12 @@ def _terms(
     found = []
     for j in range(int(slot.max()) + 1):
         mine = np.flatnonzero(slot == j)
-        size = _side_by_side(sums[mine], row[mine], combination.rows)
         if family.shape is Shape.NORMAL:
-            size = np.sqrt((size * size).sum(axis=2, keepdims=True))
+            squares = np.zeros((combination.rows, combination.quantities))
+            np.add.at(squares, row[mine], np.sum(sums[mine] ** 2, axis=2))
+            size = np.sqrt(squares)[:, :, None]
+        else:
+            size = _side_by_side(sums[mine], row[mine], combination.rows)
         dof, r = np.full(combination.rows, np.inf), np.zeros(combination.rows)
         if not family.exact:
             dof[row[mine]] = family.dof[point[mine]]
