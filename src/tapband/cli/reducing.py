@@ -86,18 +86,14 @@ def forecast(
     Takes the forecast part of the campaign file; readings are not needed yet. Writes the same tables and
     report as reduce, marked as a forecast.
     """
-    from dataclasses import replace
-
     from tapband import face
     from tapband.cli.terminal import progress
 
     silent = quiet or bool(context.obj)
     loaded = face.load(campaign)
     target = _target(campaign, out, loaded.name)
-    stated = loaded.intervals
-    intervals = replace(stated, trials=trials or stated.trials, seed=stated.seed if seed is None else seed)
-    with progress(silent):
-        results = face.forecast(replace(loaded, intervals=intervals))
+    with _client(scheduler) as client, progress(silent) as line:
+        results = face.forecast(loaded, trials=trials, seed=seed, progress=line, client=client)
         _write(results, target, excel, parquet, figures)
     _finish(results, target, silent)
 
