@@ -18,7 +18,7 @@ from tapband.reduction.problem import CampaignProblem
 if TYPE_CHECKING:
     from distributed import Client
 
-BLOCK = 64
+LARGEST_BLOCK = 64
 
 
 def run_on(
@@ -33,7 +33,9 @@ def run_on(
     from distributed import as_completed
 
     size = len(problem.alpha)
-    blocks = [slice(start, min(start + BLOCK, size)) for start in range(0, size, BLOCK)]
+    workers = max(len(client.scheduler_info()["workers"]), 1)
+    step = max(1, min(LARGEST_BLOCK, size // (4 * workers)))
+    blocks = [slice(start, min(start + step, size)) for start in range(0, size, step)]
     futures = [
         client.submit(run, problem.part(block), level, trials, seed, threads=1, pure=False, retries=5)
         for block in blocks
