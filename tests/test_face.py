@@ -7,9 +7,9 @@ from pathlib import Path
 import numpy as np
 import pandas as pd
 import pytest
-from campaigns import campaign, every_kind
 
 import tapband
+from campaigns import campaign, every_kind
 from tapband.nouns.errors import QuestionError
 
 

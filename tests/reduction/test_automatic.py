@@ -6,8 +6,8 @@ from dataclasses import replace
 
 import numpy as np
 import pytest
-from campaigns import campaign, size, source
 
+from campaigns import campaign, size, source
 from tapband.experiment.chain import evaluate
 from tapband.nouns.campaign import Closure, Reduction
 from tapband.probability.linearised import propagate

@@ -8,8 +8,8 @@ import warnings
 
 import numpy as np
 import pytest
-from campaigns import campaign, every_kind
 
+from campaigns import campaign, every_kind
 from tapband.reduction import reduce_campaign
 
 distributed = pytest.importorskip("distributed", reason="the extra cluster is not installed")

@@ -6,8 +6,8 @@ from dataclasses import replace
 
 import numpy as np
 import pytest
-from campaigns import campaign, size, source
 
+from campaigns import campaign, size, source
 from tapband.nouns.campaign import Channel
 from tapband.nouns.source import COMMON, INDEPENDENT, Scale, Shape, Size, Term, divisor_of
 from tapband.probability.linearised import propagate
@@ -104,8 +104,13 @@ def test_unequal_limits_move_the_estimate_by_their_middle() -> None:
     assert _only(a, "static").standard[0] == pytest.approx(10.0 / np.sqrt(3.0), rel=1e-12)
 
 
-@pytest.mark.parametrize("act", ["angle", "mach", "dynamic pressure", "tap pressure", "tap coefficient", "cl",
-                                 "moment centre", "trailing-edge coefficient", "tap location", "tap row"])  # fmt: skip
+ACTS = (
+    "angle", "mach", "dynamic pressure", "tap pressure", "tap coefficient", "cl", "moment centre",
+    "trailing-edge coefficient", "tap location", "tap row",
+)  # fmt: skip
+
+
+@pytest.mark.parametrize("act", ACTS)
 def test_every_act_takes_a_correction_with_the_sign_of_its_sensitivity(act: str) -> None:
     """A small middle moves the estimate by the sensitivity that the half-width of the same size has."""
     taps = COMMON if act.startswith("tap") else ""

@@ -7,8 +7,8 @@ from dataclasses import replace
 
 import numpy as np
 import pytest
-from campaigns import campaign
 
+from campaigns import campaign
 from tapband.nouns.campaign import Campaign, Rows
 from tapband.probability.linearised import propagate
 from tapband.reduction import assemble
