@@ -21,7 +21,7 @@ from numpy.typing import NDArray
 
 from tapband.probability import plain
 from tapband.probability.block import Block, process
-from tapband.probability.model import Model
+from tapband.probability.model import ROUNDING, Model
 from tapband.probability.outcome import NAMES, Numbers, Outcome
 from tapband.probability.strategy import Choice, choices
 
@@ -45,11 +45,25 @@ def run(model: Model, plan: plain.Plan, progress: plain.Progress | None = None) 
                 left[point] = block.plain[place]
         if progress is not None:
             progress(points.stop, len(chosen) + len(left))
+    left = {point: rows for point, rows in left.items() if not _still(model, point, rows, plan, found)}
     if left:
         told = None if progress is None else _after(progress, len(chosen), len(left))
         for point, outcome in plain.run_points(model, list(left), plan, told, left).items():
             found[point] = _merged(found[point], outcome, left[point])
     return found
+
+
+def _still(model: Model, point: int, rows: Mask, plan: plain.Plan, found: dict[int, Outcome]) -> bool:
+    """Whether all that is left of a point does not move beyond rounding in one block of trials; then that is it."""
+    if np.any(rows & model.live[point]) or plan.fixed is not None:
+        return False
+    block = plain.run_points(model, [point], replace(plan, fixed=plan.size, threads=1))[point]
+    width = np.nan_to_num(block.numbers.short_high - block.numbers.short_low)
+    scale = np.nanmax(np.abs(model.estimate[point]) + model.u[point])
+    if np.any(rows & ~(width <= ROUNDING * scale)):
+        return False
+    found[point] = _merged(found[point], replace(block, reached=np.ones_like(rows)), rows)
+    return True
 
 
 def _in_order(model: Model, blocks: list[range], chosen: list[Choice], plan: plain.Plan) -> Iterator[Block]:

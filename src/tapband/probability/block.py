@@ -13,7 +13,7 @@ from numpy.typing import NDArray
 
 from tapband.probability.coverage import tolerance
 from tapband.probability.draws import FINE
-from tapband.probability.ends import FRACTIONS
+from tapband.probability.curve import FRACTIONS
 from tapband.probability.estimate import Estimate, averaged, estimated
 from tapband.probability.model import Model
 from tapband.probability.outcome import NAMES
@@ -44,6 +44,8 @@ _COST = {"integrated": 3.0, "line": 9.0}
 _PLAIN_ENDS = 28.5
 """(2 √(0.025 · 0.975)/φ(1.96))²: plain trials times (δ/u)² for the ends of a normal 95 % interval."""
 _PLAIN_LEAST = 1e5
+_MARGIN = 1.4
+"""Trials beyond those that an estimate asks for, so that the next rarely asks again."""
 _ROUNDS = 6
 _HIDDEN = 12.0
 """A probe at 3 standard deviations sees up to 7 times the pilot's root mean square of a smooth difference."""
@@ -104,7 +106,7 @@ def process(model: Model, points: range, chosen: Sequence[Choice], plan: Plan) -
         place = block.places(some)
         if (rows & ~block.plain)[place].any():
             sampler = _integrating(model, own[place.start], plan.level)
-            stage = _Stage(model, plan, block, "integrated", sampler, far)
+            stage = _Stage(model, plan, block, "integrated", sampler, own[place.start].out, far)
             need["integrated"][place] = stage.pilot(some, (rows & ~block.plain)[place])
             ways.append((stage, some))
     hard = (hard | (rows & (need["integrated"] > _DEAR))) & ~block.plain
@@ -112,7 +114,7 @@ def process(model: Model, points: range, chosen: Sequence[Choice], plan: Plan) -
     along = {p: way for p, way in zip(points, lines, strict=True) if way is not None}
     for some in runs(points, [None if way is None else way.key for way in lines]):
         if some.start in along:
-            stage = _Stage(model, plan, block, "line", _lining(model, along), far)
+            stage = _Stage(model, plan, block, "line", _lining(model, along), (), far)
             place = block.places(some)
             need["line"][place] = stage.pilot(some, hard[place])
             ways.append((stage, some))
@@ -192,6 +194,8 @@ class _Stage:
     block: Block
     method: str
     sampler: Sampler
+    out: tuple[int, ...]
+    """Families integrated out."""
     far: Array
     """What the probes saw, (Pb, m) of the block."""
 
@@ -235,7 +239,7 @@ class _Stage:
         """Tiles (Pb, m) that rows need by an estimate: 0 where it suffices, inf where plain is cheaper."""
         u = self.model.u[points.start : points.stop]
         excess = got.excess(u)
-        tiles = 1.15 * got.trials * excess * excess / TILE
+        tiles = _MARGIN * got.trials * excess * excess / TILE
         ratio = u / np.where(u > 0.0, tolerance(u), 1.0)
         plain = np.maximum(_PLAIN_ENDS * ratio * ratio, _PLAIN_LEAST)
         dear = ~(tiles * (TILE * _COST[self.method]) < plain) | (tiles > LADDER[-1])
@@ -259,7 +263,8 @@ class _Stage:
         return averaged(parts)
 
     def _estimate(self, points: range, rows: Mask, tiles: Tiles) -> Estimate:
-        return estimated(self.model, points, rows, self.sampler(points, rows, tiles), self.plan.level)
+        trials = self.sampler(points, rows, tiles)
+        return estimated(self.model, points, rows, self.out, trials, self.plan.level)
 
 
 def _rungs(tiles: Array) -> Counts:

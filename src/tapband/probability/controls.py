@@ -1,8 +1,9 @@
-"""Second-order control variates: polynomials of a few drawn coordinates, whose means are known exactly.
+"""Second-order control variates: functions of a few drawn coordinates, whose means are known exactly.
 
 What the linear model leaves of an output is mostly curvature along the few directions that matter. Regressing
-on powers and products of those coordinates takes it out: every mean becomes a weighted mean, with weights
-that do not depend on what is averaged, and what scatters is the remainder of the regression.
+on squares, waves and products of those coordinates takes it out: every mean becomes a weighted mean, with
+weights that do not depend on what is averaged, and what scatters is the remainder of the regression. Waves
+are bounded, where a fourth power would let one trial far out outweigh all others.
 
 *Source* R. Y. Rubinstein, R. Marcus, Efficiency of multivariate control variates, Oper. Res. 33 (1985) 661.
 """
@@ -16,13 +17,16 @@ from itertools import combinations
 import numpy as np
 from numpy.typing import NDArray
 
-from tapband.probability.distributions import log_coefficients
+from tapband.probability.distributions import characteristic
 from tapband.probability.model import Model
 
 Array = NDArray[np.float64]
 
 COORDINATES = 2
+WAVE = 1.5
 PAIRS = COORDINATES * (COORDINATES - 1) // 2
+_FOLDS = 4
+_FULL = 1_024
 _LEAST = 0.002
 """Share of variance from which a family is worth a coordinate."""
 
@@ -34,8 +38,8 @@ class Coordinates:
     units: Mapping[int, Array]
     chosen: NDArray[np.intp]
     """(Pb, COORDINATES) families, −1 where a point has fewer."""
-    fourth: Array
-    """(Pb, COORDINATES) fourth moments."""
+    wave: Array
+    """(Pb, COORDINATES) means of cos(WAVE · x)."""
 
     def values(self, draws: Mapping[int, Array], roots: Mapping[int, Array], size: int) -> Array:
         """Coordinates (Pb, T, COORDINATES) at draws, the common scale ``roots`` of a family taken out again."""
@@ -58,7 +62,7 @@ def coordinates(model: Model, points: range, drawn: Sequence[int]) -> Coordinate
     weight = share.max(axis=1, initial=0.0)
     order = np.argsort(-weight, axis=1, kind="stable")[:, :COORDINATES]
     chosen = np.full((len(points), COORDINATES), -1, dtype=np.intp)
-    fourth = np.full((len(points), COORDINATES), 3.0)
+    wave = np.full((len(points), COORDINATES), 1.0)
     units: dict[int, Array] = {}
     for row, places in enumerate(order):
         for k, place in enumerate(places):
@@ -69,62 +73,107 @@ def coordinates(model: Model, points: range, drawn: Sequence[int]) -> Coordinate
             unit = gradient / np.sqrt((gradient * gradient).sum())
             units.setdefault(f, np.zeros((len(points), unit.size)))[row] = unit
             chosen[row, k] = f
-            excess = 24.0 * log_coefficients(model.families[f].shape, model.families[f].top)[0]
-            fourth[row, k] = 3.0 + excess * float((unit**4).sum())
-    return Coordinates(units=units, chosen=chosen, fourth=fourth)
+            family = model.families[f]
+            wave[row, k] = np.prod(characteristic(family.shape, family.top, WAVE * unit))
+    return Coordinates(units=units, chosen=chosen, wave=wave)
 
 
-def polynomials(x: Array, fourth: Array, correlation: Array) -> Array:
+def controls_of(x: Array, wave: Array, correlation: Array) -> Array:
     """Controls (Pb, K, N) of mean 0 from coordinates x (Pb, c, N) of unit variance, symmetric.
+
+    Second degree alone for few trials: more would fit their own noise.
 
     ``correlation`` (Pb, pairs) of the coordinates, 0 where they are independent.
     """
-    square = x * x
     live = np.where(np.any(x != 0.0, axis=-1), 1.0, 0.0)[..., None]
-    parts = [x, square - live, square * x, (square * square - fourth[..., None]) * live]
-    pairs = list(combinations(range(x.shape[1]), 2))
-    for place, (a, b) in enumerate(pairs):
-        product = x[:, a] * x[:, b]
-        cross = [product - correlation[:, place, None], x[:, a] * product, x[:, b] * product]
+    full = x.shape[-1] >= _FULL
+    parts = [x, x * x - live]
+    sine, cosine = np.sin(WAVE * x), np.cos(WAVE * x)
+    if full:
+        parts += [sine, (cosine - wave[..., None]) * live]
+    for place, (a, b) in enumerate(combinations(range(x.shape[1]), 2)):
+        cross = [x[:, a] * x[:, b] - correlation[:, place, None]]
+        if full:
+            cross += [sine[:, a] * cosine[:, b], cosine[:, a] * sine[:, b]]
         parts.append(np.stack(cross, axis=1))
     return np.ascontiguousarray(np.concatenate(parts, axis=1))
 
 
 class Regression:
-    """Weighted means over N trials (…, N), controlled by (Pb, K, N) variates of mean 0."""
+    """Weighted means over N trials, controlled by variates (Pb, K, N) of mean 0.
+
+    The coefficients for each quarter of the trials come from the other three, so that the means are unbiased
+    and the remainders are those of a prediction, not of a fit.
+    """
 
     def __init__(self, controls: Array) -> None:
-        self._trials = controls.shape[-1]
-        mean = controls.mean(axis=-1)
-        self._away = controls - mean[..., None]
-        gram = self._away @ np.swapaxes(self._away, -1, -2) / self._trials
-        # A control that a point has no use for is 0 throughout.
-        k = np.arange(gram.shape[-1])
-        variance = gram[:, k, k]
-        gram[:, k, k] = np.where(variance > 0.0, variance * (1.0 + 1e-10), 1.0)
-        self._inverse = np.linalg.inv(gram)
-        pull = (self._inverse @ mean[..., None])[..., 0]
-        self._weights = (1.0 - (pull[:, None, :] @ self._away)[:, 0]) / self._trials
-        self._freedom = max(self._trials - 1 - controls.shape[1], 1)
-        self._stretch = np.sqrt(1.0 + (pull * mean).sum(axis=-1))[:, None]
+        self._trials = n = controls.shape[-1]
+        edges = [n * k // _FOLDS for k in range(_FOLDS + 1)]
+        self._folds = [slice(a, b) for a, b in zip(edges[:-1], edges[1:], strict=True)]
+        self._controls = controls
+        self._weights = np.full((len(controls), n), 1.0 / n)
+        self._inverses: list[Array] = []
+        self._means: list[Array] = []
+        parts = [controls[..., fold] for fold in self._folds]
+        sums = [part.sum(axis=-1) for part in parts]
+        grams = [part @ np.swapaxes(part, -1, -2) for part in parts]
+        for fold, held_out in zip(self._folds, sums, strict=True):
+            count = n - (fold.stop - fold.start)
+            mean = (_total(sums) - held_out) / count
+            gram = _total(grams) - grams[len(self._inverses)]
+            gram = gram / count - mean[..., None] * mean[:, None, :]
+            k = np.arange(gram.shape[-1])
+            variance = gram[:, k, k]
+            # A control that a point has no use for is 0 throughout.
+            gram[:, k, k] = np.where(variance > 0.0, variance * (1.0 + 1e-9), 1.0)
+            inverse = np.linalg.inv(gram)
+            pull = (inverse @ held_out[..., None])[:, :, 0] / (n * count)
+            for other, part in zip(self._folds, parts, strict=True):
+                if other != fold:
+                    away = part - mean[..., None]
+                    self._weights[:, other] -= (pull[:, None, :] @ away)[:, 0]
+            self._inverses.append(inverse)
+            self._means.append(mean)
 
     def mean(self, values: Array) -> Array:
         """Mean (Pb, m) of values (Pb, m, N)."""
         return (values * self._weights[:, None, :]).sum(axis=-1)
 
     def spread(self, values: Array) -> tuple[Array, Array]:
-        """Standard deviation of that mean, and its own relative standard deviation.
+        """Standard deviation of that mean, and its own relative standard deviation, by which it is enlarged.
 
         *Source* var(s²) = (m4 − s⁴)/n to leading order.
         """
         n = self._trials
-        away = values - values.mean(axis=-1)[..., None]
-        slopes = (away @ np.swapaxes(self._away, -1, -2)) @ self._inverse / n
-        away = away - slopes @ self._away
-        square = away * away
-        second = square.sum(axis=-1) / self._freedom
+        rest = self._rest(values)
+        rest -= rest.mean(axis=-1)[..., None]
+        square = rest * rest
+        second = square.sum(axis=-1) / (n - 1)
         fourth = (square * square).sum(axis=-1) / n
         positive = np.where(second > 0.0, second, 1.0)
         kurtosis = np.where(second > 0.0, fourth / (positive * positive), 1.0)
         doubt = 0.5 * np.sqrt(np.maximum(kurtosis - 1.0, 0.0) / n)
-        return np.sqrt(second / n) * self._stretch, doubt
+        return np.sqrt(second / n) * (1.0 + doubt), doubt
+
+    def _rest(self, values: Array) -> Array:
+        """What the controls, with coefficients from the other folds, leave of the values (Pb, m, N)."""
+        rest = values.copy()
+        parts = [self._controls[..., fold] for fold in self._folds]
+        products = [
+            values[..., fold] @ np.swapaxes(part, -1, -2)
+            for fold, part in zip(self._folds, parts, strict=True)
+        ]
+        sums = [values[..., fold].sum(axis=-1) for fold in self._folds]
+        for k, fold in enumerate(self._folds):
+            count = self._trials - (fold.stop - fold.start)
+            mean = (_total(sums) - sums[k])[..., None] / count
+            covariance = (_total(products) - products[k]) / count - mean * self._means[k][:, None, :]
+            rest[..., fold] -= (covariance @ self._inverses[k]) @ parts[k]
+        return rest
+
+
+def _total(parts: list[Array]) -> Array:
+    total = parts[0]
+    for part in parts[1:]:
+        total = total + part
+    return total

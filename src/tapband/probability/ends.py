@@ -1,8 +1,4 @@
-"""Ends of coverage intervals from an exactly known distribution and an averaged difference to it.
-
-F̂(t) = F_L(t) + mean_i d_i(t). Rows are outputs at points, (Pb, m); every row goes its own way, so that none
-depends on those beside it. Numerical standard deviations are those of the averages, carried through.
-"""
+"""Ends of coverage intervals from F̂, with the numerical standard deviations of its averages carried through."""
 
 from __future__ import annotations
 
@@ -12,17 +8,11 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.special import ndtri
 
-from tapband.probability.controls import Regression
-from tapband.probability.linear_law import LinearLaw
-from tapband.probability.smoothing import Smoothing
+from tapband.probability.curve import FRACTIONS, Curve, Side
 
 Array = NDArray[np.float64]
 
-FRACTIONS = (0.03, 0.15, 0.5, 0.8, 0.97)
-"""Tail probabilities, as fractions of 1 − p, at which F̂ is known on either side."""
-_SAMPLED = (0, 2, 4)
-"""Those at which the difference is averaged; it is small and smooth, so a cubic carries it to the others."""
-_SHORTEST = 48
+_SHORTEST = 32
 """Probabilities tried for the shortest interval."""
 _STEPS = 8
 
@@ -38,6 +28,7 @@ class Ends:
     low_sd: Array
     high_sd: Array
     short_low_sd: Array
+    """NaN, as for the other end, where the density is flat: many intervals are as short."""
     short_high_sd: Array
     doubt: Array
     """Relative standard deviation (Pb, m) of the claimed standard deviations of low and high."""
@@ -45,158 +36,108 @@ class Ends:
     """False where the search failed: the output is too unlike its linear model."""
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
-class Frame:
-    """Where rows stand: y = origin + u·x, and the exact law of x."""
-
-    law: LinearLaw
-    origin: Array
-    u: Array
-    level: float
-
-    def linear(self, t: Array) -> tuple[Array, Array]:
-        """F_L and its density (Pb, m) at t."""
-        cdf, pdf = self.law.at(((t - self.origin) / self.u).ravel())
-        return cdf.reshape(t.shape), pdf.reshape(t.shape) / self.u
-
-
-def solve(frame: Frame, smoothing: Smoothing, over: Regression, shift: Array) -> Ends:
-    """All ends, averaged ``over`` the trials; the search starts ``shift`` (Pb, m) from the linear model."""
+def solve(curve: Curve, shift: Array) -> Ends:
+    """All ends; the search starts ``shift`` (Pb, m) from those of the linear model."""
+    frame = curve.frame
     alpha = 1.0 - frame.level
-    sides: list[_Side] = []
     # Nodes need not be at these quantiles exactly.
     nodes = np.stack([frame.law.quantile(1.0 - f * alpha, float(-ndtri(f * alpha)), 0.05) for f in FRACTIONS])
-    nodes = nodes.reshape(len(FRACTIONS), *frame.u.shape)
-    for sign in (-1.0, 1.0):
-        ordered = sign * nodes if sign < 0 else nodes[::-1]
-        t = frame.origin + shift + frame.u * ordered
-        sides.append(_Side.sampled(frame, smoothing, over, t))
-    low = _end(frame, smoothing, over, sides[0], 0.5 * alpha)
-    high = _end(frame, smoothing, over, sides[1], 1.0 - 0.5 * alpha)
-    short = _shortest(sides, over, frame.level, low, high)
+    nodes = frame.u * nodes.reshape(len(FRACTIONS), *frame.u.shape)
+    left = Side.sampled(curve, frame.origin + shift - nodes)
+    right = Side.sampled(curve, frame.origin + shift + nodes[::-1])
+    low = _end(curve, left, 0.5 * alpha)
+    high = _end(curve, right, 1.0 - 0.5 * alpha)
+    short_low, short_high, short_low_sd, short_high_sd = _shortest(curve, left, right)
     return Ends(
-        low=low.t, high=high.t, low_sd=low.sd, high_sd=high.sd, doubt=np.maximum(low.doubt, high.doubt),
-        short_low=short[0], short_high=short[1], short_low_sd=short[2], short_high_sd=short[3],
+        low=low.t,
+        high=high.t,
+        short_low=short_low,
+        short_high=short_high,
+        low_sd=low.sd,
+        high_sd=high.sd,
+        short_low_sd=short_low_sd,
+        short_high_sd=short_high_sd,
+        doubt=np.maximum(low.doubt, high.doubt),
         settled=low.settled & high.settled,
-    )  # fmt: skip
-
-
-@dataclass(frozen=True, slots=True, kw_only=True)
-class _Side:
-    """F̂ and its density at nodes t (k, Pb, m), ascending: a cubic between each two."""
-
-    t: Array
-    cdf: Array
-    pdf: Array
-
-    @classmethod
-    def sampled(cls, frame: Frame, smoothing: Smoothing, over: Regression, t: Array) -> _Side:
-        cdf, pdf = np.empty_like(t), np.empty_like(t)
-        for k in _SAMPLED:
-            d, e = smoothing.at(t[k])
-            cdf[k], pdf[k] = over.mean(d), over.mean(e)
-        for k in range(1, len(t), 2):
-            cdf[k], pdf[k] = _between(t[k - 1 : k + 2], cdf[k - 1 : k + 2 : 2], pdf[k - 1 : k + 2 : 2])
-        for k, node in enumerate(t):
-            linear, density = frame.linear(node)
-            cdf[k] += linear
-            pdf[k] += density
-        return cls(t=t, cdf=cdf, pdf=np.maximum(pdf, 0.0))
-
-    @property
-    def bend(self) -> Array:
-        """Slope of the density (Pb, m) about the middle node."""
-        middle = len(self.t) // 2
-        return (self.pdf[middle + 1] - self.pdf[middle - 1]) / (self.t[middle + 1] - self.t[middle - 1])
-
-    def inverse(self, p: Array) -> tuple[Array, Array]:
-        """t and density (q, Pb, m) at probabilities p (q, Pb, m); the outer cubics are continued a little."""
-        k = len(self.t)
-        cell = np.clip((p[:, None] > self.cdf[None, 1 : k - 1]).sum(axis=1), 0, k - 2)
-        t0, t1 = (np.take_along_axis(self.t, cell + i, axis=0) for i in (0, 1))
-        f0, f1 = (np.take_along_axis(self.cdf, cell + i, axis=0) for i in (0, 1))
-        width = t1 - t0
-        g0, g1 = (np.take_along_axis(self.pdf, cell + i, axis=0) * width for i in (0, 1))
-        rise = f1 - f0
-        quad, cube = 3.0 * rise - 2.0 * g0 - g1, g0 + g1 - 2.0 * rise
-        v = np.clip((p - f0) / np.where(rise > 0, rise, 1.0), -0.25, 1.25)
-        for _ in range(5):
-            value = f0 + v * (g0 + v * (quad + v * cube)) - p
-            slope = g0 + v * (2.0 * quad + v * (3.0 * cube))
-            v = np.clip(v - value / np.maximum(slope, 1e-12), -0.25, 1.25)
-        slope = g0 + v * (2.0 * quad + v * (3.0 * cube))
-        return t0 + v * width, np.maximum(slope, 1e-12) / width
-
-
-def _between(t: Array, value: Array, slope: Array) -> tuple[Array, Array]:
-    """Value and slope at t[1] of the cubic with given values and slopes (2, ...) at t[0] and t[2]."""
-    width = t[2] - t[0]
-    v = (t[1] - t[0]) / width
-    rise, g0, g1 = value[1] - value[0], slope[0] * width, slope[1] * width
-    quad, cube = 3.0 * rise - 2.0 * g0 - g1, g0 + g1 - 2.0 * rise
-    return value[0] + v * (g0 + v * (quad + v * cube)), (g0 + v * (2.0 * quad + v * (3.0 * cube))) / width
+    )
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class _End:
-    """One end (Pb, m) of the symmetric interval, with what each trial (Pb, m, N) had to say there."""
+    """One end (Pb, m) of the symmetric interval."""
 
     t: Array
-    density: Array
     sd: Array
     doubt: Array
     settled: NDArray[np.bool_]
-    cdf_influence: Array
-    pdf_influence: Array
 
 
-def _end(frame: Frame, smoothing: Smoothing, over: Regression, side: _Side, p: float) -> _End:
+def _end(curve: Curve, side: Side, p: float) -> _End:
     """Newton on F̂ itself from the interpolated start; a row stops by itself."""
-    t = side.inverse(np.full((1, *frame.u.shape), p))[0][0]
+    u = curve.frame.u
+    t = side.inverse(np.full((1, *u.shape), p))[0][0]
+    floor = 1e-3 * p * (1.0 - p) / u
     moving = np.ones(t.shape, dtype=np.bool_)
     for _ in range(_STEPS):
-        d, e = smoothing.at(t)
-        linear, density = frame.linear(t)
-        pdf = density + over.mean(e)
-        miss = linear + over.mean(d) - p
-        floor = 1e-3 * p * (1.0 - p) / frame.u
-        move = np.clip(-miss / np.maximum(pdf, floor), -frame.u, frame.u)
+        seen = curve.at(t)
+        move = np.clip((p - seen.cdf) / np.maximum(seen.pdf, floor), -u, u)
         # Newton squares its error: after a step of 3e-4 u no more than 1e-7 u is left.
-        t, moving = np.where(moving, t + move, t), moving & (np.abs(move) > 3e-4 * frame.u)
+        t, moving = np.where(moving, t + move, t), moving & (np.abs(move) > 3e-4 * u)
         if not moving.any():
             break
-    settled = ~moving & (pdf > floor)
-    sd, doubt = over.spread(d)
-    pdf = np.maximum(pdf, floor)
-    return _End(t=t, density=pdf, sd=sd / pdf, doubt=doubt, settled=settled, cdf_influence=d, pdf_influence=e)
+    sd, doubt = curve.over.spread(seen.d)
+    steep = np.maximum(seen.pdf, floor)
+    return _End(t=t, sd=sd / steep, doubt=doubt, settled=~moving & (seen.pdf > floor))
 
 
-def _shortest(sides: list[_Side], over: Regression, level: float, low: _End, high: _End) -> tuple[Array, Array, Array, Array]:
-    """Shortest interval and the numerical standard deviations of its ends.
+def _shortest(curve: Curve, left: Side, right: Side) -> tuple[Array, Array, Array, Array]:
+    """Shortest interval (JCGM 101:2008, 5.3.4): its ends, then their numerical standard deviations.
 
-    Length(p) = Q(p + level) − Q(p) is least where the densities at both ends are equal. Its ends err with F̂
-    at either end and with p, which errs as far as the difference of the densities does, over the curvature.
+    It holds the level and has equal densities at both ends. A search over the interpolated curve is followed by
+    one Newton step on these two equations with F̂ itself; errors of F̂ and of its density move the ends by the
+    same linear equations.
     """
-    alpha = 1.0 - level
-    fractions = np.linspace(FRACTIONS[0], FRACTIONS[-1], _SHORTEST + 1)
-    p = np.broadcast_to((alpha * fractions)[:, None, None], (fractions.size, *low.t.shape))
-    left, right = sides[0].inverse(p)[0], sides[1].inverse(p + level)[0]
-    best = np.clip(np.argmin(right - left, axis=0), 1, _SHORTEST - 1)[None]
-    before, at, after = (np.take_along_axis(right - left, best + i, axis=0)[0] for i in (-1, 0, 1))
-    step = alpha * (fractions[1] - fractions[0])
+    level, u = curve.frame.level, curve.frame.u
+    p = (1.0 - level) * np.linspace(FRACTIONS[0], FRACTIONS[-1], _SHORTEST + 1)[:, None, None]
+    p = np.broadcast_to(p, (_SHORTEST + 1, *u.shape))
+    length = right.inverse(p + level)[0] - left.inverse(p)[0]
+    best = np.argmin(length, axis=0)[None]
+    inner = np.clip(best, 1, _SHORTEST - 1)
+    before, at, after = (np.take_along_axis(length, inner + i, axis=0) for i in (-1, 0, 1))
     bend = before - 2.0 * at + after
-    offset = np.clip(0.5 * (before - after) / np.where(bend > 0, bend, 1.0), -1.0, 1.0)
-    chosen = (np.take_along_axis(p, best, axis=0)[0] + step * offset)[None]
-    (short_low,), (low_density,) = sides[0].inverse(chosen)
-    (short_high,), (high_density,) = sides[1].inverse(chosen + level)
-    ends = ((sides[0], low, low_density), (sides[1], high, high_density))
-    moved, tilt = [], []
-    for side, end, density in ends:
-        drift = -end.cdf_influence / density[..., None]
-        change = end.pdf_influence + side.bend[..., None] * drift
-        moved.append(drift)
-        tilt.append(-change / (density * density)[..., None])
-    curvature = np.where(bend > 0, bend, np.nan) / step**2
-    place = -(tilt[1] - tilt[0]) / curvature[..., None]
-    sds = [over.spread(m + place / d[..., None])[0] for m, (*_, d) in zip(moved, ends, strict=True)]
-    return short_low, short_high, sds[0], sds[1]
+    offset = np.clip(0.5 * (before - after) / np.where(bend > 0.0, bend, 1.0), -1.0, 1.0)
+    chosen = np.take_along_axis(p, inner, axis=0) + offset * (p[1] - p[0])
+    (low,), (rise,) = left.inverse(chosen)
+    (high,), (fall,) = right.inverse(chosen + level)
+    below, above = curve.at(low), curve.at(high)
+    system = _Pair(f_low=below.pdf, f_high=above.pdf, rise=rise, fall=fall)
+    step_low, step_high = system.moved(above.cdf - below.cdf - level, above.pdf - below.pdf)
+    clear = system.determinant > 0.02 * (below.pdf + above.pdf) ** 2 / u
+    step_low, step_high = (np.where(clear, np.clip(s, -0.3 * u, 0.3 * u), 0.0) for s in (step_low, step_high))
+    sds = [curve.over.spread(part)[0] for part in system.moved(above.d - below.d, above.e - below.e)]
+    return low + step_low, high + step_high, *(np.where(clear, sd, np.nan) for sd in sds)
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class _Pair:
+    """F(h) − F(l) = level and f(h) = f(l), linear about (l, h): densities and their slopes (Pb, m)."""
+
+    f_low: Array
+    f_high: Array
+    rise: Array
+    fall: Array
+
+    @property
+    def determinant(self) -> Array:
+        """Positive where the density falls away from the interval on both sides."""
+        return self.f_high * self.rise - self.f_low * self.fall
+
+    def moved(self, held: Array, tilt: Array) -> tuple[Array, Array]:
+        """Steps of l and h that undo an excess of what is held and of the upper density over the lower."""
+        extra = (None,) * (held.ndim - self.f_low.ndim)
+        f_low, f_high, rise, fall, determinant = (
+            value[(..., *extra)]
+            for value in (self.f_low, self.f_high, self.rise, self.fall, self.determinant)
+        )
+        safe = np.where(determinant > 0.0, determinant, np.inf)
+        return (held * fall - tilt * f_high) / safe, (held * rise - tilt * f_low) / safe

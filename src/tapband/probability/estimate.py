@@ -10,7 +10,8 @@ from numpy.typing import NDArray
 
 from tapband.probability.controls import Regression
 from tapband.probability.coverage import tolerance
-from tapband.probability.ends import FRACTIONS, Frame, solve
+from tapband.probability.curve import FRACTIONS, Curve, Frame
+from tapband.probability.ends import solve
 from tapband.probability.model import Model
 from tapband.probability.outcome import NAMES, Numbers
 from tapband.probability.trials import Trials
@@ -18,8 +19,8 @@ from tapband.probability.trials import Trials
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
 
-_CAUTION = 3.0
-"""Standard deviations of a claimed standard deviation that are added to it before it is believed."""
+_CAUTION = 2.0
+"""Further standard deviations of a claimed standard deviation that are added before it ends the trials."""
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -40,14 +41,16 @@ class Estimate:
         n = self.numbers
         delta = tolerance(np.where(np.isnan(n.u), linear_u, n.u))
         claimed = np.stack([n.mean_sd, n.u_sd, n.low_sd, n.high_sd])
-        exists = ~np.isnan(np.stack([n.mean, n.u, n.low, n.high]))
+        exists = ~np.isnan(np.stack([n.mean + n.mean_sd, n.u + n.u_sd, n.low, n.high]))
         cautious = np.where(exists, 2.0 * claimed * (1.0 + _CAUTION * self.doubt), 0.0)
         worst = cautious.max(axis=0)
         return np.where(worst > 0.0, worst / np.where(delta > 0.0, delta, 1e-300), 0.0)
 
 
-def estimated(model: Model, points: range, rows: Mask, trials: Trials, level: float) -> Estimate:
-    """Numbers of ``rows`` (Pb, m) from their trials."""
+def estimated(
+    model: Model, points: range, rows: Mask, out: tuple[int, ...], trials: Trials, level: float
+) -> Estimate:
+    """Numbers of ``rows`` (Pb, m) from trials in which the families ``out`` were integrated out."""
     where = slice(points.start, points.stop)
     rows = rows & ~trials.refused
     every = tuple(range(len(model.families)))
@@ -65,13 +68,18 @@ def estimated(model: Model, points: range, rows: Mask, trials: Trials, level: fl
     influence = trials.square - (2.0 * shift)[..., None] * trials.shift
     square_sd, u_doubt = over.spread(influence)
     with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
-        ends = solve(frame, trials.smoothing, over, shift)
-    means, spreads = _exist(model, points, rows)
+        ends = solve(Curve(frame=frame, smoothing=trials.smoothing, over=over), shift)
+    exists = [model.moments(point, out) for point in points]
+    means, spreads = np.array([e.mean for e in exists]), np.array([e.u for e in exists])
+    mean_scatter, u_scatter = (
+        np.array([e.mean_scatter for e in exists]),
+        np.array([e.u_scatter for e in exists]),
+    )
     numbers = {
         "mean": np.where(means, frame.origin + shift, np.nan),
         "u": np.where(spreads, u, np.nan),
-        "mean_sd": mean_sd,
-        "u_sd": square_sd / (2.0 * np.where(u > 0.0, u, 1.0)),
+        "mean_sd": np.where(mean_scatter, mean_sd, np.nan),
+        "u_sd": np.where(u_scatter, square_sd / (2.0 * np.where(u > 0.0, u, 1.0)), np.nan),
         **{name: getattr(ends, name) for name in NAMES if hasattr(ends, name)},
     }
     lost = np.isnan(u) & spreads & np.isfinite(model.variance(points, every))
@@ -82,12 +90,6 @@ def estimated(model: Model, points: range, rows: Mask, trials: Trials, level: fl
         failed=trials.refused | (rows & (~ends.settled | lost)),
         trials=trials.shift.shape[-1],
     )
-
-
-def _exist(model: Model, points: range, rows: Mask) -> tuple[Mask, Mask]:
-    """Rows whose mean and whose standard deviation exist."""
-    pairs = [model.moments_exist(point) for point in points]
-    return rows & np.array([mean for mean, _ in pairs]), rows & np.array([u for _, u in pairs])
 
 
 def averaged(parts: Sequence[Estimate]) -> Estimate:

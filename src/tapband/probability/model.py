@@ -21,6 +21,16 @@ _NEGLIGIBLE = 1e-12
 """Share of variance below which a contribution is rounding (a common zero error on a closed contour)."""
 
 
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Moments:
+    """Whether mean and standard deviation of outputs (m,) exist, and finite variances of their estimates."""
+
+    mean: Mask
+    u: Mask
+    mean_scatter: Mask
+    u_scatter: Mask
+
+
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
 class Model:
     """P points, m outputs, S families."""
@@ -74,16 +84,20 @@ class Model:
             )
         return linear_law(terms, live.ravel(), tail)
 
-    def moments_exist(self, point: int) -> tuple[Mask, Mask]:
-        """Whether mean and standard deviation of each output (m,) exist: each contributor has ν > 1, ν > 2."""
-        mean, spread = np.ones(self.u.shape[1], dtype=np.bool_), np.ones(self.u.shape[1], dtype=np.bool_)
+    def moments(self, point: int, out: tuple[int, ...] = ()) -> Moments:
+        """Which moments of each output (m,) exist, and which averages over draws have a scatter of their own.
+
+        A source of ν degrees of freedom has moments below ν. Sources ``out`` are not drawn: they do not scatter.
+        """
+        least, drawn = np.full((2, self.u.shape[1]), np.inf)
         for f, family in enumerate(self.families):
-            if family.shape is Shape.NORMAL and family.dof[point] <= 2.0:
+            nu = family.dof[point]
+            if family.shape is Shape.NORMAL and nu <= 4.0:
                 there = self.share[point, :, f] > _NEGLIGIBLE
-                spread &= ~there
-                if family.dof[point] <= 1.0:
-                    mean &= ~there
-        return mean, spread
+                least = np.where(there, np.minimum(least, nu), least)
+                if f not in out:
+                    drawn = np.where(there, np.minimum(drawn, nu), drawn)
+        return Moments(mean=least > 1.0, u=least > 2.0, mean_scatter=drawn > 2.0, u_scatter=drawn > 4.0)
 
     def variance(self, points: range, which: tuple[int, ...]) -> Array:
         """Variance (Pb, m) of the linear model over some families, as far as it exists."""

@@ -16,7 +16,7 @@ from tapband.nouns.problem import Problem
 from tapband.probability import accelerated, plain
 from tapband.probability.draws import TILE
 from tapband.probability.model import Model
-from tapband.probability.outcome import MonteCarlo, collected
+from tapband.probability.outcome import NAMES, MonteCarlo, Numbers, Outcome, collected
 
 Array = NDArray[np.float64]
 
@@ -51,12 +51,24 @@ def run(
     model = Model.of(problem)
     workers = threads or cpu_count() or 1
     points = range(len(problem.estimate))
+    if not model.families:
+        return collected([_exact(model, point) for point in points], len(problem.outputs))
     plan = plain.Plan(level=level, seed=seed, fixed=fixed, threads=workers)
     if engine == "plain":
         found = plain.run_points(model, points, plan, progress)
     else:
         found = accelerated.run(model, plan, progress)
     return collected([found[point] for point in points], len(problem.outputs))
+
+
+def _exact(model: Model, point: int) -> Outcome:
+    """What there is to say where nothing errs."""
+    y = model.estimate[point]
+    zero = np.where(np.isnan(y), np.nan, 0.0)
+    values = {name: zero if name == "u" or name.endswith("_sd") else y for name in NAMES}
+    none = np.zeros(y.shape, dtype=np.int64)
+    known = np.ones(y.shape, dtype=np.bool_)
+    return Outcome(numbers=Numbers(**values), trials=none, refused=0, reached=known, method="exact")
 
 
 def sample(problem: Problem, points: slice, seed: int, tile: int) -> Array:

@@ -25,7 +25,8 @@ class Numbers:
     short_low: Array
     short_high: Array
     mean_sd: Array
-    """Numerical standard deviations: of what more trials would still change."""
+    """Numerical standard deviations: of what more trials would still change. NaN where none exists: for the
+    mean where a drawn source has 2 degrees of freedom or fewer, for u where it has 4 or fewer."""
     u_sd: Array
     low_sd: Array
     high_sd: Array

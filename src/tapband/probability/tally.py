@@ -3,9 +3,11 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from math import ceil
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy.special import ndtri, stdtrit
 
 from tapband.probability.coverage import shortest_of, symmetric_of
 from tapband.probability.histogram import Histogram
@@ -36,7 +38,7 @@ class Tally:
     ) -> None:
         self._level = level
         self._margin = margin
-        self._moments = model.moments_exist(point)
+        self._moments = model.moments(point)
         self._linear_u = model.u[point]
         self._live = np.isfinite(model.estimate[point])
         self._rows = self._live if rows is None else self._live & rows
@@ -45,6 +47,7 @@ class Tally:
         self._power = np.zeros((5, len(self._live)))
         self._blocks: list[Array] = []
         self._trials = self._refused = 0
+        self._next = FEWEST
         self.settled = False
 
     def add(self, block: Block) -> None:
@@ -56,7 +59,9 @@ class Tally:
         self._blocks.append(stats)
         self._trials += block.trials
         self._refused += block.refused
-        if len(self._blocks) >= FEWEST:
+        if len(self._blocks) >= self._next:
+            # Not after every block: who asks too often stops at a lucky moment.
+            self._next = ceil(1.2 * len(self._blocks))
             self.settled = bool(np.all(tolerance_met(self._numbers(ends=False), self._linear_u)[self._rows]))
 
     def _count(self, j: int, ordered: Array) -> tuple[float, ...]:
@@ -106,12 +111,12 @@ class Tally:
                     short_low[j], short_high[j] = histogram.shortest(self._level)
         moment4 = fourth / n - 4.0 * shift * third / n + 6.0 * shift**2 * second / n - 3.0 * shift**4
         sd = self._scatter() if len(self._blocks) >= FEWEST else self._formulas(spread, moment4, tail)
-        mean_exists, u_exists = self._moments
+        exists = self._moments
         return Numbers(
-            mean=np.where(mean_exists, self._origin + shift, np.nan),
-            u=np.where(u_exists, spread, np.nan),
+            mean=np.where(exists.mean, self._origin + shift, np.nan),
+            u=np.where(exists.u, spread, np.nan),
             low=low, high=high, short_low=short_low, short_high=short_high,
-            mean_sd=sd[0], u_sd=sd[1], low_sd=sd[2], high_sd=sd[3], short_low_sd=sd[4], short_high_sd=sd[5],
+            mean_sd=np.where(exists.mean_scatter, sd[0], np.nan), u_sd=np.where(exists.u_scatter, sd[1], np.nan), low_sd=sd[2], high_sd=sd[3], short_low_sd=sd[4], short_high_sd=sd[5],
         )  # fmt: skip
 
     def _scatter(self) -> Array:
@@ -122,8 +127,10 @@ class Tally:
         """
         blocks = np.stack(self._blocks)
         h = len(blocks)
+        # From few blocks a standard deviation is itself uncertain: as wide as its t interval.
+        widen = float(stdtrit(h - 1.0, 0.975) / ndtri(0.975))
         gain = np.array([h**0.5] * 4 + [h ** (1.0 / 3.0)] * 2)[:, None]
-        result: Array = blocks.std(axis=0, ddof=1) / gain
+        result: Array = blocks.std(axis=0, ddof=1) * (widen / gain)
         return result
 
     def _formulas(self, spread: Array, moment4: Array, tail: float) -> Array:

@@ -15,7 +15,7 @@ from numpy.typing import NDArray
 
 from tapband.nouns.problem import Draws
 from tapband.nouns.source import Shape
-from tapband.probability.controls import COORDINATES, PAIRS, Coordinates, coordinates, polynomials
+from tapband.probability.controls import COORDINATES, PAIRS, Coordinates, controls_of, coordinates
 from tapband.probability.distributions import gauss_rule, half_width, log_coefficients, variance
 from tapband.probability.draws import block, scales
 from tapband.probability.model import Model
@@ -84,7 +84,7 @@ def integrated(
     }
     smoothing = Normal(**laws) if base is None else Integrated(base=base, **laws)
     square = (away - away0) * (away + away0) + np.where(good, gain, 0.0)
-    controls = polynomials(x, axes.fourth, np.zeros((len(points), PAIRS)))
+    controls = controls_of(x, axes.wave, np.zeros((len(points), PAIRS)))
     return Trials(smoothing=smoothing, shift=away - away0, square=square, controls=controls, refused=refused)
 
 
@@ -184,7 +184,13 @@ def _normal_equations(nodes: Array, weights: Array) -> tuple[Array, Array]:
 
 
 def _line_tile(
-    model: Model, points: range, along: Sequence[Direction], axes: Coordinates, nodes: Array, tiles: Tiles, tile: int
+    model: Model,
+    points: range,
+    along: Sequence[Direction],
+    axes: Coordinates,
+    nodes: Array,
+    tiles: Tiles,
+    tile: int,
 ) -> tuple[Array, ...]:
     """y at the trial; l at η = 0 of its line, ∂l/∂η; η; coordinates; y at the nodes. (Pb, T, ·)."""
     where = slice(points.start, points.stop)
@@ -228,8 +234,10 @@ def _beside_line(x: Array, eta: Array, axes: Coordinates, along: Sequence[Direct
     scale = np.sqrt(np.where(alone, rest, 1.0))
     beside = np.where(alone[..., None], (x - cosine[..., None] * eta) / scale[..., None], 0.0)
     slanted = np.where(alone, cosine / scale, 0.0)
-    correlation = np.stack([-slanted[:, a] * slanted[:, b] for a, b in combinations(range(COORDINATES), 2)], axis=1)
-    return polynomials(beside, axes.fourth, correlation)
+    correlation = np.stack(
+        [-slanted[:, a] * slanted[:, b] for a, b in combinations(range(COORDINATES), 2)], axis=1
+    )
+    return controls_of(beside, axes.wave, correlation)
 
 
 def probe(model: Model, points: range, distance: float = 3.0) -> tuple[Array, Array]:
