@@ -102,27 +102,27 @@ def pairs_of(
 
 
 def _partners(first: Sequence[Node], second: Sequence[Node], within: float) -> list[Node | None]:
-    """The nearest node of the second side within the tolerance; each is taken once while others are free."""
-    angle, mach = (
-        np.abs(
-            np.array([getattr(n, what) for n in first])[:, None]
-            - np.array([getattr(n, what) for n in second])
-        )
-        for what in ("alpha", "mach")
-    )
-    near = angle <= within * (1.0 + 1e-9)
-    cost = np.where(near, angle + (mach > SAME_MACH) * (1.0 + mach), np.inf)
+    """The nearest node of the second side within the tolerance; each is taken once while others are free.
+
+    Both sides are in order of angle. Nodes of one Mach number go before nodes of two.
+    """
+    angle, other = (np.array([node.alpha for node in side]) for side in (first, second))
+    reach = within * (1.0 + 1e-9)
+    low, high = np.searchsorted(other, angle - reach), np.searchsorted(other, angle + reach, side="right")
+    rows = np.repeat(np.arange(angle.size), high - low)
+    columns = np.arange(rows.size) - np.repeat(np.cumsum(high - low) - (high - low), high - low)
+    columns += np.repeat(low, high - low)
+    mach, mach_other = (np.array([node.mach for node in side]) for side in (first, second))
+    apart = np.abs(mach[rows] - mach_other[columns])
+    cost = np.abs(angle[rows] - other[columns]) + (apart > SAME_MACH) * (1.0 + apart)
+    order = np.argsort(cost, kind="stable")
     found: list[Node | None] = [None] * len(first)
     used: set[int] = set()
-    rows, columns = np.nonzero(near)
-    for place in np.argsort(cost[rows, columns], kind="stable"):
-        i, j = int(rows[place]), int(columns[place])
-        if found[i] is None and j not in used:
-            found[i] = second[j]
-            used.add(j)
-    for i in range(len(first)):
-        if found[i] is None and near[i].any():
-            found[i] = second[int(np.argmin(cost[i]))]
+    for again in (False, True):
+        for i, j in zip(rows[order].tolist(), columns[order].tolist(), strict=True):
+            if found[i] is None and (again or j not in used):
+                found[i] = second[j]
+                used.add(j)
     return found
 
 
