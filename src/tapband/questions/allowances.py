@@ -31,6 +31,8 @@ NEGLIGIBLE = 1e-20
 """Share of the variance below which a source moves a coefficient by rounding alone."""
 NEAR = 0.002
 """Distance from the target, relative, at which an allowance is left as it is."""
+FAR, FEW = 50.0, "20000"
+"""Times the declared size past which a fixed number of trials confirms an allowance, and that number."""
 WATCHED = 2
 """Demands, the nearest to their targets, that Monte Carlo looks at while an allowance is confirmed."""
 
@@ -176,7 +178,9 @@ class _Quest:
         """The worst headline ratio at a size, and its demand; the factors there are noted."""
         near = np.argsort(-self.one.ratio(size) * self.factor, kind="stable")[:WATCHED]
         moved = replacing(self.basis.campaign, scaled(self.probe, size))
-        seen = confirm(moved, _some(self.basis.demands, near), self.trials)
+        # Far from anything declared the chain bends so much that an adaptive run may take minutes.
+        far = size > FAR and self.trials is None
+        seen = confirm(moved, _some(self.basis.demands, near), FEW if far else self.trials)
         known = np.isfinite(seen.headline)
         self.factor = self.factor.copy()
         self.factor[near[known]] = seen.factor[known]
