@@ -113,7 +113,7 @@ def stream_of(equation: Equation, inputs: Inputs) -> Stream:
 
 def tap_coefficients(reading: Values, stream: Stream) -> Values:
     """Cp = (p − p_static)/q at each tap (…, n)."""
-    return np.asarray((reading + stream.offset[..., None]) / stream.q[..., None])
+    return np.asarray((reading + stream.offset[..., None]) * (1.0 / stream.q)[..., None])
 
 
 def evaluate(equation: Equation, inputs: Inputs) -> Values:

@@ -17,6 +17,10 @@ def at_nominal(cp: Values, shift: Values, rule: Quadrature) -> Values:
 
     Second order in the shift; the derivatives are those of the cubic through the readings.
     """
-    slope = cp @ rule.slope.T + rule.slope_constant
-    curvature = cp @ rule.curvature.T + rule.curvature_constant
-    return np.asarray(cp + shift * (0.5 * shift * curvature - slope))
+    slope = cp @ rule.slope.T
+    slope += rule.slope_constant
+    moved = (cp @ rule.curvature.T + rule.curvature_constant) * (0.5 * shift)
+    moved -= slope
+    moved *= shift
+    moved += cp
+    return np.asarray(moved)

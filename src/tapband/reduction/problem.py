@@ -116,7 +116,10 @@ class CampaignProblem:
             mine = drawn if drawn.shape[0] == 1 else drawn[where]
             for entry in self.loaded[f].entries:
                 error = _error(entry, mine, rows)
-                values[entry.slot] = values[entry.slot] + error if entry.slot in values else error
+                if entry.slot in values:
+                    values[entry.slot] += error
+                else:
+                    values[entry.slot] = error
         channels = {name: value[rows, None] + values.pop(name, 0.0) for name, value in self.channels.items()}
         for name, value in self.shifts.items():
             values[name] = value[rows, None] + values.get(name, 0.0)
@@ -124,7 +127,9 @@ class CampaignProblem:
             values["extra"] = self.extra[rows, None, :] + values.get("extra", 0.0)
         if np.any(self.added):
             values["added"] = self.added[rows, None, :] + values.get("added", 0.0)
-        reading = self.reading[rows, None, :] + values.pop("reading", 0.0)
+        reading = self.reading[rows, None, :]
+        if "reading" in values:
+            reading = np.add(reading, values["reading"], out=values.pop("reading"))
         alpha = self.alpha[rows, None] + values.pop("alpha", 0.0)
         return Inputs(
             reading=reading,
