@@ -210,6 +210,16 @@ def test_both_estimators_agree_within_their_intervals_on_ten_budgets() -> None:
     assert float(apart.max()) < 2.0
 
 
+def test_default_indices_of_a_mixed_budget_are_good_to_three_thousandths() -> None:
+    """0.003, held against sixteen times the samples with other draws."""
+    of = small(every_kind())
+    groups = [one.group for one in of.loaded]
+    found, reference = sobol(of.problem, groups, 1), sobol(of.problem, groups, 2, samples=1024)
+    assert found.samples.max() <= 64
+    np.testing.assert_allclose(found.first, reference.first, rtol=0.0, atol=0.003)
+    np.testing.assert_allclose(found.total, reference.total, rtol=0.0, atol=0.003)
+
+
 def test_budgets_include_strongly_curved_ones() -> None:
     curved = 0
     for _, sources, more in budgets():

@@ -103,6 +103,9 @@ def test_tap_share_is_weight_times_covariance_times_weight() -> None:
         assert found.share[0, j, -1] == pytest.approx(0.0, abs=1e-12)
     # Shared errors make it negative where a tap takes out what others bring in.
     assert found.share.min() < 0.0
+    worst = found.against[0][found.share[0, :, :-1] < -1e-3]
+    assert {assembled.loaded[s].family.source for s in worst.tolist()} <= {"module", "hole"}
+    assert np.all(found.against[found.share[..., :-1] > 0.0] == -1)
 
 
 def test_an_error_shared_by_taps_and_a_stream_channel_is_split_between_them() -> None:

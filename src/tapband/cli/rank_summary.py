@@ -11,7 +11,7 @@ from tapband.files.write_text import one_line
 from tapband.nouns.errors import QuestionError
 from tapband.questions.rank_order import carriers
 from tapband.questions.rank_taps import NOT_AT_A_TAP
-from tapband.report.headline import coefficients_of, headline, keys
+from tapband.report.headline import headline, keys
 from tapband.report.rounding import fixed, plus_minus, significant
 
 if TYPE_CHECKING:
@@ -27,14 +27,15 @@ NAME = 20
 SOURCES, TAPS = 10, 12
 """Most sources and taps shown."""
 PART = 0.9
+LEAST = 0.001
+"""Negative shares smaller than this go without a word."""
 ASCII = str.maketrans({"\N{MINUS SIGN}": "-"})
 
 
 def print_ranking(results: Results, wanted: Sequence[str], console: Console) -> None:
     """Print what drives the point: groups, sources, taps and wiring of each coefficient asked for."""
     frame = results.tables["coefficients"]
-    names = coefficients_of(frame)
-    chosen = _chosen(wanted, names)
+    chosen = _chosen(wanted, list(dict.fromkeys(results.tables["ranking"]["coefficient"].astype(object))))
     alpha = float(frame["alpha"].iloc[0])
     _say(console, one_line(str(results.meta.get("title") or results.meta.get("name"))))
     _say(console, f"what drives {one_line(keys(frame)[0])}, alpha {alpha:.2f} deg".translate(ASCII))
@@ -153,6 +154,10 @@ def _taps(rows: pd.DataFrame, chord: float, console: Console) -> None:
             significant(float(row["location_leverage"]) * 1e-3 / chord, 2),
         )  # fmt: skip
     console.print(table)
+    negative = taps[np.asarray(taps["share"], dtype=float) < -LEAST]
+    if len(negative):
+        reasons = list(dict.fromkeys(str(note) for note in negative["note"]))
+        _say(console, f"{len(negative)} taps have a share below -0.1 %: {one_line('; '.join(reasons))}")
 
 
 def _wiring(rows: pd.DataFrame) -> Table:

@@ -23,6 +23,7 @@ INDEXED = 4_000
 """Most points that get Sobol' indices by default: a few seconds."""
 ROWS = 400_000
 """Most rows of tap_ranking that are made by default."""
+OPPOSED = "with others of opposite effect"
 ASK = "tapband rank gives them point by point"
 
 
@@ -58,8 +59,13 @@ def ranking(reduced: Reduced, found: Ranking) -> pd.DataFrame:
 def tap_ranking(reduced: Reduced, found: TapRanking) -> pd.DataFrame:
     """One row a point, coefficient and tap, then one for what does not enter at a tap.
 
-    ``location_leverage`` is the change of the coefficient per chord of the tap's place along the contour.
+    ``location_leverage`` is the change of the coefficient per chord of the tap's place along the contour;
+    ``note`` says why a share is negative.
     """
+    sources = [*(f'negative: shares "{one.family.source}" {OPPOSED}' for one in reduced.assembled.loaded), ""]
+    note = np.pad(
+        np.array(sources, dtype=object)[found.against], ((0, 0), (0, 0), (0, 1)), constant_values=""
+    )
     taps, (size, outputs, count) = reduced.campaign.taps, found.share.shape
     names = np.array((*taps.names, NOT_AT_A_TAP), dtype=object)
     place = {"x": np.append(taps.x, np.nan), "y": np.append(taps.y, np.nan)}
@@ -73,6 +79,7 @@ def tap_ranking(reduced: Reduced, found: TapRanking) -> pd.DataFrame:
         "if_lost": _with_rest(found.if_lost),
         "rank": found.rank.ravel(),
         "location_leverage": _with_rest(found.leverage),
+        "note": note.ravel(),
     }
     return pd.DataFrame(columns)
 

@@ -18,7 +18,7 @@ from numpy.typing import NDArray
 
 from tapband.experiment.chain import MEASURED, Equation, moved_nodes, prandtl_glauert, turn
 from tapband.experiment.left_out import left_out
-from tapband.questions.rank_order import places
+from tapband.questions.rank_order import TIE, places
 from tapband.questions.rank_slopes import Place, differentiated
 from tapband.reduction.assemble import Assembled
 from tapband.reduction.live_sets import equation_of
@@ -46,6 +46,8 @@ class TapRanking:
     """(P, m, n) ∂y per chord of the tap's place along the contour."""
     rank: NDArray[np.int64]
     """(P, m, n + 1) by share among live taps; dead taps and the last entry stand behind them."""
+    against: NDArray[np.int64]
+    """(P, m, n) the source that takes most out of a negative share; −1 where the share is not negative."""
 
 
 def rank_taps(assembled: Assembled) -> TapRanking:
@@ -53,12 +55,12 @@ def rank_taps(assembled: Assembled) -> TapRanking:
     estimate = assembled.problem.estimate
     shape = (*estimate.shape, assembled.cp.shape[1])
     weight, leverage, lost = np.zeros(shape), np.zeros(shape), np.full(shape, np.nan)
-    part = np.zeros((*estimate.shape, shape[2] + 1))
+    part, against = np.zeros((*estimate.shape, shape[2] + 1)), np.full(shape, -1)
     changes: dict[int, _Losses] = {}
     for place in differentiated(assembled):
         i = place.at.points
         weight[i], leverage[i] = place.slopes.extra, place.slopes.shift
-        part[i] = _parts(assembled, place)
+        part[i], against[i] = _parts(assembled, place)
         key = id(place.equation)
         if key not in changes:
             changes[key] = _Losses.of(assembled, place.equation)
@@ -67,38 +69,55 @@ def rank_taps(assembled: Assembled) -> TapRanking:
     share = np.divide(part, whole, out=np.zeros_like(part), where=whole > 0.0)
     for values in (weight, share, lost, leverage):
         values[np.isnan(estimate)] = np.nan
-    shown = np.concatenate(
-        [np.where(assembled.nominal.live[:, None], share[..., :-1], np.nan), share[..., -1:]], axis=2
+    against[~(share[..., :-1] < -TIE)] = -1
+    behind = np.full((*estimate.shape, 1), shape[2] + 1)
+    live = np.where(assembled.nominal.live[:, None], share[..., :-1], np.nan)
+    return TapRanking(
+        weight=weight,
+        share=share,
+        if_lost=lost,
+        leverage=leverage,
+        rank=np.concatenate([places(live), behind], axis=2),
+        against=against,
     )
-    rank = np.concatenate([places(shown[..., :-1]), np.full((*estimate.shape, 1), shape[2] + 1)], axis=2)
-    return TapRanking(weight=weight, share=share, if_lost=lost, leverage=leverage, rank=rank)
 
 
-def _parts(assembled: Assembled, place: Place) -> Array:
-    """(P, m, n + 1) Σ_l s_il S_l of the points of one block, the last entry Σ_l s_0l S_l."""
-    i = place.at.points
-    total = np.zeros((*place.slopes.extra.shape[:2], place.slopes.extra.shape[2] + 1))
-    for loaded, sensitivity in zip(assembled.loaded, assembled.problem.sensitivity, strict=True):
-        whole = sensitivity[i]
-        _add(total, loaded, whole, place)
-    return total
+def _parts(assembled: Assembled, place: Place) -> tuple[Array, NDArray[np.int64]]:
+    """(P, m, n + 1) Σ_l s_il S_l at the points of one block, the last entry Σ_l s_0l S_l; then (P, m, n) the
+    source whose part at a tap is the most negative."""
+    i, shape = place.at.points, place.slopes.extra.shape
+    total, rest = np.zeros(shape), np.zeros(shape[:2])
+    worst, against = np.zeros(shape), np.full(shape, -1)
+    for s, (loaded, sensitivity) in enumerate(
+        zip(assembled.loaded, assembled.problem.sensitivity, strict=True)
+    ):
+        at_taps, elsewhere = _part(loaded, sensitivity[i], place)
+        rest += elsewhere
+        if at_taps is not None:
+            total += at_taps
+            against[at_taps < worst] = s
+            np.minimum(worst, at_taps, out=worst)
+    return np.concatenate([total, rest[..., None]], axis=2), against
 
 
-def _add(total: Array, loaded: Loaded, whole: Array, place: Place) -> None:
-    """Add what one source brings; ``whole`` (P, m, G) is its sensitivity through every entry together."""
+def _part(loaded: Loaded, whole: Array, place: Place) -> tuple[Array | None, Array]:
+    """What one source brings at each tap (P, m, n) and elsewhere (P, m); ``whole`` (P, m, G) is S."""
     i, slopes = place.at.points, place.slopes
+    at_taps: Array | None = None
+    elsewhere = np.zeros(whole.shape[:2])
     for entry in loaded.entries:
         load = entry.load[i]
         if entry.slot == "added":
-            total[..., -1] += np.sum(load * whole[..., entry.member], axis=2)
+            elsewhere += np.sum(load * whole[..., entry.member], axis=2)
         elif entry.on_taps:
             size = entry.member.size
             own = size <= whole.shape[2] and np.array_equal(entry.member, np.arange(size))
             partner = whole[..., :size] if own else whole[..., entry.member]
-            total[..., :-1] += getattr(slopes, entry.slot) * load[:, None, :] * partner
+            part = getattr(slopes, entry.slot) * load[:, None, :] * partner
+            at_taps = part if at_taps is None else at_taps + part
         else:
-            scalar = slopes.scalars[entry.slot] * load[:, None]
-            total[..., -1] += scalar * whole[..., entry.member[0]]
+            elsewhere += slopes.scalars[entry.slot] * load[:, None] * whole[..., entry.member[0]]
+    return at_taps, elsewhere
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
