@@ -10,7 +10,7 @@ from time import perf_counter
 
 import numpy as np
 import pytest
-from scipy.special import ndtri, stdtrit
+from scipy.special import ndtri, stdtr, stdtrit
 from selenium.webdriver import Chrome
 
 from browser_checks import SHOWN, move
@@ -43,6 +43,17 @@ def test_coverage_factor_equals_the_quantile_of_student_to_nine_digits(show: Sho
         got = browser.execute_script(call, nu.tolist())
         # 1e-9: a thousandth of what the shown intervals are held to.
         assert got == pytest.approx(stdtrit(nu, 0.5 + 0.5 * level), rel=1e-9)
+
+
+def test_probability_below_equals_the_law_of_student_to_six_digits(show: Show, page: Path) -> None:
+    code = files("tapband.report").joinpath("quantile.js").read_text(encoding="utf-8")
+    browser = show(page)
+    t = np.linspace(-6.0, 6.0, 25)
+    for nu in (1.0, 2.5, 8.0, 60.0, 5e3, 1e12):
+        got = browser.execute_script(
+            f"{code}\nreturn arguments[0].map((t) => studentBelow(t, {nu}));", t.tolist()
+        )
+        assert got == pytest.approx(stdtr(nu, t), abs=2e-7)  # the normal branch is good to 1.2e-7
 
 
 @pytest.mark.parametrize("factor", [0.0, 0.5, 1.35, 4.0])

@@ -90,6 +90,23 @@ def test_bands_of_cp_follow_their_sources(show: Show, starter: Path) -> None:
     assert browser.execute_script(band) != before
 
 
+def test_decisions_follow_a_slider_and_come_back(show: Show, starter: Path) -> None:
+    browser = show(starter / "results" / "report.html")
+    cells = (
+        "return [...document.getElementById('rows-decisions').rows[0].cells].map((cell) => cell.textContent)"
+    )
+    declared = browser.execute_script(cells)
+    assert declared[-1] == "meets"
+    for source in ("spanwise uniformity", "module zero", "hole size and burrs", "tap location", "tap row"):
+        move(browser, source, 4)
+    changed = browser.execute_script(cells)
+    _, _, half, _, _ = browser.execute_script(SHOWN, "cm")
+    assert changed[-6] != declared[-6]
+    assert half > 0.002  # so that the guard band, one U, is another
+    browser.execute_script("document.getElementById('reset').click()")
+    assert browser.execute_script(cells) == declared
+
+
 def test_rankings_and_wiring_of_a_point_are_drawn_and_tabled(show: Show, starter: Path) -> None:
     browser = show(starter / "results" / "report.html")
     for figure, rows in (("tap-section", "tap-rows"), ("wiring", "wiring-rows"), ("tap-chord", "group-rows")):

@@ -84,7 +84,7 @@ def _column(shown: Headline) -> list[str]:
 def _targets(results: Outcome, frame: pd.DataFrame) -> list[str]:
     labels = keys(frame)
     targets = results.campaign.plan.targets if results.campaign else ()
-    return [_score(verdict, labels) for verdict in verdicts(frame, targets)]
+    return [_score(verdict, labels) for verdict in verdicts(frame, targets, results.tables.get("targets"))]
 
 
 def _score(verdict: Verdict, labels: Sequence[str]) -> str:

@@ -19,7 +19,7 @@ if TYPE_CHECKING:
     import pandas as pd
 
 Array = NDArray[np.float64]
-SAME_ANGLE = 1e-9
+SAME_ANGLE = 1e-7
 """[deg] Slack of an angle at the end of a range, for rounding."""
 
 
@@ -67,19 +67,34 @@ def headline(frame: pd.DataFrame, coefficient: str) -> Headline:
     return Headline(estimate=_numbers(frame, coefficient), low=low, high=high, from_trials=no)
 
 
-def verdicts(frame: pd.DataFrame, targets: Sequence[Target]) -> tuple[Verdict, ...]:
-    """Each target against the headline half-widths of the points it names."""
-    return tuple(_verdict(frame, target) for target in targets if f"{target.coefficient}_U" in frame.columns)
+def verdicts(
+    frame: pd.DataFrame, targets: Sequence[Target], named: pd.DataFrame | None = None
+) -> tuple[Verdict, ...]:
+    """Each target against the headline half-widths of the points it names.
+
+    ``named`` is the table of targets, a row a target and point, where the results have one.
+    """
+    return tuple(
+        _verdict(frame, target, named) for target in targets if f"{target.coefficient}_U" in frame.columns
+    )
 
 
-def _verdict(frame: pd.DataFrame, target: Target) -> Verdict:
-    rows = np.flatnonzero(_named(frame, target))
+def _verdict(frame: pd.DataFrame, target: Target, named: pd.DataFrame | None) -> Verdict:
+    rows = np.flatnonzero(_among(frame, target) if named is None else _listed(frame, target, named))
     half = headline(frame, target.coefficient).half[rows]
     # A width without a number meets nothing; one part in 1e9 is rounding.
     return Verdict(target=target, rows=rows, half=half, met=half <= target.expanded * (1 + 1e-9))
 
 
-def _named(frame: pd.DataFrame, target: Target) -> NDArray[np.bool_]:
+def _listed(frame: pd.DataFrame, target: Target, named: pd.DataFrame) -> NDArray[np.bool_]:
+    rows = named.loc[np.asarray(named["coefficient"].astype(object) == target.coefficient)]
+    wanted = set(np.array(keys(rows), dtype=object)[_numbers(rows, "target") == target.expanded])
+    listed = np.array([key in wanted for key in keys(frame)], dtype=bool)
+    # Two targets of one size on one coefficient differ by their points alone.
+    return listed & _among(frame, target) if target.points is None else listed
+
+
+def _among(frame: pd.DataFrame, target: Target) -> NDArray[np.bool_]:
     if target.points is not None:
         pairs = zip(keys(frame), frame["point"], strict=True)
         return np.array([key in target.points or name in target.points for key, name in pairs], dtype=bool)

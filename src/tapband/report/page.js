@@ -110,6 +110,28 @@ function showCells() {
   }
 }
 
+// --- decisions --------------------------------------------------------------------------------------------
+
+const declaredDecisions = [...($("rows-decisions")?.rows ?? [])].map((row) => [...row.cells].map((cell) => cell.textContent));
+
+function showDecisions() {
+  declaredDecisions.forEach((words, i) => {
+    const asked = data.decisions[i], { cells } = $("rows-decisions").rows[i], n = words.length;
+    if (!asked || asked.guard === null) return;
+    const said = budget.changed ? decided(asked) : [words[n - 6], words[n - 3], words[n - 1]];
+    [n - 6, n - 3, n - 1].forEach((at, k) => { cells[at].textContent = said[k]; });
+  });
+}
+
+// Value and half-width, probability by the law of the linearised interval, and the answer with the guard band.
+function decided({ point, coefficient, lower, upper, guard }) {
+  const { estimate, half } = budget.interval(point, coefficient), at = point * budget.outputs + coefficient, u = budget.u[at];
+  const low = lower ?? -Infinity, high = upper ?? Infinity, band = guard * half, d = decimals(half);
+  const below = (end) => (u > 0 ? studentBelow((end - estimate) / u, budget.nu[at]) : end >= estimate ? 1 : 0);
+  const answer = low + band <= estimate && estimate <= high - band ? "meets" : estimate < low - band || estimate > high + band ? "fails" : "undecided";
+  return [`${fixed(estimate, d)} ± ${fixed(half, d)}`, `${fixed(100 * Math.max(below(high) - below(low), 0), 1)} %`, answer];
+}
+
 // --- one point --------------------------------------------------------------------------------------------
 
 function showPoint() {
@@ -217,5 +239,5 @@ function chooseSet(i) {
 
 function showAll() {
   document.documentElement.dataset.changed = budget.changed ? "yes" : "no";
-  showTargets(); showPolars(); showDrivers(); showCells(); showPoint(); showSliders();
+  showTargets(); showPolars(); showDrivers(); showCells(); showDecisions(); showPoint(); showSliders();
 }

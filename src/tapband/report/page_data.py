@@ -52,7 +52,7 @@ def page_data(results: Outcome, campaign: Campaign) -> dict[str, object]:
         "coefficients": [_coefficient(frame, name) for name in names],
         "targets": [
             {"coefficient": v.target.coefficient, "expanded": v.target.expanded, "rows": v.rows.tolist()}
-            for v in verdicts(frame, campaign.plan.targets)
+            for v in verdicts(frame, campaign.plan.targets, results.tables.get("targets"))
         ],
         **_budget(results.tables.get("budget"), keys(frame), names, campaign),
         "taps": _taps(results, keys(frame), campaign),
@@ -61,6 +61,7 @@ def page_data(results: Outcome, campaign: Campaign) -> dict[str, object]:
         "tapShares": tap_shares(results.tables.get("tap_ranking"), keys(frame), campaign.taps.names),
         "wirings": wirings(results.tables.get("wiring_comparison"), keys(frame)),
         "groups": group_indices(results.tables.get("ranking"), keys(frame)),
+        "decisions": _decisions(results.tables.get("decisions"), keys(frame), names, campaign),
         "file": campaign.name,
     }  # fmt: skip
 
@@ -177,6 +178,29 @@ def _correlation(
     out = np.broadcast_to(np.eye(len(known)), (len(labels), len(known), len(known))).copy()
     out[p, a, b] = out[p, b, a] = np.asarray(rows["correlation"], dtype=float)
     return {"names": known, "r": packed(out, "<f4")}
+
+
+def _decisions(
+    frame: pd.DataFrame | None, labels: Sequence[str], names: Sequence[str], campaign: Campaign
+) -> list[dict[str, object]]:
+    """Each decision in the order of its table: point, coefficient, limits (null: none) and guard [U]."""
+    if frame is None or "run" not in frame.columns:  # the point alone may be ambiguous
+        return []
+    rows = zip(
+        codes(keys(frame), labels),
+        codes(frame["coefficient"], names),
+        frame["lower"],
+        frame["upper"],
+        strict=True,
+    )
+    guards = {(limit.coefficient, limit.lower, limit.upper): limit.guard for limit in campaign.plan.limits}
+    return [
+        {
+            "point": int(p), "coefficient": int(j), "lower": low, "upper": high,
+            "guard": guards.get((names[j], low, high)),
+        }
+        for p, j, low, high in rows
+    ]  # fmt: skip
 
 
 def _outline(campaign: Campaign) -> dict[str, object]:

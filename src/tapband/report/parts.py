@@ -38,6 +38,7 @@ class Column:
 class Table:
     """A table ready to print: headings (text, is a number), rows, and what was left out."""
 
+    name: str
     title: str
     note: str
     heads: tuple[tuple[str, bool], ...]
@@ -149,7 +150,7 @@ def table_of(name: str, frame: pd.DataFrame, title: str, note: str, columns: Seq
     rows = [dict(zip(names, values, strict=True)) for values in zip(*raw.values(), strict=True)]
     left = len(flat) - MOST_ROWS
     return Table(
-        title=title, note=note, heads=tuple((c.head, c.number) for c in wanted),
+        name=name, title=title, note=note, heads=tuple((c.head, c.number) for c in wanted),
         rows=tuple(tuple(c.write(row) for c in wanted) for row in rows),
         left=f"{left} more rows in {name}.csv" if left > 0 else "",
     )  # fmt: skip

@@ -39,6 +39,19 @@ function studentTail(t, nu, logBeta) {
   return { tail, density };
 }
 
+// P(T ≤ t); past ν = 1e5 by the normal law (Numerical Recipes, 6.2, to 1e-7).
+function studentBelow(t, nu) {
+  if (!Number.isFinite(t)) return t > 0 ? 1 : 0;
+  let tail;
+  if (nu < 1e5) tail = studentTail(t, nu, lnGamma(0.5 * nu) + 0.5 * Math.log(Math.PI) - lnGamma(0.5 * nu + 0.5)).tail;
+  else {
+    const z = Math.abs(t) / Math.SQRT2, s = 1 / (1 + 0.5 * z);
+    tail = s * Math.exp(-z * z - 1.26551223 + s * (1.00002368 + s * (0.37409196 + s * (0.09678418 + s * (-0.18628806
+      + s * (0.27886807 + s * (-1.13520398 + s * (1.48851587 + s * (-0.82215223 + s * 0.17087277)))))))));
+  }
+  return t > 0 ? 1 - 0.5 * tail : 0.5 * tail;
+}
+
 // Expansion of the quantile about the normal one z in powers of 1/ν (Abramowitz and Stegun 26.7.5).
 function studentExpansion(z, nu) {
   const s = z * z;

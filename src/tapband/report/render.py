@@ -78,7 +78,7 @@ def _words(results: Outcome, campaign: Campaign) -> dict[str, object]:
         "forecast": meta.get("kind") == "forecast",
         "lead": _lead(results, campaign, percent),
         "percent": percent,
-        "targets": summary.target_words(frame, campaign),
+        "targets": summary.target_words(frame, campaign, results.tables.get("targets")),
         "sketches": [polar_sketch(frame, name, percent) for name in main],
         "driver_of": main[0] if main else "",
         "drivers": summary.driver_words(budget, main[0], campaign) if main else [],

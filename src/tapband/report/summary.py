@@ -27,9 +27,9 @@ ENDINGS = (
 DRIVERS = 8
 
 
-def target_words(frame: pd.DataFrame, campaign: Campaign) -> list[Words]:
+def target_words(frame: pd.DataFrame, campaign: Campaign, named: pd.DataFrame | None) -> list[Words]:
     """Each target and whether it is met."""
-    return [_target(verdict) for verdict in verdicts(frame, campaign.plan.targets)]
+    return [_target(verdict) for verdict in verdicts(frame, campaign.plan.targets, named)]
 
 
 def _target(verdict: Verdict) -> Words:
