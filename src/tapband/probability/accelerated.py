@@ -21,7 +21,8 @@ from numpy.typing import NDArray
 
 from tapband.probability import plain
 from tapband.probability.block import Block, process
-from tapband.probability.model import ROUNDING, Model
+from tapband.probability.coverage import ROUNDING
+from tapband.probability.model import Model
 from tapband.probability.outcome import NAMES, Numbers, Outcome
 from tapband.probability.strategy import Choice, choices
 

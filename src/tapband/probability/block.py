@@ -12,15 +12,17 @@ import numpy as np
 from numpy.typing import NDArray
 
 from tapband.probability.coverage import tolerance
-from tapband.probability.draws import FINE
 from tapband.probability.curve import FRACTIONS
+from tapband.probability.draws import FINE
 from tapband.probability.estimate import Estimate, averaged, estimated
+from tapband.probability.line_trials import line
 from tapband.probability.model import Model
 from tapband.probability.outcome import NAMES
 from tapband.probability.plain import Plan
+from tapband.probability.probes import probe, shape_error
 from tapband.probability.smoothing import TableBase
 from tapband.probability.strategy import Choice, Direction, direction, fallback
-from tapband.probability.trials import Tiles, Trials, integrated, line, probe, shape_error
+from tapband.probability.trials import Tiles, Trials, integrated
 
 Array = NDArray[np.float64]
 Counts = NDArray[np.int64]
@@ -153,10 +155,10 @@ def _checked(model: Model, points: range, own: list[Choice], plan: Plan) -> list
     error = shape_error(model, points, own[0].out, Tiles(seed=plan.seed, size=FINE, count=FINE))
     rows = np.array([choice.integrated for choice in own], dtype=np.bool_)
     # A twentieth of δ is a tenth of the numerical error that is tolerated.
-    good = ~rows | (error * model.u[where] < 0.05 * tolerance(model.u[where]))
+    good: Mask = ~rows | (error * model.u[where] < 0.05 * tolerance(model.u[where]))
     return [
-        choice if fine else fallback(model, point)
-        for point, choice, fine in zip(points, own, good.all(axis=1), strict=True)
+        choice if fine.all() else fallback(model, point)
+        for point, choice, fine in zip(points, own, good, strict=True)
     ]
 
 

@@ -12,7 +12,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
-from itertools import combinations
+from itertools import combinations, pairwise
 
 import numpy as np
 from numpy.typing import NDArray
@@ -109,7 +109,7 @@ class Regression:
     def __init__(self, controls: Array) -> None:
         self._trials = n = controls.shape[-1]
         edges = [n * k // _FOLDS for k in range(_FOLDS + 1)]
-        self._folds = [slice(a, b) for a, b in zip(edges[:-1], edges[1:], strict=True)]
+        self._folds = [slice(a, b) for a, b in pairwise(edges)]
         self._controls = controls
         self._weights = np.full((len(controls), n), 1.0 / n)
         self._inverses: list[Array] = []
@@ -137,7 +137,8 @@ class Regression:
 
     def mean(self, values: Array) -> Array:
         """Mean (Pb, m) of values (Pb, m, N)."""
-        return (values * self._weights[:, None, :]).sum(axis=-1)
+        result: Array = (values * self._weights[:, None, :]).sum(axis=-1)
+        return result
 
     def spread(self, values: Array) -> tuple[Array, Array]:
         """Standard deviation of that mean, and its own relative standard deviation, by which it is enlarged.

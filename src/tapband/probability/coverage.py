@@ -16,7 +16,7 @@ if TYPE_CHECKING:
 
 Array = NDArray[np.float64]
 ROUNDING = 1e-13
-"""Relative rounding of a mean over trials."""
+"""Rounding of a mean over trials, relative to the largest output."""
 
 
 def tolerance(u: ArrayLike, digits: int = 2) -> Array:

@@ -49,7 +49,7 @@ _BEYOND = 1e-9
 _DAMPING = 0.0125
 _SMALL = 1.5
 """Half-width times frequency up to which four terms of log φ do (the next is below 1e-4 of a dead φ)."""
-_NODES, _WEIGHTS = np.polynomial.legendre.leggauss(16)
+_NODES, _WEIGHTS = (np.asarray(v, dtype=np.float64) for v in np.polynomial.legendre.leggauss(16))
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -95,7 +95,7 @@ class LinearLaw:
         low, high = np.zeros(self.count), np.full(self.count, np.nan)
         for part in self.parts:
             high[part.rows] = part.reach
-        x = np.minimum(start, high)
+        x: Array = np.minimum(start, high)
         moving = np.isfinite(x)
         for _ in range(60):
             cdf, pdf = self.at(x)
@@ -105,7 +105,9 @@ class LinearLaw:
             step = (cdf - probability) / np.maximum(pdf, 1e-300)
             new = np.where((x - step >= low) & (x - step <= high), x - step, 0.5 * (low + high))
             # A row stops by itself, so that the rows beside it cannot move its last digit.
-            x, moving = np.where(moving, new, x), moving & (np.abs(new - x) > within)
+            done = np.abs(new - x) <= within
+            x = np.where(moving, new, x)
+            moving = moving & ~done
             if not moving.any():
                 break
         return x
@@ -152,11 +154,13 @@ def _quantile_bound(terms: Sequence[Term], rows: int, tail: float) -> Array:
 
 def _ladder(rungs: Sequence[float], need: Array, otherwise: float) -> Array:
     """The first rung not below each need, ``otherwise`` past the last."""
-    return np.asarray([*rungs, otherwise])[np.searchsorted(rungs, need)]
+    steps: Array = np.asarray([*rungs, otherwise])
+    return steps[np.searchsorted(rungs, need)]
 
 
 def _length(size: Array) -> Array:
-    return np.sqrt((size * size).sum(axis=-1))
+    square: Array = (size * size).sum(axis=-1)
+    return np.sqrt(square)
 
 
 def _envelope(terms: Sequence[Term], rows: Rows, omega: float) -> Array:
@@ -220,9 +224,9 @@ def _grid(last: float, reach: float, period: float) -> tuple[Array, Array]:
         x = 0.5 * (1.0 + _NODES)
         omega = np.concatenate([edges[0] * x * x, (edges[:-1, None] + half * (1.0 + _NODES)).ravel()])
         weight = np.concatenate([edges[0] * x * _WEIGHTS, (half * _WEIGHTS).ravel()])
-    omega.setflags(write=False)
-    weight.setflags(write=False)
-    return omega, weight
+    grid: Array = np.stack([omega, weight])
+    grid.setflags(write=False)
+    return grid[0], grid[1]
 
 
 def _part(terms: Sequence[Term], rows: Rows, last: float, reach: float, period: float) -> _Part:

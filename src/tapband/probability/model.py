@@ -9,14 +9,13 @@ from numpy.typing import NDArray
 
 from tapband.nouns.problem import Family, Problem
 from tapband.nouns.source import Shape
+from tapband.probability.coverage import ROUNDING
 from tapband.probability.distributions import variance
 from tapband.probability.linear_law import LinearLaw, Term, linear_law
 
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
 
-ROUNDING = 1e-13
-"""Share of the largest output below which a standard uncertainty is rounding."""
 _NEGLIGIBLE = 1e-12
 """Share of variance below which a contribution is rounding (a common zero error on a closed contour)."""
 

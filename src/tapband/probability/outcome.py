@@ -87,8 +87,8 @@ def tolerance_met(numbers: Numbers, fallback_u: Array) -> NDArray[np.bool_]:
     delta = tolerance(np.where(np.isnan(numbers.u), fallback_u, numbers.u))
     rounding = ROUNDING * np.maximum(np.abs(np.nan_to_num(numbers.mean)), 1.0)
     met = np.ones(numbers.low.shape, dtype=bool)
-    for value, sd in (("mean", "mean_sd"), ("u", "u_sd"), ("low", "low_sd"), ("high", "high_sd")):
-        exists = ~np.isnan(getattr(numbers, value))
-        spread = getattr(numbers, sd)
-        met &= ~exists | (2.0 * spread < delta) | (spread <= rounding)
+    for value, spread in ((numbers.mean, numbers.mean_sd), (numbers.u, numbers.u_sd)):
+        met &= np.isnan(value + spread) | (2.0 * spread < delta) | (spread <= rounding)
+    for spread in (numbers.low_sd, numbers.high_sd):
+        met &= (2.0 * spread < delta) | (spread <= rounding)
     return met

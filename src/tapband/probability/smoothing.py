@@ -111,11 +111,11 @@ class TableBase:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Normal:
-    """Given the draws, the output is y + s·z exactly, z standard normal, and the linear model l + s0·z."""
+    """Given the draws, the output is y + s·z exactly, z standard normal, and the linear model linear + s0·z."""
 
     y: Array
     s: Array
-    l: Array  # noqa: E741  (the linear model's values beside y)
+    linear: Array
     s0: Array
 
     def at(self, t: Array) -> tuple[Array, Array]:
@@ -124,7 +124,7 @@ class Normal:
         Φ(x + h) − Φ(x − h) = 2hφ(x)[1 + h²(x² − 1)/6 + h⁴(x⁴ − 6x² + 3)/120 + …], six times quicker than
         two Φ and right to 1e-8 while 2h is below 0.4.
         """
-        upper, lower = (t[..., None] - self.y) / self.s, (t[..., None] - self.l) / self.s0
+        upper, lower = (t[..., None] - self.y) / self.s, (t[..., None] - self.linear) / self.s0
         upper_density, lower_density = np.exp(-0.5 * upper * upper), np.exp(-0.5 * lower * lower)
         middle, half = 0.5 * (upper + lower), 0.5 * (upper - lower)
         x2, h2 = middle * middle, half * half
@@ -138,18 +138,18 @@ class Normal:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Integrated:
-    """Given the draws, the output is y + s·base exactly, and the linear model l + s0·base."""
+    """Given the draws, the output is y + s·base exactly, and the linear model linear + s0·base."""
 
     base: Base
     y: Array
     s: Array
-    l: Array  # noqa: E741  (the linear model's values beside y)
+    linear: Array
     s0: Array
 
     def at(self, t: Array) -> tuple[Array, Array]:
         """See :class:`Smoothing`."""
         upper, upper_density = self.base.at((t[..., None] - self.y) / self.s)
-        lower, lower_density = self.base.at((t[..., None] - self.l) / self.s0)
+        lower, lower_density = self.base.at((t[..., None] - self.linear) / self.s0)
         return upper - lower, upper_density / self.s - lower_density / self.s0
 
 
@@ -173,7 +173,7 @@ class Line:
     """η of the trial (Pb, 1, N)."""
     y: Array
     """The output at the trial."""
-    l: Array  # noqa: E741
+    linear: Array
     """The linear model on the line at η = 0."""
     slope: Array
     """|∂l/∂η|"""
@@ -191,7 +191,7 @@ class Line:
         repair = (self.y <= level).astype(np.float64) - inside
         steep = np.abs(self._slope(near)), np.abs(self._slope(far))
         density = near_density / np.maximum(steep[0], _FLAT) + far_density / np.maximum(steep[1], _FLAT)
-        lower, lower_density = self.base.at((level - self.l) / self.slope)
+        lower, lower_density = self.base.at((level - self.linear) / self.slope)
         return upper - lower + repair, np.where(real, density, 0.0) - lower_density / self.slope
 
     def _roots(self, level: Array) -> tuple[Array, Array, NDArray[np.bool_], NDArray[np.bool_]]:

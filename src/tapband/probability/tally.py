@@ -115,9 +115,17 @@ class Tally:
         return Numbers(
             mean=np.where(exists.mean, self._origin + shift, np.nan),
             u=np.where(exists.u, spread, np.nan),
-            low=low, high=high, short_low=short_low, short_high=short_high,
-            mean_sd=np.where(exists.mean_scatter, sd[0], np.nan), u_sd=np.where(exists.u_scatter, sd[1], np.nan), low_sd=sd[2], high_sd=sd[3], short_low_sd=sd[4], short_high_sd=sd[5],
-        )  # fmt: skip
+            low=low,
+            high=high,
+            short_low=short_low,
+            short_high=short_high,
+            mean_sd=np.where(exists.mean_scatter, sd[0], np.nan),
+            u_sd=np.where(exists.u_scatter, sd[1], np.nan),
+            low_sd=sd[2],
+            high_sd=sd[3],
+            short_low_sd=sd[4],
+            short_high_sd=sd[5],
+        )
 
     def _scatter(self) -> Array:
         """Standard deviations (6, m) from the scatter between blocks (JCGM 101:2008, 7.9.4 f).
