@@ -18,11 +18,11 @@ from tapband.experiment.quadrature import Quadrature
 from tapband.experiment.rotate import wind_axes
 from tapband.experiment.rule import moved, refused
 from tapband.experiment.stream import Stream, solve
+from tapband.nouns.symbols import MEASURED
 
 Array = NDArray[np.float64]
 Values = NDArray[Any]
 
-MEASURED = ("cn", "ct", "cm", "cl", "cd_pressure")
 REFERENCE = tuple(f"{name}_ref" for name in MEASURED)
 
 

@@ -6,9 +6,10 @@ from dataclasses import dataclass
 
 from tapband.files.units import ANGLE, LENGTH, NUMBER, PRESSURE
 from tapband.nouns.campaign import COEFFICIENT, STATIC, STREAM_CHANNELS, TOTAL, VACUUM
+from tapband.nouns.symbols import MEASURED
 
 CHORDS = "length in chords"
-COEFFICIENTS = ("cn", "ct", "cm", "cl", "cd_pressure")
+COEFFICIENTS = MEASURED
 AUTOMATIC = (
     "finite tap spacing",
     "trailing edge",

@@ -9,18 +9,15 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
+from tapband.nouns.symbols import ENDINGS, MEASURED, QUANTITIES
+
 if TYPE_CHECKING:
     import pandas as pd
 
 Cell = str | int | float | bool | None
 
-COEFFICIENTS = ("cn", "ct", "cm", "cl", "cd_pressure")
-"""The coefficients as measured, in the order of every table."""
-
-SUFFIXES = (
-    "", "_u", "_b", "_s", "_dof", "_k", "_U", "_low", "_high",
-    "_mc", "_mc_u", "_mc_low", "_mc_high", "_short_low", "_short_high", "_agrees",
-)  # fmt: skip
+COEFFICIENTS = MEASURED
+SUFFIXES = tuple(ENDINGS)
 """What follows a coefficient's name in ``coefficients.csv``."""
 
 ORDER: Mapping[str, tuple[str, ...]] = MappingProxyType(
@@ -65,9 +62,9 @@ ORDER: Mapping[str, tuple[str, ...]] = MappingProxyType(
 
 UNITS: Mapping[str, str] = MappingProxyType(
     {
-        "alpha": "deg", "alpha_u": "deg", "nominal_alpha": "deg", "tilt": "deg",
-        "q": "Pa", "q_u": "Pa", "lowest": "Pa", "highest": "Pa", "full_scale": "Pa", "t_total": "K",
-        "x": "chord", "y": "chord",
+        **{name: symbol.unit for name, symbol in QUANTITIES.items() if symbol.unit != "1"},
+        "alpha_u": "deg", "nominal_alpha": "deg", "tilt": "deg",
+        "q_u": "Pa", "lowest": "Pa", "highest": "Pa", "full_scale": "Pa",
     }
 )  # fmt: skip
 

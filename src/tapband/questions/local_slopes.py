@@ -13,7 +13,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from tapband.experiment.chain import MEASURED
+from tapband.nouns.symbols import MEASURED
 from tapband.questions.latents import Latents
 from tapband.questions.pairing import Node, nodes_of, slope_at
 from tapband.questions.polars import MACH_GAP

@@ -16,8 +16,9 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
-from tapband.experiment.chain import MEASURED, Equation, moved_nodes, prandtl_glauert, turn
+from tapband.experiment.chain import Equation, moved_nodes, prandtl_glauert, turn
 from tapband.experiment.left_out import left_out
+from tapband.nouns.symbols import MEASURED
 from tapband.questions.rank_order import TIE, places
 from tapband.questions.rank_slopes import Place, differentiated
 from tapband.reduction.assemble import Assembled

@@ -13,8 +13,8 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
-from tapband.experiment.chain import MEASURED
 from tapband.nouns.problem import Draws, Family
+from tapband.nouns.symbols import MEASURED
 from tapband.probability.coverage import agreement
 from tapband.probability.linearised import Linearised, propagate
 from tapband.probability.montecarlo import MonteCarlo, run

@@ -7,16 +7,15 @@ from __future__ import annotations
 
 import numpy as np
 
+from tapband.nouns.symbols import MEASURED
 from tapband.reduction import Reduced
-
-STATED = ("cn", "ct", "cm", "cl", "cd_pressure")
 
 
 def statements(reduced: Reduced) -> dict[str, list[str]]:
     """For each point, by its key, one sentence a coefficient."""
     keys = reduced.assembled.points.keys
     return {
-        key: [_sentence(reduced, p, j) for j, name in enumerate(reduced.outputs) if name in STATED]
+        key: [_sentence(reduced, p, j) for j, name in enumerate(reduced.outputs) if name in MEASURED]
         for p, key in enumerate(keys)
     }
 

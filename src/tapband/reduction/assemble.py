@@ -8,13 +8,14 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from tapband.experiment.chain import MEASURED, REFERENCE, Equation, Inputs, evaluate
+from tapband.experiment.chain import REFERENCE, Equation, Inputs, evaluate
 from tapband.experiment.contour import Contour
 from tapband.experiment.jacobian import jacobian
 from tapband.experiment.rowwise import each_row
 from tapband.experiment.rule import concerns, refused
 from tapband.experiment.stream import Stream, solve
 from tapband.nouns.campaign import Campaign, Points
+from tapband.nouns.symbols import MEASURED
 from tapband.reduction.automatic import automatic, scatter
 from tapband.reduction.corrections import Corrected, correct
 from tapband.reduction.live_sets import LiveSet, contour_of, live_sets

@@ -7,9 +7,9 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
-from tapband.experiment.chain import MEASURED
 from tapband.nouns.campaign import Campaign, Points
 from tapband.nouns.source import Source
+from tapband.nouns.symbols import MEASURED
 from tapband.reduction.loads import PER_UNIT, middle, ports_of, unit_of
 from tapband.reduction.nominal import Nominal
 

@@ -10,6 +10,7 @@ from numpy.typing import NDArray
 from tapband.nouns.campaign import Campaign, Points
 from tapband.nouns.problem import Family
 from tapband.nouns.source import COMMON, INDEPENDENT, Scale, Shape, Size, Source
+from tapband.nouns.symbols import MEASURED
 from tapband.reduction.nominal import Nominal
 
 Array = NDArray[np.float64]
@@ -172,7 +173,7 @@ def _entry(
     own = campaign.channels.get(slot)
     scale = source.full_scale if source.full_scale is not None else own.full_scale if own else np.nan
     half = spread(source.size, reading, np.asarray(scale))
-    if act in ("cn", "ct", "cm", "cl", "cd_pressure"):
+    if act in MEASURED:
         return Entry(
             slot="added", member=np.zeros(1, dtype=np.int64), load=nominal.added_rows(act, half)
         ), half

@@ -8,9 +8,9 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from tapband.experiment.chain import MEASURED
 from tapband.experiment.stream import solve
 from tapband.nouns.campaign import Campaign, Points
+from tapband.nouns.symbols import MEASURED
 
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
