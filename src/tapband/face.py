@@ -216,6 +216,12 @@ class Results:
                         numbers[name] = numbers[name] + by_latent[j, g] * variable
         return numbers
 
+    def rank(self, point: str, sobol: str | None = None) -> Results:
+        """What drives one point, by source too; see the function of that name."""
+        if self.campaign is None:
+            raise QuestionError("rank: needs the campaign; got results read from a folder; reduce it again")
+        return rank(self.campaign, point, sobol)
+
     def plot_groups(self, coefficient: str, point: str, ax: Axes | None = None) -> Axes:
         """Linear shares and Sobol' indices of the groups of sources at one point."""
         from tapband.report.figures_rank import groups

@@ -11,6 +11,7 @@ from tapband.files.write_text import one_line
 from tapband.nouns.errors import QuestionError
 from tapband.questions.rank_order import carriers
 from tapband.questions.rank_taps import NOT_AT_A_TAP
+from tapband.questions.rank_wiring import TOGETHER
 from tapband.report.headline import headline, keys
 from tapband.report.rounding import fixed, plus_minus, significant
 
@@ -22,10 +23,10 @@ if TYPE_CHECKING:
     from tapband.face import Results
 
 FIRST = ("cl", "cd_pressure", "cm")
-NAME = 20
+NAME = 17
 """Widest name shown."""
-SOURCES, TAPS = 10, 12
-"""Most sources and taps shown."""
+SOURCES, TAPS, WIRED = 10, 12, 8
+"""Most sources, taps and sources of tap pressure shown."""
 PART = 0.9
 LEAST = 0.001
 """Negative shares smaller than this go without a word."""
@@ -143,7 +144,8 @@ def _taps(rows: pd.DataFrame, chord: float, console: Console) -> None:
         _say(console, "no part of its variance enters at the taps")
         return
     picked = taps.iloc[found]
-    names = ", ".join(one_line(str(tap)) for tap in picked["tap"])
+    named = [one_line(str(tap)) for tap in picked["tap"]]
+    names = ", ".join(named[:TAPS]) + (f" and {len(named) - TAPS} more" if len(named) > TAPS else "")
     most = f"{100 * PART:g} % of that at {len(found)} of {len(taps)} taps"
     _say(console, f"taps: {_percent(1.0 - rest)} of the variance enters there, {most}: {names}")
     table = _empty("tap", "x", "weight", "share", "if lost", "per mm displaced")
@@ -162,11 +164,13 @@ def _taps(rows: pd.DataFrame, chord: float, console: Console) -> None:
 
 def _wiring(rows: pd.DataFrame) -> Table:
     table = _empty("U if wired", "independent", "common", "as wired", "interleaved", "declared", widest=16)
-    for row in _records(rows):
-        cells = (
-            significant(float(row[f"U_{key}"]), 3)
-            for key in ("independent", "common", "by_module", "interleaved")
-        )
+    ways = [f"U_{key}" for key in ("independent", "common", "by_module", "interleaved")]
+    values = rows[ways].to_numpy(dtype=float)
+    spread = np.nanmax(values, axis=1) - np.nanmin(values, axis=1)
+    spread[np.asarray(rows["source"].astype(object) == TOGETHER)] = np.inf
+    for i in np.sort(np.argsort(-spread, kind="stable")[: WIRED + 1]).tolist():
+        row = rows.iloc[i]
+        cells = (significant(float(value), 3) for value in values[i])
         _add(table, row["source"], *cells, one_line(str(row["declared"])))
     return table
 

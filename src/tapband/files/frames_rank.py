@@ -81,7 +81,9 @@ def tap_ranking(reduced: Reduced, found: TapRanking) -> pd.DataFrame:
         "location_leverage": _with_rest(found.leverage),
         "note": note.ravel(),
     }
-    return pd.DataFrame(columns)
+    frame = pd.DataFrame(columns)
+    frame.attrs["units"] = {"location_leverage": "1/chord"}
+    return frame
 
 
 def _with_rest(values: Array) -> Array:
