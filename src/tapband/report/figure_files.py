@@ -24,7 +24,7 @@ Maker = Callable[[], "Figure"]
 
 def figure_jobs(results: Outcome, kind: str) -> dict[str, Callable[[Path], None]]:
     """What writes each figure, by its name in the folder."""
-    return {f"figures/{name}.{kind}": partial(_save, make) for name, make in _figures(results)}
+    return {f"figures/{name}.{kind}": partial(save, make) for name, make in _figures(results)}
 
 
 def _figures(results: Outcome) -> Iterator[tuple[str, Maker]]:
@@ -96,7 +96,8 @@ def _single(draw: Callable[..., object], results: Outcome, name: str) -> Figure:
     return figure
 
 
-def _save(make: Maker, path: Path) -> None:
+def save(make: Maker, path: Path) -> None:
+    """Draw one figure into a file of the kind its name ends with; the same figure is the same bytes."""
     from matplotlib import rc_context
 
     with warnings.catch_warnings(), rc_context(STYLE):

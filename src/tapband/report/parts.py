@@ -76,6 +76,14 @@ def number(column: str, head: str = "", digits: int = 3) -> Column:
     )  # fmt: skip
 
 
+def amount(column: str) -> Column:
+    """The number as people write a sum."""
+    return Column(
+        head=column, needs=(column,),
+        write=lambda row: f"{_number(row[column]):.10g}" if row[column] is not None else MISSING,
+    )  # fmt: skip
+
+
 def angle(column: str, head: str) -> Column:
     """An angle to hundredths of a degree."""
     return Column(head=head, needs=(column,), write=lambda row: fixed(_number(row[column]), 2))
@@ -148,9 +156,11 @@ def table_of(name: str, frame: pd.DataFrame, title: str, note: str, columns: Seq
     raw = {str(c): cells(flat[c].iloc[:MOST_ROWS]) for c in flat.columns}
     names = list(raw)
     rows = [dict(zip(names, values, strict=True)) for values in zip(*raw.values(), strict=True)]
+    written = [[c.write(row) for row in rows] for c in wanted]
+    kept = [i for i, cells_ in enumerate(written) if wanted[i].number or any(cells_)]  # no column of blanks
     left = len(flat) - MOST_ROWS
     return Table(
-        name=name, title=title, note=note, heads=tuple((c.head, c.number) for c in wanted),
-        rows=tuple(tuple(c.write(row) for c in wanted) for row in rows),
+        name=name, title=title, note=note, heads=tuple((wanted[i].head, wanted[i].number) for i in kept),
+        rows=tuple(zip(*(written[i] for i in kept), strict=True)),
         left=f"{left} more rows in {name}.csv" if left > 0 else "",
     )  # fmt: skip

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
 
-from tapband.report.parts import Column, angle, between, interval, number, percent, text, with_unit
+from tapband.report.parts import Column, amount, angle, between, interval, number, percent, text, with_unit
 
 LAYOUT: Mapping[str, tuple[str, tuple[str, ...]]] = {
     "decisions": ("Decisions", ("decisions",)),
@@ -98,14 +98,14 @@ SHOWN: Mapping[str, tuple[str, str, Sequence[Column]]] = {
         "Options",
         "Every option of every slot: whether the expected readings fit its range, and whether it is chosen.",
         (
-            text("slot"), text("option"), number("cost", "", 6), number("full_scale", "full scale [Pa]", 4),
+            text("slot"), text("option"), amount("cost"), number("full_scale", "full scale [Pa]", 4),
             text("eligible"), text("chosen"), text("reason"),
         ),
     ),
     "selection": (
         "Selection",
         "The cheapest set of options that meets every target at every point.",
-        (text("slot"), text("option"), number("cost", "cost", 6)),
+        (text("slot"), text("option"), amount("cost")),
     ),
     "frontier": ("Cost against interval", "Every set that no cheaper one beats.", ()),
     "wiring": (

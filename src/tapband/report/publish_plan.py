@@ -2,14 +2,17 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass
+from functools import partial
 from pathlib import Path
 from typing import TYPE_CHECKING
 
 import numpy as np
 
 from tapband.files import write
+
+REPORT = "report.html"
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -21,7 +24,19 @@ def publish_plan(
     plan: Plan, folder: Path, *, excel: bool = False, parquet: bool = False, figures: str | None = None
 ) -> Path:
     """Write the plan into ``folder`` and return it."""
-    return write.write(Written.of(plan), folder, excel=excel, parquet=parquet)
+    also: dict[str, Callable[[Path], None]] = {REPORT: partial(_write_page, plan)}
+    if figures is not None:
+        from tapband.report.figures_plan import plan_figure_jobs
+
+        also |= plan_figure_jobs(plan.tables, figures)
+    return write.write(Written.of(plan), folder, excel=excel, parquet=parquet, also=also)
+
+
+def _write_page(plan: Plan, path: Path) -> None:
+    from tapband.report.plan_page import plan_report
+
+    text = plan_report(plan.tables, plan.meta, plan.notes, plan.campaign)
+    path.write_text(text, encoding="utf-8", errors="replace")
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)

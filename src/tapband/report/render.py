@@ -48,13 +48,10 @@ WALLS = (
 
 def report(results: Outcome, campaign: Campaign) -> str:
     """The whole page as text."""
-    page = Environment(
-        loader=DictLoader({"page": _asset("page.html.j2")}), autoescape=True, undefined=StrictUndefined,
-        trim_blocks=True, lstrip_blocks=True,
-    ).get_template("page")  # fmt: skip
-    script = '(() => {\n"use strict";\n' + "\n".join(_asset(name) for name in SCRIPTS) + "\n})();"
+    page = page_templates().get_template("page")
+    script = '(() => {\n"use strict";\n' + "\n".join(asset(name) for name in SCRIPTS) + "\n})();"
     return page.render(
-        style=Markup(_asset("style.css")),
+        style=Markup(asset("style.css")),
         script=Markup(script),
         script_hash=f"sha256-{b64encode(sha256(script.encode()).digest()).decode()}",
         data=Markup(embedded(page_data(results, campaign))),
@@ -62,7 +59,17 @@ def report(results: Outcome, campaign: Campaign) -> str:
     )
 
 
-def _asset(name: str) -> str:
+def page_templates() -> Environment:
+    """The templates of every page; whatever they show is escaped."""
+    names = {"page": "page.html.j2", "plan": "plan.html.j2", "tables": "tables.html.j2"}
+    return Environment(
+        loader=DictLoader({name: asset(file) for name, file in names.items()}), autoescape=True,
+        undefined=StrictUndefined, trim_blocks=True, lstrip_blocks=True,
+    )  # fmt: skip
+
+
+def asset(name: str) -> str:
+    """A file that stands beside this module."""
     return files("tapband.report").joinpath(name).read_text(encoding="utf-8")
 
 
@@ -85,8 +92,8 @@ def _words(results: Outcome, campaign: Campaign) -> dict[str, object]:
         "unconfirmed": doubts,
         "unconfirmed_total": sum(int(str(doubt["count"])) for doubt in doubts),
         "empty": summary.empty_words(frame),
-        "warnings": _lines(meta.get("warnings")),
-        "undeclared": _lines(meta.get("undeclared")),
+        "warnings": lines_of(meta.get("warnings")),
+        "undeclared": lines_of(meta.get("undeclared")),
         "walls": WALLS,
         "point_tables": summary.point_tables(frame),
         "tap_parts": results.reduced is not None,
@@ -97,8 +104,8 @@ def _words(results: Outcome, campaign: Campaign) -> dict[str, object]:
         "wiring_marks": WIRING_MARKS,
         "parts": parts_of(results.tables, LAYOUT, SHOWN),
         "facts": summary.facts(meta, campaign),
-        "corrections": _lines(meta.get("corrections")),
-        "cautions": _lines(meta.get("cautions")) or [WALLS],
+        "corrections": lines_of(meta.get("corrections")),
+        "cautions": lines_of(meta.get("cautions")) or [WALLS],
         "inputs": list(campaign.inputs.items()),
         "listing": campaign.declared.splitlines(),
     }
@@ -114,6 +121,7 @@ def _lead(results: Outcome, campaign: Campaign, percent: str) -> str:
     return one_line(f"{points}{said}; {len(campaign.taps.names)} taps; {percent} coverage intervals")
 
 
-def _lines(value: object) -> list[str]:
+def lines_of(value: object) -> list[str]:
+    """The lines of a list, each on one line; empty where it is no list."""
     listed = value if isinstance(value, Sequence) and not isinstance(value, str) else []
     return [one_line(str(line)) for line in listed]
