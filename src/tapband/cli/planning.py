@@ -63,9 +63,7 @@ def size(
     intervals = replace(stated, trials=trials or stated.trials, seed=stated.seed if seed is None else seed)
     with progress(silent) as line:
         plan = face.size(replace(loaded, intervals=intervals), progress=line)
-        publish_plan(
-            plan, target, excel=excel, parquet=parquet, figures=figures.value if figures else None
-        )
+        publish_plan(plan, target, excel=excel, parquet=parquet, figures=figures.value if figures else None)
     if not silent:
         _say(plan, target)
     raise typer.Exit(plan.exit_status)

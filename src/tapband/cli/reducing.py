@@ -26,6 +26,7 @@ from tapband.cli.options import (
 from tapband.nouns.errors import QuestionError
 
 if TYPE_CHECKING:
+    from tapband.cli.terminal import ProgressLine
     from tapband.face import Results
 
 
@@ -64,7 +65,7 @@ def reduce(
     target = _target(campaign, out, loaded.name)
     with _client(scheduler) as client, progress(silent) as line:
         results = face.reduce(loaded, trials=trials, seed=seed, progress=line, client=client)
-        _write(results, target, excel, parquet, figures)
+        _write(results, target, excel, parquet, figures, line)
     _finish(results, target, silent)
 
 
@@ -94,7 +95,7 @@ def forecast(
     target = _target(campaign, out, loaded.name)
     with _client(scheduler) as client, progress(silent) as line:
         results = face.forecast(loaded, trials=trials, seed=seed, progress=line, client=client)
-        _write(results, target, excel, parquet, figures)
+        _write(results, target, excel, parquet, figures, line)
     _finish(results, target, silent)
 
 
@@ -127,10 +128,18 @@ def _client(address: str | None) -> Iterator[object | None]:
         yield client
 
 
-def _write(results: Results, target: Path, excel: bool, parquet: bool, figures: FigureKind | None) -> None:
+def _write(
+    results: Results,
+    target: Path,
+    excel: bool,
+    parquet: bool,
+    figures: FigureKind | None,
+    line: ProgressLine | None,
+) -> None:
     from tapband.report.publish import publish
 
-    publish(results, target, excel=excel, parquet=parquet, figures=figures.value if figures else None)
+    kind = figures.value if figures else None
+    publish(results, target, excel=excel, parquet=parquet, figures=kind, progress=line)
 
 
 def _finish(results: Results, target: Path, silent: bool) -> None:

@@ -48,15 +48,19 @@ def write(
     excel: bool = False,
     parquet: bool = False,
     also: Mapping[str, Callable[[Path], None]] | None = None,
+    progress: Callable[[int, int, str], None] | None = None,
 ) -> Path:
     """Write the results into ``folder`` whole or not at all, and return it.
 
     ``also`` names further files of the folder (``report.html``, ``figures/…``) and what writes each.
+    ``progress`` is called with files written, files in all, and "writing".
     """
     folder = Path(folder)
     jobs = _jobs(results, excel, parquet) | dict(also or {})
     with replacing(folder) as stage:
-        for name, job in jobs.items():
+        for done, (name, job) in enumerate(jobs.items()):
+            if progress is not None:
+                progress(done, len(jobs), "writing")
             (stage / name).parent.mkdir(parents=True, exist_ok=True)
             job(stage / name)
         text = json_text(VERSION, [*jobs, MARKER], results.meta, results.tables)

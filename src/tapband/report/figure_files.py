@@ -9,8 +9,11 @@ from functools import partial
 from pathlib import Path
 from typing import TYPE_CHECKING
 
+import numpy as np
+
 from tapband.report.drawing import HEIGHT, STYLE, WIDTH
-from tapband.report.headline import coefficients_of, keys
+from tapband.report.headline import coefficients_of, headline, keys
+from tapband.report.summary import MAIN
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
@@ -37,8 +40,43 @@ def _figures(results: Outcome) -> Iterator[tuple[str, Maker]]:
         if budget:
             yield f"{name}-drivers", partial(_single, figures.contributors, results, name)
             yield f"{name}-shares", partial(_single, figures.shares, results, name)
+    yield from _rankings(results)
     for i, key in enumerate(keys(frame), start=1):
         yield f"cp-{i:04d}-{_safe(key)}", partial(_pressure, results, key)
+
+
+def _rankings(results: Outcome) -> Iterator[tuple[str, Maker]]:
+    """The driver of each point, and of each main coefficient what taps and groups do where it is widest."""
+    from tapband.report import figures_rank
+    from tapband.report.figure_wiring import wiring
+
+    frame, labels = results.tables["coefficients"], keys(results.tables["coefficients"])
+    drawings = (
+        ("groups", "ranking", figures_rank.groups),
+        ("taps-on-section", "tap_ranking", figures_rank.taps_on_section),
+        ("taps-along-chord", "tap_ranking", figures_rank.taps_along_chord),
+        ("wiring", "wiring_comparison", wiring),
+    )
+    for name in (name for name in MAIN if name in coefficients_of(frame)):
+        half = headline(frame, name).half
+        if not np.isfinite(half).any():
+            continue
+        widest = labels[int(np.nanargmax(half))]
+        for title, table, draw in drawings:
+            if len(results.tables.get(table, ())):
+                yield f"{name}-{title}", partial(_at_point, draw, results, name, widest)
+
+
+def _at_point(draw: Callable[..., Axes], results: Outcome, name: str, point: str) -> Figure:
+    return figure_of(draw(results, name, point))
+
+
+def figure_of(ax: Axes) -> Figure:
+    """The figure that holds the axes."""
+    figure = ax.get_figure(root=True)
+    if figure is None:
+        raise AssertionError("axes without a figure")
+    return figure
 
 
 def _polar(results: Outcome, name: str) -> Figure:

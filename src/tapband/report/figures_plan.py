@@ -11,7 +11,7 @@ import numpy as np
 
 from tapband.files.write_text import one_line
 from tapband.report.drawing import COLOURS, INK, axes, styled
-from tapband.report.figure_files import save
+from tapband.report.figure_files import figure_of, save
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -44,7 +44,7 @@ def ranges(table: pd.DataFrame, ax: Axes | None = None) -> Axes:
     names = [one_line(str(name))[:12] for name in rows["tap"]]
     ax.set_xticks(place[::every], names[::every], rotation=90)
     ax.set(xlabel="channel", ylabel="pressure [kPa]")
-    ax.legend(loc="best")
+    ax.legend(loc="lower center", bbox_to_anchor=(0.5, 1.0), ncols=2)
     return ax
 
 
@@ -60,6 +60,7 @@ def allowances(table: pd.DataFrame, ax: Axes | None = None) -> Axes:
     ax.set_yticks(place, [one_line(str(table["source"].iloc[i]))[:40] for i in order])
     ax.axvline(1.0, color=INK, linestyle="--", label="as declared")
     ax.set_xscale("log")
+    ax.xaxis.set_major_formatter("{x:g}")
     ax.set(xlabel="allowed over declared [1]")
     ax.grid(visible=False, axis="y")
     ax.legend(loc="best")
@@ -79,7 +80,4 @@ def plan_figure_jobs(tables: Mapping[str, pd.DataFrame], kind: str) -> dict[str,
 
 
 def _drawn(draw: Callable[..., Axes], table: pd.DataFrame) -> Figure:
-    figure = draw(table).get_figure(root=True)
-    if figure is None:
-        raise AssertionError("axes without a figure")
-    return figure
+    return figure_of(draw(table))

@@ -42,6 +42,7 @@ def publish(
     excel: bool = False,
     parquet: bool = False,
     figures: str | None = None,
+    progress: Callable[[int, int, str], None] | None = None,
 ) -> Path:
     """Write the results into ``folder`` and return it; ``figures`` is "svg", "png", "pdf" or None."""
     if results.campaign is None:
@@ -51,7 +52,7 @@ def publish(
         from tapband.report.figure_files import figure_jobs
 
         also |= figure_jobs(results, figures)
-    return write.write(results, folder, excel=excel, parquet=parquet, also=also)
+    return write.write(results, folder, excel=excel, parquet=parquet, also=also, progress=progress)
 
 
 def _write_report(results: Outcome, campaign: Campaign, path: Path) -> None:
