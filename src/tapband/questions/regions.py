@@ -25,7 +25,7 @@ from tapband.nouns.source import Shape
 from tapband.probability.distributions import fill, log_coefficients
 from tapband.probability.draws import fresh, keyed, scale
 from tapband.probability.montecarlo import sample
-from tapband.questions.bent import bent
+from tapband.questions.bent import bent, moments
 from tapband.questions.latents import Latents
 from tapband.reduction import Reduced
 
@@ -36,11 +36,14 @@ SAME, SLIGHT = 0.001, 0.01
 """Differences in the share held, by the fourth cumulants, up to which k stands, and is corrected by them."""
 LARGE = 0.05
 """Bounded latents of a smaller part in any direction count as normal."""
-LINEARISED, CUMULANTS, SHAPES, TRIALS = (
+MOST = 40
+"""Points whose trials go through the equation; more take what Monte Carlo found of each coefficient."""
+LINEARISED, CUMULANTS, SHAPES, TRIALS, MOMENTS = (
     "ellipse, linearised",
     "ellipse, linearised, k for the shapes of the errors",
     "ellipse, Monte Carlo of the errors",
     "ellipse, Monte Carlo of the equation",
+    "ellipse, Monte Carlo mean and spread, linearised correlation",
 )
 
 
@@ -69,86 +72,89 @@ class Region:
 
 
 def regions(reduced: Reduced, latents: Latents) -> list[Region]:
-    """The regions of every point and pair that has one."""
-    found = []
+    """The regions of every point and pair that has one, point by point."""
     curved = bent(reduced)
-    for p in range(len(latents.keys)):
-        for names in PAIRS:
-            i, j = (latents.outputs.index(name) for name in names)
-            covariance = reduced.linear.covariance[p][np.ix_((i, j), (i, j))]
-            if np.all(np.isfinite(covariance)):
-                found.append(_region(reduced, latents, p, (i, j), covariance, curved[p]))
+    found: list[Region] = []
+    for names in PAIRS:
+        found += _of_pair(reduced, latents, names, curved)
+    return sorted(found, key=lambda region: region.point)
+
+
+def _of_pair(
+    reduced: Reduced, latents: Latents, names: tuple[str, str], curved: NDArray[np.bool_]
+) -> list[Region]:
+    level, seed = reduced.campaign.intervals.level, reduced.campaign.intervals.seed
+    families = reduced.assembled.problem.families
+    i, j = (latents.outputs.index(name) for name in names)
+    covariance = reduced.linear.covariance[:, [[i], [j]], [i, j]]
+    points = np.flatnonzero(np.isfinite(covariance).all(axis=(1, 2)))
+    directions = whitened([s[points][:, [i, j]] for s in latents.sensitivity], covariance[points])
+    k = factor(directions, latents.dof[:, points], level)
+    change = change_of_share(families, directions, k)
+    # The density of r² at k² is ½ exp(−k²/2).
+    slight = np.sqrt(k * k - 2.0 * np.where(np.abs(change) > SLIGHT, 0.0, change) * np.exp(0.5 * k * k))
+    centre = latents.estimate[points][:, [i, j]]
+    shift, ratio = (part[:, [i, j]] for part in moments(reduced))
+    left = MOST
+    found = []
+    for n, p in enumerate(points.tolist()):
+        here, around, factor_, method = centre[n], covariance[p], float(k[n]), LINEARISED
+        if abs(change[n]) > SLIGHT:
+            own = [one[n] for one in directions]
+            factor_, method = drawn_factor(families, own, p, level, seed), SHAPES
+        elif abs(change[n]) > SAME:
+            factor_, method = float(slight[n]), CUMULANTS
+        if curved[p, [i, j]].any():
+            drawn = _by_trials(reduced, p, (i, j)) if left > 0 else None
+            left -= 1
+            if drawn is not None:
+                here, around, factor_, method = *drawn, TRIALS
+            else:
+                here, around, method = here + shift[p], around * np.outer(ratio[p], ratio[p]), MOMENTS
+        found.append(
+            Region(
+                point=p, a=names[0], b=names[1], centre=(float(here[0]), float(here[1])), covariance=around,
+                k=factor_, method=method,
+            )
+        )  # fmt: skip
     return found
 
 
-def _region(
-    reduced: Reduced,
-    latents: Latents,
-    point: int,
-    pair: tuple[int, int],
-    covariance: Array,
-    curved: NDArray[np.bool_],
-) -> Region:
-    level, families = reduced.campaign.intervals.level, reduced.assembled.problem.families
-    names = (latents.outputs[pair[0]], latents.outputs[pair[1]])
-    centre = (float(latents.estimate[point, pair[0]]), float(latents.estimate[point, pair[1]]))
-    if np.any(curved[list(pair)]):
-        drawn = _by_trials(reduced, point, pair)
-        if drawn is not None:
-            return Region(
-                point=point, a=names[0], b=names[1], centre=drawn[0], covariance=drawn[1], k=drawn[2],
-                method=TRIALS,
-            )  # fmt: skip
-    directions = _whitened(latents, point, pair, covariance)
-    k, method = factor(directions, latents.dof[:, point], level), LINEARISED
-    change = change_of_share(families, directions, k)
-    if abs(change) > SLIGHT:
-        seed = reduced.campaign.intervals.seed
-        k, method = drawn_factor(families, directions, point, level, seed), SHAPES
-    elif abs(change) > SAME:
-        # The density of r² at k² is ½ exp(−k²/2).
-        k, method = float(np.sqrt(k * k - 2.0 * change * np.exp(0.5 * k * k))), CUMULANTS
-    return Region(
-        point=point, a=names[0], b=names[1], centre=centre, covariance=covariance, k=k, method=method
-    )
-
-
-def _whitened(latents: Latents, point: int, pair: tuple[int, int], covariance: Array) -> list[Array]:
-    """(2, G) a source: sensitivities in the metric in which the covariance is the unit matrix."""
+def whitened(sensitivity: Sequence[Array], covariance: Array) -> list[Array]:
+    """(P, 2, G) a source: sensitivities in the metric in which the covariance (P, 2, 2) is the unit matrix."""
     values, vectors = np.linalg.eigh(covariance)
-    scale_ = np.where(values > 1e-14 * max(float(values[-1]), 0.0), values, np.inf)
-    metric = (vectors / np.sqrt(scale_)).T
-    return [metric @ s[point][list(pair)] for s in latents.sensitivity]
+    large = values > 1e-14 * np.maximum(values[:, -1:], 0.0)
+    unit = np.sqrt(np.where(large & (values > 0.0), values, np.inf))
+    metric = np.swapaxes(vectors / unit[:, None, :], 1, 2)
+    return [metric @ s for s in sensitivity]
 
 
-def factor(directions: Sequence[Array], dof: Array, level: float) -> float:
-    """k of the linearised ellipse; ``directions`` (2, G) a source, whitened, ``dof`` (S,)."""
-    terms = 0.0
+def factor(directions: Sequence[Array], dof: Array, level: float) -> Array:
+    """k (P,) of the linearised ellipse; ``directions`` (P, 2, G) a source, whitened, ``dof`` (S, P)."""
+    terms = np.zeros(dof.shape[1])
     for one, nu in zip(directions, dof, strict=True):
-        if np.isfinite(nu):
-            own = one @ one.T
-            terms += (np.trace(own @ own) + np.trace(own) ** 2) / nu
-    if terms == 0.0:
-        return float(np.sqrt(chdtri(2, 1.0 - level)))
-    return float(np.sqrt(2.0 * fdtri(2.0, 6.0 / terms, level)))
+        if not np.all(np.isinf(nu)):
+            own = one @ np.swapaxes(one, 1, 2)
+            trace = np.trace(own, axis1=1, axis2=2)
+            terms += (np.sum(own * own, axis=(1, 2)) + trace**2) / nu
+    exact = float(np.sqrt(chdtri(2, 1.0 - level)))
+    nu = 6.0 / np.where(terms > 0.0, terms, 1.0)
+    return np.where(terms > 0.0, np.sqrt(2.0 * fdtri(2.0, nu, level)), exact)
 
 
-def change_of_share(families: Sequence[Family], directions: Sequence[Array], k: float) -> float:
-    """Change of the share held by the ellipse, from the fourth cumulants of bounded latents.
+def change_of_share(families: Sequence[Family], directions: Sequence[Array], k: Array) -> Array:
+    """Change (P,) of the share held by the ellipse, from the fourth cumulants of bounded latents.
 
     With β the excess of E r⁴ over the normal 8, the density of r² is that of χ²₂ times 1 + (β/8) L₂(r²/2),
     L₂ Laguerre's polynomial, so the share changes by (β/8)·e^{−x} (x − x²/2), x = k²/2.
     """
-    excess = 0.0
+    excess = np.zeros(k.size)
     for family, one in zip(families, directions, strict=True):
         if family.shape is not Shape.NORMAL:
-            excess += (
-                24.0
-                * log_coefficients(family.shape, family.top)[0]
-                * float(np.sum(np.sum(one**2, axis=0) ** 2))
-            )
+            fourth = 24.0 * log_coefficients(family.shape, family.top)[0]
+            excess += fourth * np.sum(np.sum(one**2, axis=1) ** 2, axis=1)
     x = 0.5 * k * k
-    return excess / 8.0 * float(np.exp(-x)) * (x - 0.5 * x * x)
+    return np.asarray(excess / 8.0 * np.exp(-x) * (x - 0.5 * x * x))
 
 
 def drawn_factor(
@@ -200,9 +206,7 @@ def _root(covariance: Array) -> Array:
     return np.asarray((vectors * np.sqrt(np.maximum(values, 0.0))).T)
 
 
-def _by_trials(
-    reduced: Reduced, point: int, pair: tuple[int, int]
-) -> tuple[tuple[float, float], Array, float] | None:
+def _by_trials(reduced: Reduced, point: int, pair: tuple[int, int]) -> tuple[Array, Array, float] | None:
     """Mean, covariance and k of joint trials of the equation; None where trials are refused."""
     problem, intervals = reduced.assembled.problem, reduced.campaign.intervals
     y = sample(problem, slice(point, point + 1), intervals.seed, 0)[0][:, list(pair)]
@@ -215,4 +219,4 @@ def _by_trials(
     except np.linalg.LinAlgError:
         return None
     k = float(np.sqrt(np.quantile(distance, intervals.level)))
-    return (float(mean[0]), float(mean[1])), covariance, k
+    return mean, covariance, k

@@ -30,7 +30,7 @@ Codes = NDArray[np.int64]
 MEASURED = 5
 """Coefficients judged: those as measured."""
 POOLED = 400
-"""Most points whose repeats are judged together: their covariance is formed."""
+"""Most repeats with errors in common that are judged: their covariance is formed."""
 TINY = 1e-9
 """Part of the largest predicted variance under which a contrast is not predicted at all."""
 
@@ -73,7 +73,7 @@ def repeats(latents: Latents, within: float, level: float) -> list[Repeats]:
         repeated = [node for node in line if len(node.points) > 1]
         for node in repeated:
             found += _judged(latents, config, [node], line, level)
-        if len(repeated) > 1 and sum(len(node.points) for node in repeated) <= POOLED:
+        if len(repeated) > 1:
             found += _judged(latents, config, repeated, line, level)
     return found
 
@@ -117,18 +117,16 @@ def _judged(
     rate = np.repeat([np.zeros(len(latents.outputs)) if r is None else r for r in known], sizes, axis=0)
     apart = latents.alpha[points] - np.repeat([node.alpha for node in nodes], sizes)
     y = latents.estimate[points] - apart[:, None] * rate
+    alike = [
+        r is not None or float(np.ptp(latents.alpha[list(n.points)])) < 1e-12
+        for r, n in zip(known, nodes, strict=True)
+    ]
     together = _Together(
         config=config,
         points=points,
         alpha=nodes[0].alpha if len(nodes) == 1 else float("nan"),
-        contrasts=block_diag(*[helmert(size) for size in sizes]),
         angle=np.repeat(np.arange(len(nodes)), sizes),
-        moved=bool(
-            all(
-                r is not None or np.ptp(latents.alpha[list(n.points)]) < 1e-12
-                for r, n in zip(known, nodes, strict=True)
-            )
-        ),
+        moved=all(alike),
     )
     return [
         _one(latents, together, j, y[:, j], rate[:, j], level)
@@ -148,27 +146,53 @@ def _rate(latents: Latents, line: Sequence[Node], node: Node) -> Array | None:
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
 class _Together:
-    """Points (n,) judged together, contrasts (dof, n) within their angles, and the angle (n,) of each."""
+    """Points (n,) judged together, and the number (n,) of the angle of each."""
 
     config: str
     points: Codes
     alpha: float
-    contrasts: Array
     angle: Codes
     moved: bool
 
+    @property
+    def dof(self) -> int:
+        """Contrasts within the angles."""
+        return int(self.angle.size - self.angle.max() - 1)
+
+    def centred(self, values: Array) -> Array:
+        """Values (n,) less the mean of their angle."""
+        count = np.bincount(self.angle)
+        return values - (np.bincount(self.angle, values) / count)[self.angle]
+
+    def trace(self, diagonal: Array, covariance: Array | None) -> float:
+        """Trace of a covariance (its diagonal alone where nothing is shared) between the contrasts."""
+        count = np.bincount(self.angle)
+        total = float(np.sum(diagonal * (1.0 - 1.0 / count[self.angle])))
+        if covariance is not None:
+            off = covariance - np.diag(diagonal)
+            same = self.angle[:, None] == self.angle
+            total -= float(np.sum(off * same / count[self.angle]))
+        return total
+
 
 def _one(latents: Latents, together: _Together, output: int, y: Array, rate: Array, level: float) -> Repeats:
-    points, contrasts = together.points, together.contrasts
-    parts, names, nus = _changing(latents, points, output, rate)
-    covariance = np.sum(parts, axis=0) if parts else np.zeros((y.size, y.size))
-    dof = len(contrasts)
-    z, seen = contrasts @ y, contrasts @ covariance @ contrasts.T
-    predicted = float(np.sqrt(np.trace(seen) / dof))
-    scatter = float(np.sqrt(z @ z / dof))
-    centring = contrasts.T @ contrasts
-    traces = [float(np.sum(part * centring)) for part in parts]
-    chi2, p = _test(z, seen, _freedom(traces, nus))
+    points, dof = together.points, together.dof
+    parts = _changing(latents, points, output, rate)
+    diagonal = np.sum([part.diagonal for part in parts], axis=0) if parts else np.zeros(y.size)
+    shared = [part for part in parts if part.shared]
+    many = bool(shared) and y.size > POOLED
+    covariance = None
+    if shared and not many:
+        covariance = np.diag(diagonal)
+        for part in shared:
+            covariance += part.off_diagonal
+    traces = [together.trace(p.diagonal, p.covariance if p.shared and not many else None) for p in parts]
+    predicted = float(np.sqrt(max(sum(traces), 0.0) / dof))
+    scatter = float(np.sqrt(np.sum(together.centred(y) ** 2) / dof))
+    chi2, p = float("nan"), float("nan")
+    if not many:
+        reached, kept = _distance(together, y, diagonal, covariance)
+        chi2, p = reached, _probability(reached, kept, _freedom(traces, [part.nu for part in parts]))
     runs = np.array([latents.runs[i] for i in points], dtype=object)
     inside, inside_dof, across, across_dof = _by_run(y, runs, together.angle)
     return Repeats(
@@ -186,19 +210,47 @@ def _one(latents: Latents, together: _Together, output: int, y: Array, rate: Arr
         between=across,
         between_dof=across_dof,
         moved=together.moved,
-        sources=tuple(names),
+        sources=tuple(part.name for part in parts),
         verdict=verdict(scatter, predicted, p, level),
     )
 
 
-def _changing(
-    latents: Latents, points: Codes, output: int, rate: Array
-) -> tuple[list[Array], list[str], list[float]]:
-    """Covariances (n, n) of the sources that change between the points, their names and ν.
+@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
+class _Part:
+    """What one source that changes does to points (n,): sensitivities (n, G), groups (n,) and ν."""
+
+    name: str
+    own: Array
+    group: Codes
+    nu: float
+
+    @property
+    def diagonal(self) -> Array:
+        """(n,) variances."""
+        return np.asarray(np.sum(self.own**2, axis=1))
+
+    @property
+    def shared(self) -> bool:
+        """Whether some of the points share it."""
+        return bool(np.unique(self.group).size < self.group.size)
+
+    @property
+    def covariance(self) -> Array:
+        """(n, n)."""
+        return np.asarray(self.own @ self.own.T * (self.group[:, None] == self.group))
+
+    @property
+    def off_diagonal(self) -> Array:
+        """(n, n) less its diagonal."""
+        return self.covariance - np.diag(self.diagonal)
+
+
+def _changing(latents: Latents, points: Codes, output: int, rate: Array) -> list[_Part]:
+    """The sources that change between the points.
 
     An error of angle acts along the slope too: repeats are made at one angle read, not at one true angle.
     """
-    parts, names, nus = [], [], []
+    parts = []
     for s, (name, codes) in enumerate(zip(latents.sources, latents.group, strict=True)):
         mine = codes[points]
         if np.all(mine == mine[0]):
@@ -207,10 +259,9 @@ def _changing(
         if s in latents.on_alpha:
             own = own - rate[:, None] * latents.on_alpha[s][points]
         if np.any(own != 0.0):
-            parts.append(own @ own.T * (mine[:, None] == mine))
-            names.append(name)
-            nus.append(_pooled(own, latents.scale[s][points], latents.dof[s, points]))
-    return parts, names, nus
+            nu = _pooled(own, latents.scale[s][points], latents.dof[s, points])
+            parts.append(_Part(name=name, own=own, group=mine, nu=nu))
+    return parts
 
 
 def _pooled(own: Array, scale: Codes, dof: Array) -> float:
@@ -229,15 +280,29 @@ def _freedom(traces: Sequence[float], nus: Sequence[float]) -> float:
     return sum(traces) ** 2 / terms if terms > 0.0 else np.inf
 
 
-def _test(z: Array, covariance: Array, nu: float) -> tuple[float, float]:
-    """χ² of contrasts and its probability of being exceeded; 0 where scatter is seen and none predicted."""
-    chi2, dof = _distance(z, covariance)
+def _probability(chi2: float, dof: int, nu: float) -> float:
+    """Of so large a χ² by chance; 0 where scatter is seen and none predicted."""
     if dof == 0 or np.isinf(chi2):
-        return chi2, float(np.isfinite(chi2))
-    return chi2, float(chdtrc(dof, chi2) if np.isinf(nu) else fdtrc(dof, nu, chi2 / dof))
+        return float(np.isfinite(chi2))
+    return float(chdtrc(dof, chi2) if np.isinf(nu) else fdtrc(dof, nu, chi2 / dof))
 
 
-def _distance(z: Array, covariance: Array) -> tuple[float, int]:
+def _distance(together: _Together, y: Array, diagonal: Array, covariance: Array | None) -> tuple[float, int]:
+    """χ² of the contrasts and its degrees of freedom.
+
+    Where points share nothing, of the readings about their weighted means; infinite where a contrast is seen
+    that no source predicts at all.
+    """
+    if covariance is None and np.all(diagonal > TINY * np.max(diagonal, initial=1e-300)):
+        weight = 1.0 / diagonal
+        mean = np.bincount(together.angle, weight * y) / np.bincount(together.angle, weight)
+        return float(np.sum(weight * (y - mean[together.angle]) ** 2)), together.dof
+    contrasts = block_diag(*[helmert(n) for n in np.bincount(together.angle).tolist()])
+    whole = np.diag(diagonal) if covariance is None else covariance
+    return _whitened(contrasts @ y, contrasts @ whole @ contrasts.T)
+
+
+def _whitened(z: Array, covariance: Array) -> tuple[float, int]:
     """zᵀ V⁻¹ z and its degrees of freedom; infinite where z has a part that V does not predict at all."""
     try:
         factor = np.linalg.cholesky(covariance)
@@ -279,6 +344,8 @@ def verdict(scatter: float, predicted: float, p: float, level: float) -> str:
         return "no source changes between these repeats, and they do not scatter"
     if predicted == 0.0:
         return "they scatter, and no declared source changes between them: a source is missing"
+    if np.isnan(p):
+        return f"not judged: more than {POOLED} repeats share errors"
     if p < 1.0 - level:
         return "more scatter than the sources that change predict: one is missing or too small"
     if p > level:
