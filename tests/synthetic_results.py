@@ -9,7 +9,7 @@ from __future__ import annotations
 
 import hashlib
 from collections.abc import Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from functools import lru_cache
 from math import inf, radians
 
@@ -251,3 +251,47 @@ def _meta(campaign: Campaign, frame: pd.DataFrame) -> dict[str, object]:
             for key, v, u in zip(keys(frame), frame["cl"], frame["cl_U"], strict=True)
         },
     }  # fmt: skip
+
+
+def ranked(results: Synthetic, groups: int = 8, wired: int = 6) -> Synthetic:
+    """The results with rankings of taps, groups and wiring, drawn; shares of taps and of groups sum to one."""
+    rng = np.random.default_rng(11)
+    frame, taps = results.tables["coefficients"], results.campaign.taps
+    names = list(results.tables["budget"]["coefficient"].unique())
+    labels = frame[["point", "run"]]
+
+    def rows(column: str, members: Sequence[str], values: dict[str, np.ndarray]) -> pd.DataFrame:
+        each = len(names) * len(members)
+        out = labels.loc[np.repeat(np.arange(len(labels)), each)].reset_index(drop=True)
+        out["coefficient"] = np.tile(np.repeat(names, len(members)), len(labels))
+        out[column] = list(members) * (len(labels) * len(names))
+        return out.assign(**{name: array.ravel() for name, array in values.items()})
+
+    def shares(members: int) -> np.ndarray:
+        raw = rng.normal(1.0, 1.5, size=(len(labels), len(names), members))
+        return np.asarray(raw / raw.sum(axis=2, keepdims=True))
+
+    places = [*taps.names, "(not at a tap)"]
+    size = (len(labels), len(names), len(places))
+    by_tap = {
+        "share": shares(len(places)),
+        "if_lost": rng.normal(0.0, 1e-3, size),
+        "weight": rng.normal(size=size),
+    }
+    linear = np.abs(shares(groups))
+    linear /= linear.sum(axis=2, keepdims=True)
+    small = np.full(linear.shape, 2e-4)
+    by_group = {
+        "linear_share": linear, "first_order": linear, "first_order_ci": small, "total": linear, "total_ci": small,
+    }  # fmt: skip
+    ways = {
+        f"contribution_{way}": rng.uniform(1e-5, 1e-3, size=(len(labels), len(names), wired))
+        for way in ("independent", "common", "by_module", "interleaved")
+    }
+    sources = results.tables["budget"]["source"].unique()[:wired]
+    tables = {
+        "tap_ranking": rows("tap", places, by_tap),
+        "ranking": rows("group", [f"group {i}" for i in range(groups)], by_group),
+        "wiring_comparison": rows("source", list(sources), ways).assign(declared="independent"),
+    }
+    return replace(results, tables=results.tables | tables)

@@ -74,7 +74,7 @@ def test_every_number_on_the_page_follows_a_slider(show: Show, page: Path, resul
     read = "return document.querySelector(arguments[0]).textContent"
     places = (
         "#target1 .widest",
-        'td[data-i="4"][data-c="cl"]',
+        'table.points tr[data-i="4"] td:nth-child(4)',
         "#driver-rows",
         "#budget-rows",
         "#interval-rows",
@@ -108,7 +108,7 @@ def test_declared_sizes_show_the_monte_carlo_interval_where_it_is_the_headline(
     show: Show, page: Path, results: Synthetic
 ) -> None:
     browser = show(page, hash_="#point=R1%2FP004")
-    cell = 'return document.querySelector(\'td[data-i="3"][data-c="cd_pressure"]\').textContent'
+    cell = 'return document.querySelector(\'table.points tr[data-i="3"] td:nth-child(5)\').textContent'
     assert "…" in browser.execute_script(cell)
     move(browser, "chord", 1.05)
     assert "±" in browser.execute_script(cell)

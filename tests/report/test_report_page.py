@@ -7,12 +7,13 @@ import re
 from base64 import b64decode
 from dataclasses import replace
 from html.parser import HTMLParser
+from time import perf_counter
 
 import numpy as np
 import pandas as pd
 import pytest
 
-from synthetic_results import Synthetic, synthetic
+from synthetic_results import Synthetic, ranked, synthetic
 from tapband.nouns.plan import Plan
 from tapband.report.render import report
 
@@ -21,6 +22,10 @@ HOSTILE = [
     "<script>alert(1)</script>", "</script>", "\"><img src=x onerror=alert(1)>", "{{ 1+1 }}", "]]>", "\u2028",
     "a\x00b",
 ]  # fmt: skip
+
+
+TAP_PARTS = 200 * 61 * 40 * 4 // 3
+"""Bytes that the parts of the bands of Cp add where a reduction is at hand: one a tap and source, in base64."""
 
 
 class Page(HTMLParser):
@@ -146,11 +151,23 @@ def test_embedded_contributions_are_those_of_the_budget(results: Synthetic, show
 def test_the_page_shows_the_headline_interval_of_every_point(results: Synthetic) -> None:
     text = report(results, results.campaign)
     row = results.tables["coefficients"].iloc[3]
-    cell = re.search(r'data-i="3" data-c="cd_pressure">([^<]*)<span>([^<]*)<', text)
+    cell = re.search(r'<tr data-i="3">.*?<td class="n odd">([^<]*)<span>([^<]*)<', text)
     assert cell is not None
     low, high = (float(part.replace("\N{MINUS SIGN}", "-")) for part in cell[2].split("…"))
     assert low == pytest.approx(row["cd_pressure_mc_low"], abs=0.51e-4)  # half of the last digit shown
     assert high == pytest.approx(row["cd_pressure_mc_high"], abs=0.51e-4)
+
+
+def test_the_largest_report_asked_for_stays_small_and_is_written_soon() -> None:
+    names = [
+        name + end for end in ("", "_ref", "_stated") for name in ("cn", "ct", "cm", "cl", "cd_pressure")
+    ]
+    large = ranked(synthetic(200, 61, 40, coefficients=names))
+    start = perf_counter()
+    text = report(large, large.campaign)
+    # 4 MB and 5 s are what is asked of 200 points × 60 taps × 40 sources.
+    assert perf_counter() - start < 5.0
+    assert len(text.encode()) + TAP_PARTS < 4e6
 
 
 def test_hostile_names_become_text_and_data_and_nothing_else() -> None:

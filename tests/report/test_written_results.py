@@ -229,3 +229,20 @@ def test_a_spoilt_result_is_refused_by_name(text: str, rule: str, tmp_path: Path
     (tmp_path / "results.json").write_text(text)
     with pytest.raises(InputError, match=rule):
         read_results.read(tmp_path)
+
+
+def test_a_result_of_format_1_written_long_ago_still_reads() -> None:
+    """The folder beside this file was written by version 0.1.0 and is never written again."""
+    parts = read_results.read(Path(__file__).parent / "format_1")
+    assert list(parts.tables) == ["coefficients", "cp", "budget", "correlation"]
+    frame = parts.tables["coefficients"]
+    assert frame["point"].tolist() == ["P001", "P002"]
+    assert frame["cl_agrees"].tolist() == ["yes", "yes"]
+    assert frame.attrs["units"]["alpha"] == "deg"
+    # All digits as they stand in the file.
+    assert frame["cl"].tolist() == [-0.22349763069383108, -0.22349763069383108]
+    shares = parts.tables["budget"].groupby(["point", "coefficient"])["share"].sum()
+    assert shares.to_numpy() == pytest.approx(1.0, abs=1e-12)
+    assert np.isinf(parts.tables["budget"]["dof"]).any()
+    assert parts.arrays["sensitivity/module zero"].shape == (2, 2, 3)
+    assert parts.meta["seed"] == 7

@@ -101,7 +101,8 @@ function sourceName(source) {
 
 // --- all points -------------------------------------------------------------------------------------------
 
-const cells = [...document.querySelectorAll("td[data-i]")].map((node) => ({ node, p: Number(node.dataset.i), j: index.get(node.dataset.c) }));
+const cells = [...document.querySelectorAll("table.points")].flatMap((table) => [...table.tBodies[0].rows].flatMap((row) =>
+  table.dataset.c.split(",").map((name, k) => ({ node: row.cells[3 + k], p: Number(row.dataset.i), j: index.get(name) }))));
 
 function showCells() {
   for (const { node, p, j } of cells) {

@@ -26,7 +26,7 @@ if TYPE_CHECKING:
     from tapband.report.publish import Outcome
 
 Array = NDArray[np.float64]
-EXACT = 150_000
+EXACT = 50_000
 """Contributions are stored in full up to this many, else as 32-bit floats (6e-8 relative)."""
 OUTLINE = 400
 """Most points of the contour drawn."""

@@ -61,13 +61,16 @@ def group_indices(frame: pd.DataFrame | None, labels: Sequence[str]) -> dict[str
     groups = list(dict.fromkeys(rows["group"].astype(object)))
     at = (codes(keys(rows), labels), codes(rows["coefficient"], names), codes(rows["group"], groups))
     shape = (len(labels), len(names), len(groups))
-    notes = {}
+    notes: dict[str, int] = {}
+    words: list[str] = []
     if "differs" in rows.columns:
         odd = np.flatnonzero(np.asarray(rows["differs"].astype(object) == "yes"))
         said = rows["note"].astype(object).tolist() if "note" in rows.columns else [""] * len(rows)
-        notes = {f"{at[0][i]},{at[1][i]},{at[2][i]}": str(said[i] or "") for i in odd}
+        words = list(dict.fromkeys(str(said[i] or "") for i in odd))
+        place = {word: k for k, word in enumerate(words)}
+        notes = {f"{at[0][i]},{at[1][i]},{at[2][i]}": place[str(said[i] or "")] for i in odd}
     arrays = {short: _steps(_filled(rows[column], at, shape), STEP) for short, column in INDICES.items()}
-    return {"coefficients": names, "groups": groups, "differ": notes, **arrays}
+    return {"coefficients": names, "groups": groups, "differ": notes, "words": words, **arrays}
 
 
 def wirings(frame: pd.DataFrame | None, labels: Sequence[str]) -> dict[str, object] | None:

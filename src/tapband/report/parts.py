@@ -17,7 +17,7 @@ if TYPE_CHECKING:
 
     from tapband.files.write_columns import Cell
 
-MOST_ROWS = 400
+MOST_ROWS = 200
 """Rows shown of one table; the file has all."""
 
 Row = Mapping[str, "Cell"]

@@ -28,7 +28,7 @@ function showGroups(p, r, j) {
   const linear = g.groups.map((group) => data.sources.reduce((sum, source, s) => sum + (source.group === group ? budget.share(p, j, s) : 0), 0));
   const order = [...Array(n).keys()].sort((a, b) => linear[b] - linear[a]);
   return replace($("group-rows"), ...order.map((i) => {
-    const at = (p * g.coefficients.length + r) * n + i, note = g.differ[`${p},${r},${i}`];
+    const at = (p * g.coefficients.length + r) * n + i, said = g.differ[`${p},${r},${i}`], note = said === undefined ? undefined : g.words[said];
     const pair = (value, ci) => html("td", { class: "n" }, Number.isFinite(value) ? `${(100 * value).toFixed(1)} ` : MISSING,
       html("span", {}, Number.isFinite(value) ? `± ${(100 * ci).toFixed(2)} %` : ""));
     return html("tr", {}, html("th", { scope: "row" }, html("bdi", {}, g.groups[i])), html("td", { class: "n" }, percent(linear[i])),
