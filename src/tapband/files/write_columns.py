@@ -113,7 +113,24 @@ def cells(series: pd.Series) -> list[Cell]:
         return out
     if kind in "iu" and not series.hasnans:
         return [int(v) for v in series.tolist()]
+    words = coded(series)
+    if words is not None:
+        codes, names = words
+        return [names[code] for code in codes]
     return [_cell(value) for value in series.astype(object).tolist()]
+
+
+def coded(series: pd.Series) -> tuple[list[int], list[Cell]] | None:
+    """A column of text as codes and the few names they stand for (the last: missing); None for other columns.
+
+    Names of points, taps and sources repeat over millions of rows.
+    """
+    import pandas as pd
+
+    if series.dtype.kind in "fiub" or pd.api.types.infer_dtype(series, skipna=True) not in ("string", "empty"):
+        return None
+    codes, names = pd.factorize(series.astype(object))
+    return codes.tolist(), [*names.tolist(), None]
 
 
 def _cell(value: object) -> Cell:

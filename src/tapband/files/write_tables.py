@@ -2,12 +2,12 @@
 
 from __future__ import annotations
 
-import csv
-import io
 from pathlib import Path
 from typing import TYPE_CHECKING
 
-from tapband.files.write_columns import Cell, cells, ordered, units_of
+import numpy as np
+
+from tapband.files.write_columns import Cell, cells, coded, ordered, units_of
 from tapband.files.write_text import defused
 from tapband.nouns.errors import QuestionError
 
@@ -18,26 +18,37 @@ if TYPE_CHECKING:
 def csv_text(name: str, frame: pd.DataFrame) -> str:
     """The table as CSV: one header row, shortest digits that give each number back, missing cells empty."""
     table = ordered(name, frame)
-    out = io.StringIO(newline="")
-    rows = csv.writer(out, lineterminator="\n")
-    rows.writerow([defused(str(column)) for column in table.columns])
-    rows.writerows(zip(*(_texts(cells(table[column])) for column in table.columns), strict=True))
-    return out.getvalue()
+    head = ",".join(_quoted(defused(str(column))) for column in table.columns)
+    lines = map(",".join, zip(*(_texts(table[column]) for column in table.columns), strict=True))
+    return "\n".join([head, *lines, ""])
 
 
-def _texts(column: list[Cell]) -> list[str]:
-    known: dict[str, str] = {}  # names repeat over thousands of rows
+def _texts(series: pd.Series) -> list[str]:
+    words = coded(series)
+    if words is not None:
+        codes, names = words
+        texts = [_text(name) for name in names]
+        return [texts[code] for code in codes]
+    if series.dtype.kind == "f":
+        values = np.asarray(series, dtype=float)
+        digits = list(map(repr, values.tolist()))
+        for i in np.flatnonzero(~np.isfinite(values)).tolist():
+            digits[i] = ""
+        return digits
+    return [_text(cell) for cell in cells(series)]
 
-    def text(cell: Cell) -> str:
-        if isinstance(cell, str):
-            if cell not in known:
-                known[cell] = defused(cell)
-            return known[cell]
-        if cell is None:
-            return ""
-        return ("no", "yes")[cell] if isinstance(cell, bool) else repr(cell)
 
-    return [text(cell) for cell in column]
+def _text(cell: Cell) -> str:
+    if cell is None:
+        return ""
+    if isinstance(cell, str):
+        return _quoted(defused(cell))
+    return ("no", "yes")[cell] if isinstance(cell, bool) else repr(cell)
+
+
+def _quoted(text: str) -> str:
+    """The text as one CSV field (RFC 4180, 2.5-2.7)."""
+    return '"' + text.replace('"', '""') + '"' if any(c in text for c in ',"') or text != text.strip() else text
 
 
 def write_csv(path: Path, name: str, frame: pd.DataFrame) -> None:
