@@ -21,6 +21,7 @@ from tapband.questions.repeats import Repeats
 
 NAMED, SMALL = 3, 0.005
 """Sources named in a cell, and the share of variance below which none is."""
+LEFT_OUT = "far from linear, and too many such fits to draw them all: ask for this one alone"
 
 
 def differences(found: Differences, drawn: Drawn) -> pd.DataFrame:
@@ -112,7 +113,7 @@ def fits(found: Fits, drawn: Drawn) -> pd.DataFrame:
             "low": flat(low),
             "high": flat(high),
             "points_used": flat(found.used),
-            "note": flat(np.array(found.notes, dtype=object)),
+            "note": flat(_with_left_out(found, drawn)),
             "dof": flat(np.where(np.isinf(found.dof), np.nan, found.dof)),
             "mach": each([plan.polar.mach for plan in found.plans]).astype(float),
             "mc_low": flat(drawn.low),
@@ -120,6 +121,15 @@ def fits(found: Fits, drawn: Drawn) -> pd.DataFrame:
             "agrees": flat(_yes(agrees, np.isfinite(drawn.low))),
         }
     )
+
+
+def _with_left_out(found: Fits, drawn: Drawn) -> NDArray[np.object_]:
+    """Notes (R, 8), with those of quantities that were too many to draw and too far from linear not to be."""
+    notes = np.array(found.notes, dtype=object)
+    if np.isfinite(drawn.low).any():
+        missing = np.isfinite(found.value) & (found.u > 0.0) & ~np.isfinite(drawn.low)
+        notes[missing] += f"; {LEFT_OUT}"
+    return notes
 
 
 def repeats(found: Sequence[Repeats], latents: Latents) -> pd.DataFrame:

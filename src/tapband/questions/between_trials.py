@@ -22,8 +22,11 @@ Codes = NDArray[np.int64]
 FITS, DIFFERENCES = 6_400, 25_600
 """Trials times points of the first look, from which a small correction to the linear law is had."""
 FEWEST, MOST = 16, 1_024
-MORE = 8
-"""Times as many trials where the correction is not small, in tiles of their own."""
+MORE, ENOUGH = 8, 256
+"""Times as many trials where the correction is not small, in tiles of their own, and the fewest of them.
+
+Rows past that budget have no Monte Carlo interval, and their table says so; asked for alone, they get one."""
+ENDS = ("low", "high", "low_sd", "high_sd")
 
 
 def of_differences(
@@ -84,16 +87,22 @@ def _drawn(
     rough = ~first.nearly & np.isfinite(value) & (u > 0.0)
     if not rough.any():
         return first
-    rows = np.flatnonzero(rough.any(axis=1))
-    more = _more_trials(
-        problem, latents, combination.only(rows), lambda j: true(j, rows), half[rows], seed, budget
-    )
-    second = counted(value[rows], more, level)
-    ends = {}
-    for name in ("low", "high", "low_sd", "high_sd"):
-        ends[name] = getattr(first, name).copy()
-        ends[name][rough] = getattr(second, name)[rough[rows]]
+    ends = {name: np.where(rough, np.nan, getattr(first, name)) for name in ENDS}
+    rows = _affordable(np.flatnonzero(rough.any(axis=1)), combination, MORE * budget // ENOUGH)
+    if rows.size:
+        more = _more_trials(
+            problem, latents, combination.only(rows), lambda j: true(j, rows), half[rows], seed, budget
+        )
+        second = counted(value[rows], more, level)
+        for name in ENDS:
+            ends[name][rows] = np.where(rough[rows], getattr(second, name), ends[name][rows])
     return replace(first, **ends)
+
+
+def _affordable(rows: Codes, combination: Combination, points: int) -> Codes:
+    """The first of some rows that draw on so many points together; the first one whatever it costs."""
+    cost = np.cumsum(np.bincount(combination.row, minlength=combination.rows)[rows])
+    return np.asarray(rows[(cost <= points) | (np.arange(rows.size) == 0)])
 
 
 def _more_trials(
@@ -107,7 +116,7 @@ def _more_trials(
 ) -> Array:
     """Values less their estimates (R, q, N) of rows that the linear law does not serve, from fresh tiles."""
     points = np.unique(combination.point)
-    count = max(256, min(MORE * budget // points.size, MORE * MOST))
+    count = max(ENOUGH, min(MORE * budget // points.size, MORE * MOST))
     size = min(count, MOST)
     parts = []
     for tile in range(1, 1 + -(-count // size)):
