@@ -108,7 +108,7 @@ def test_declared_sizes_show_the_monte_carlo_interval_where_it_is_the_headline(
     show: Show, page: Path, results: Synthetic
 ) -> None:
     browser = show(page, hash_="#point=R1%2FP004")
-    cell = 'return document.querySelector(\'table.points tr[data-i="3"] td:nth-child(5)\').textContent'
+    cell = "return document.querySelector('table.points tr[data-i=\"3\"] td:nth-child(5)').textContent"
     assert "…" in browser.execute_script(cell)
     move(browser, "chord", 1.05)
     assert "±" in browser.execute_script(cell)
@@ -163,3 +163,12 @@ def test_large_report_opens_and_follows_at_once(show: Show, tmp_path: Path) -> N
         move(browser, "module zero", 0.5 + 0.1 * i)
     # Two frames and the driver's own trips are in it; a fifth of a second is where a movement feels delayed.
     assert (perf_counter() - start) / 10 < 0.2
+
+
+def test_what_a_slider_does_is_said_aloud(show: Show, page: Path, results: Synthetic) -> None:
+    browser = show(page)
+    move(browser, "total pressure cell", 0.5)
+    said = browser.execute_script("return document.getElementById('said').textContent")
+    half = expanded(results, 0, "cl", {"total pressure cell": 0.5})
+    assert said == f"cl ± {half:.2g} at R1/P001; 1 of 2 targets missed"
+    assert browser.execute_script("return document.getElementById('said').getAttribute('role')") == "status"

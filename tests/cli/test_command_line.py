@@ -14,7 +14,7 @@ from tapband import __version__
 from tapband.cli import main
 
 HEAVY = ("numpy", "scipy", "pandas", "matplotlib", "SALib", "pint", "jinja2")
-COMMANDS = ("start", "check", "reduce", "forecast", "schema")
+COMMANDS = ("start", "check", "reduce", "rank", "compare", "forecast", "size", "schema")
 
 
 def loaded_after(*arguments: str) -> set[str]:

@@ -13,6 +13,7 @@ from matplotlib.figure import Figure
 from synthetic_results import Synthetic, synthetic
 from tapband.nouns.errors import QuestionError
 from tapband.report import figures
+from tapband.report.figure_files import figure_jobs
 from tapband.report.publish import publish
 
 Draw = Callable[[Synthetic, Axes | None], Axes]
@@ -84,22 +85,31 @@ HEADS = {"png": b"\x89PNG", "pdf": b"%PDF", "svg": b"<?xml"}
 
 
 @pytest.mark.parametrize("kind", HEADS)
-def test_figure_files_are_written_of_the_kind_asked_for(kind: str, tmp_path: Path) -> None:
+def test_figure_files_are_of_the_kind_asked_for(kind: str, tmp_path: Path) -> None:
+    jobs = figure_jobs(synthetic(points=2, taps=11, sources=6, coefficients=("cl", "cm")), kind)
+    assert len(jobs) == 2 * 3 + 2  # three a coefficient, one a point
+    for name in ("cl-drivers", "cp-0001-R1-P001"):
+        jobs[f"figures/{name}.{kind}"](tmp_path / f"{name}.{kind}")
+        assert (tmp_path / f"{name}.{kind}").read_bytes().startswith(HEADS[kind])
+
+
+def test_figures_stand_in_the_folder_of_the_results(tmp_path: Path) -> None:
     results = synthetic(points=1, taps=11, sources=6, coefficients=("cl", "cm"))
-    files = list((publish(results, tmp_path / "out", figures=kind) / "figures").iterdir())
-    assert len(files) == 2 * 3 + 1  # three a coefficient, one a point
-    assert all(file.read_bytes().startswith(HEADS[kind]) for file in files)
+    figures_in = publish(results, tmp_path / "out", figures="svg") / "figures"
+    assert {file.name for file in figures_in.glob("c[lp]-*")} == {
+        "cl-against-angle.svg", "cl-drivers.svg", "cl-shares.svg", "cp-0001-R1-P001.svg",
+    }  # fmt: skip
 
 
 def test_svg_figures_hold_hostile_names_as_text_and_repeat_byte_for_byte(tmp_path: Path) -> None:
     names = ["$x^2$ <b>", "../../up", "翼型"]
-    results = synthetic(points=3, taps=11, sources=9, coefficients=("cl", "cm"), names=names)
-    first = publish(results, tmp_path / "a", figures="svg") / "figures"
-    second = publish(results, tmp_path / "b", figures="svg") / "figures"
-    assert {file.name for file in first.glob("cp-*")} == {
-        "cp-0001-R1-x-2-b.svg", "cp-0002-R1-..-..-up.svg", "cp-0003-R2.svg",
+    jobs = figure_jobs(synthetic(points=3, taps=11, sources=9, coefficients=("cl", "cm"), names=names), "svg")
+    assert {name for name in jobs if name.startswith("figures/cp-")} == {
+        "figures/cp-0001-R1-x-2-b.svg", "figures/cp-0002-R1-..-..-up.svg", "figures/cp-0003-R2.svg",
     }  # fmt: skip
-    drivers = (first / "cl-drivers.svg").read_bytes()
-    assert drivers == (second / "cl-drivers.svg").read_bytes()
+    for name in ("first.svg", "second.svg"):
+        jobs["figures/cl-drivers.svg"](tmp_path / name)
+    drivers = (tmp_path / "first.svg").read_bytes()
+    assert drivers == (tmp_path / "second.svg").read_bytes()
     texts = {node.text for node in ElementTree.fromstring(drivers).iter("{http://www.w3.org/2000/svg}text")}
     assert "$x^2$ <b>" in texts

@@ -179,8 +179,8 @@ function sectionFigure(budget, normals, p, width) {
 // Both intervals of one coefficient on a common scale: linearised above, Monte Carlo below.
 function intervalSketch(c, p, linear) {
   const spans = [[linear.low, linear.high], [c.mcLow[p], c.mcHigh[p]]];
-  const [low, high] = range(spans.flat()), span = high - low || 1, X = (v) => short(4 + (v - low) / span * 88);
-  const root = svg("svg", { viewBox: "0 0 96 24", width: 96, height: 24, "aria-hidden": "true" });
+  const [low, high] = range(spans.flat()), span = high - low || 1, X = (v) => short(4 + (v - low) / span * 68);
+  const root = svg("svg", { viewBox: "0 0 76 24", width: 76, height: 24, "aria-hidden": "true" });
   spans.forEach(([a, b], i) => {
     if (Number.isFinite(a)) root.append(svg("path", { class: `s${i} bars`, d: `M${X(a)} ${7 + 10 * i}H${X(b)}m0 -3v6M${X(a)} ${4 + 10 * i}v6` }));
   });

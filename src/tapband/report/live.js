@@ -34,7 +34,17 @@ function showSliders() {
   for (const id of ["live-count", "sheet-count"]) $(id).textContent = String(budget.factor.filter((f) => f !== 1).length);
   $("reset").disabled = !budget.changed;
   if (!$("text-box").hidden) $("text").value = budget.text();
+  sayChange();
   showSliderShares();
+}
+
+// For those who hear the page: what the last change did.
+function sayChange() {
+  if (!budget.changed) { $("said").textContent = ""; return; }
+  const { name } = data.coefficients[state.of], { half } = budget.interval(state.point, state.of);
+  const missed = document.querySelectorAll('.targets [data-met="no"]').length;
+  const targets = data.targets.length ? `; ${missed} of ${data.targets.length} targets missed` : "";
+  $("said").textContent = `${name} ± ${significant(half, 2)} at ${data.points.key[state.point]}${targets}`;
 }
 
 function showSliderShares() {
@@ -122,6 +132,9 @@ function start() {
     goal.focus({ preventScroll: true });
   });
   window.addEventListener("hashchange", () => { recall(); showAll(); });
+  window.addEventListener("beforeprint", () => {
+    for (const node of document.querySelectorAll("details.printed")) node.open = true;
+  });
   let width = window.innerWidth;
   window.addEventListener("resize", () => {
     if (window.innerWidth === width) return;

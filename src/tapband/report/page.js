@@ -78,6 +78,7 @@ function showDrivers() {
   const rows = top.map((s) => shareRow(data.sources[s], means[s]));
   if (rest > 0) rows.push(shareRow({ name: `${order.length - 8} more together`, line: null }, rest));
   replace($("driver-rows"), ...rows);
+  $("driver-of").textContent = data.coefficients[state.of].name;
   const room = $("shares"), shown = top.slice(0, 5);
   replace(room, sharesFigure(budget, series, state.of, shown, wide(room)));
   replace($("shares-legend"), ...shown.map((s, i) => key(`s${i % SERIES}`, MARK_NAMES[i % 4], data.sources[s].name)));
@@ -142,7 +143,7 @@ function showPoint() {
     ["angle", `${fixed(points.alpha[p], 3)}°`], ["Mach number", significant(points.mach[p], 4)],
     ["dynamic pressure", Number.isFinite(points.q[p]) ? `${significant(points.q[p], 5)} Pa` : MISSING],
     ["Reynolds number", significant(points.reynolds[p], 4)], ["taps used", String(points.taps[p])],
-  ].flatMap(([name, value]) => [html("dt", {}, name), html("dd", {}, value)]));
+  ].map(([name, value]) => html("div", {}, html("dt", {}, name), html("dd", {}, value))));
   replace($("stated"), ...points.stated[p].map((line) => html("li", {}, line)));
   showIntervals(p);
   showMore(p);

@@ -127,7 +127,7 @@ def _budget(
         "sources": listed,
         "contribution": packed(contribution, "<f8" if contribution.size <= EXACT else "<f4"),
         "dof": packed(filled("dof", np.inf).min(axis=1)),
-        "size": packed(filled("standard_uncertainty", np.nan).max(axis=1), "<f4"),
+        "size": packed(np.fmax.reduce(filled("standard_uncertainty", np.nan), axis=1), "<f4"),
     }
 
 

@@ -11,6 +11,7 @@ from typing import TYPE_CHECKING
 from jinja2 import DictLoader, Environment, StrictUndefined
 from markupsafe import Markup
 
+from tapband.files.write_columns import COEFFICIENTS
 from tapband.files.write_text import one_line
 from tapband.report import summary
 from tapband.report.headline import coefficients_of
@@ -89,7 +90,10 @@ def _words(results: Outcome, campaign: Campaign) -> dict[str, object]:
         "sketches": [polar_sketch(frame, name, percent) for name in main],
         "driver_of": main[0] if main else "",
         "drivers": summary.driver_words(budget, main[0], campaign) if main else [],
-        "unconfirmed": doubts,
+        "unconfirmed": [doubt for doubt in doubts if doubt["name"] in COEFFICIENTS],
+        "unconfirmed_elsewhere": ", ".join(
+            f"{doubt['name']} at {doubt['count']}" for doubt in doubts if doubt["name"] not in COEFFICIENTS
+        ),
         "unconfirmed_total": sum(int(str(doubt["count"])) for doubt in doubts),
         "empty": summary.empty_words(frame),
         "warnings": lines_of(meta.get("warnings")),
