@@ -93,3 +93,7 @@ def test_a_decision_that_fails_sets_the_exit_status() -> None:
     failing = reduce(made(Limit(coefficient="cl", upper=0.1)))
     assert "fails" in set(failing.decisions["answer"])
     assert failing.exit_status == 1
+    said = [text for text in failing.warnings if text.startswith("decision")]
+    assert said[0].startswith("decision: cl of R1/P2 fails; 0.25")
+    assert said[0].endswith(" is asked to be at most 0.1")
+    assert said[-1] == "decisions: 3 more fail; see the table of decisions"

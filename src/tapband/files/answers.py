@@ -6,26 +6,33 @@ from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
+import numpy as np
+
 from tapband.files import frames_between as frames
 from tapband.files.frames_stated import unmoved, with_stated_columns
 from tapband.files.tolerance import angle, tolerance
 from tapband.nouns.plan import Polar
 from tapband.questions.between_trials import of_differences, of_fits
 from tapband.questions.compare import compare
-from tapband.questions.decide import decisions
+from tapband.questions.decide import Decision, decisions
 from tapband.questions.fit import fits
 from tapband.questions.joint import Evaluated
 from tapband.questions.latents import Latents, latents_at
 from tapband.questions.law import Drawn
 from tapband.questions.one_polar import fit_of
 from tapband.questions.regions import regions
-from tapband.questions.repeats import repeats, repeats_of
+from tapband.questions.repeats import Repeats, repeats, repeats_of
 from tapband.questions.stated import Together, stated, stated_problem, with_stated
 from tapband.reduction import Reduced
 from tapband.reduction.assemble import Assembled
 
 if TYPE_CHECKING:
     import pandas as pd
+
+SAID = 3
+"""Failing decisions that are named in the warnings."""
+UNLIKELY = 0.001
+"""Probability under which repeats that scatter too much are warned of; many are judged."""
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -124,5 +131,37 @@ def between(reduced: Reduced, tables: Mapping[str, pd.DataFrame]) -> Between:
         found |= with_stated_columns(tables, moved, reduced)
         latents = with_stated(latents, moved.problem)
         said = [*said, *unmoved(moved, reduced)]
-    failed = any(one.answer == "fails" for one in decided)
-    return Between(tables=found, warnings=tuple(said), failed=failed, latents=latents)
+    failed = [one for one in decided if one.answer == "fails"]
+    said = [*said, *_failures(failed, latents), *_surprises(again, latents)]
+    return Between(tables=found, warnings=tuple(said), failed=bool(failed), latents=latents)
+
+
+def _failures(failed: Sequence[Decision], latents: Latents) -> list[str]:
+    """Decisions that fail, a line each up to a few."""
+    lines = [
+        f"decision: {one.coefficient} of {latents.keys[one.point]} fails; {one.value:.4g} ± {one.expanded:.2g} "
+        f"is asked to be {_limits(one)}"
+        for one in failed[:SAID]
+    ]
+    more = len(failed) - SAID
+    return [*lines, f"decisions: {more} more fail; see the table of decisions"] if more > 0 else lines
+
+
+def _limits(one: Decision) -> str:
+    if np.isinf(one.lower):
+        return f"at most {one.upper:g}"
+    return f"at least {one.lower:g}" if np.isinf(one.upper) else f"{one.lower:g} to {one.upper:g}"
+
+
+def _surprises(again: Sequence[Repeats], latents: Latents) -> list[str]:
+    """Repeats that scatter more than what changes between them predicts, a line a coefficient."""
+    lines = {}
+    for one in again:
+        if one.scatter > one.predicted and one.p < UNLIKELY:
+            at = "over all angles" if np.isnan(one.alpha) else f"at {np.degrees(one.alpha):.2f} deg"
+            config = f" of {one.config}" if one.config else ""
+            lines[one.coefficient] = (
+                f"repeats{config} {at}: {one.coefficient} scatters by {one.scatter:.2g}, where the sources that "
+                f"change between them predict {one.predicted:.2g} (p = {one.p:.1g})"
+            )
+    return list(lines.values())

@@ -22,7 +22,7 @@ Codes = NDArray[np.int64]
 FITS, DIFFERENCES = 6_400, 25_600
 """Trials times points of the first look, from which a small correction to the linear law is had."""
 FEWEST, MOST = 16, 1_024
-MORE, ENOUGH = 8, 256
+MORE, ENOUGH = 4, 256
 """Times as many trials where the correction is not small, in tiles of their own, and the fewest of them.
 
 Rows past that budget have no Monte Carlo interval, and their table says so; asked for alone, they get one."""
