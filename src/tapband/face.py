@@ -156,6 +156,18 @@ class Results:
             latents.covariance(latents.index(a), latents.index(b)), index=names, columns=names
         )
 
+    def draws(self, *points: str, trials: int = 1000) -> pd.DataFrame:
+        """Joint Monte Carlo draws of some points: a row a trial, columns by point and coefficient.
+
+        What points share is drawn once and seen by all of them, so that differences, means and fits of the
+        columns carry it. A trial that is refused is missing.
+        """
+        from tapband.files.answers import drawn_together
+
+        if self.reduced is None:
+            raise QuestionError("draws: need the campaign; got results read from a folder; reduce it again")
+        return drawn_together(self.reduced.assembled, self.latents, points, trials)
+
     def compare(self, a: str, b: str, within: str | float | None = None) -> pd.DataFrame:
         """The difference ``a`` minus ``b`` of two points, runs or configs, with what they share cancelled.
 

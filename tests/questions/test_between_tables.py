@@ -97,3 +97,16 @@ def test_a_decision_that_fails_sets_the_exit_status() -> None:
     assert said[0].startswith("decision: cl of R1/P2 fails; 0.25")
     assert said[0].endswith(" is asked to be at most 0.1")
     assert said[-1] == "decisions: 3 more fail; see the table of decisions"
+
+
+def test_joint_draws_have_the_covariance_of_the_linear_model() -> None:
+    """4,000 trials of two points: a covariance is good to √(1 + ρ²) u u'/√4000, here four of those."""
+    drawn = results().draws("P4", "P7", trials=4_000)
+    assert drawn.shape == (4_000, 2 * len(results().latents.outputs))
+    first, second = drawn["R1/P4"]["cl"], drawn["R2/P7"]["cl"]
+    expected = results().covariance("P4", "P7").loc["cl", "cl"]
+    spread = float(first.std() * second.std())
+    assert abs(float(np.cov(first, second)[0, 1]) - expected) < 4.0 * np.sqrt(2.0) * spread / np.sqrt(4_000)
+    # What is shared cancels in the difference, as it does in the covariance.
+    difference = results().compare("P4", "P7").set_index("coefficient").loc["cl", "u"]
+    np.testing.assert_allclose((first - second).std(), difference, rtol=4.0 / np.sqrt(2.0 * 4_000))

@@ -11,12 +11,13 @@ import numpy as np
 from tapband.files import frames_between as frames
 from tapband.files.frames_stated import unmoved, with_stated_columns
 from tapband.files.tolerance import angle, tolerance
+from tapband.nouns.errors import QuestionError
 from tapband.nouns.plan import Polar
 from tapband.questions.between_trials import of_differences, of_fits
 from tapband.questions.compare import compare
 from tapband.questions.decide import Decision, decisions
 from tapband.questions.fit import fits
-from tapband.questions.joint import Evaluated
+from tapband.questions.joint import Evaluated, joint_trials
 from tapband.questions.latents import Latents, latents_at
 from tapband.questions.law import Drawn
 from tapband.questions.one_polar import fit_of
@@ -67,6 +68,22 @@ def compared(latents: Latents, setting: Setting, a: str, b: str, within: str | f
         return frames.differences(found, Drawn.none(found.value.shape))
     drawn = of_differences(setting.problem, latents, found, setting.level, setting.seed)
     return frames.differences(found, drawn)
+
+
+def drawn_together(assembled: Assembled, latents: Latents, names: Sequence[str], trials: int) -> pd.DataFrame:
+    """Joint trials of points, one row each, columns (point, coefficient)."""
+    import pandas as pd
+
+    if trials < 1:
+        raise QuestionError(f"draws: the number of trials must be 1 or more; got {trials}; write trials=1000")
+    points = np.array([latents.index(name) for name in names], dtype=np.int64)
+    setting = Setting.of(assembled)
+    assert setting.problem is not None
+    joint = joint_trials(setting.problem, latents, points, setting.seed, 0, trials)
+    y = joint.y[joint.places(points)]
+    keys = [latents.keys[p] for p in points]
+    columns = pd.MultiIndex.from_product([keys, latents.outputs], names=["point", "coefficient"])
+    return pd.DataFrame(np.swapaxes(y, 0, 1).reshape(trials, -1), columns=columns)
 
 
 def fit_by_name(
