@@ -147,6 +147,9 @@ def test_the_changed_sources_are_campaign_text_with_scaled_sizes(show: Show, pag
     )  # fmt: skip
     assert sources["tap drilling"]["limits"] == "0 mm"
     assert "# rear loading: ×0.5; not a [[source]]" in text
+    move(browser, "finite tap spacing", 0.0)
+    text = browser.execute_script("return document.getElementById('text').value")
+    assert '# finite tap spacing: ×0; write spacing = "none" under [reduction]' in text
 
 
 def test_large_report_opens_and_follows_at_once(show: Show, tmp_path: Path) -> None:

@@ -109,12 +109,18 @@ class Budget {
       const f = this.factor[s];
       if (f === 1) return;
       if (source.text) blocks.push(source.text.map((piece) => sized(piece, f)).join("").trimEnd());
-      else blocks.push(`# ${oneLine(source.name)}: ×${shortNumber(f)}; ${UNWRITTEN}`);
+      else blocks.push(`# ${oneLine(source.name)}: ×${shortNumber(f)}; ${f === 0 && HOW_OFF[source.name] || UNWRITTEN}`);
     });
     return blocks.length ? blocks.join("\n\n") + "\n" : "# every source at its declared size\n";
   }
 }
 
+// How the automatic sources are switched off in the campaign file.
+const HOW_OFF = {
+  "finite tap spacing": 'write spacing = "none" under [reduction]',
+  "trailing edge": "declare a source of size 0 that acts on the trailing-edge coefficient",
+  "rear loading": "declare a source of size 0 that acts on the trailing-edge coefficient",
+};
 const UNWRITTEN = "not a [[source]] whose size this page can write; change it in the campaign file by hand";
 
 function sized(piece, f) {
