@@ -16,7 +16,8 @@ from tapband.nouns.campaign import COEFFICIENT, STREAM_CHANNELS
 from tapband.nouns.plan import Option
 from tapband.nouns.source import Source
 from tapband.questions.basis import Basis
-from tapband.reduction.loads import CHANNEL_OF, ports_of
+from tapband.reduction.loads import ports_of
+from tapband.reduction.nominal import SLOT_OF
 
 Array = NDArray[np.float64]
 
@@ -126,7 +127,7 @@ def _channels(source: Source, basis: Basis) -> list[str]:
     if "tap pressure" in source.acts_on and campaign.pressures != COEFFICIENT:
         names += campaign.taps.names
         names += [name for name, _, _ in ports_of(source, campaign)]
-    names += [CHANNEL_OF[act] for act in source.acts_on if act in CHANNEL_OF]
+    names += [SLOT_OF[act] for act in source.acts_on if SLOT_OF.get(act) in STREAM_CHANNELS[campaign.stream]]
     if "dynamic pressure" in source.acts_on and "q" in STREAM_CHANNELS[campaign.stream]:
         names.append("q")
     known = (*campaign.taps.names, *STREAM_CHANNELS[campaign.stream])

@@ -11,28 +11,11 @@ from tapband.nouns.campaign import Campaign, Points
 from tapband.nouns.problem import Family
 from tapband.nouns.source import COMMON, INDEPENDENT, Scale, Shape, Size, Source
 from tapband.nouns.symbols import MEASURED
-from tapband.reduction.nominal import Nominal
+from tapband.reduction.nominal import ON_TAPS, SLOT_OF, Nominal
 
 Array = NDArray[np.float64]
 Indices = NDArray[np.int64]
 
-TAP_SLOTS = {
-    "tap pressure": "reading",
-    "tap location": "shift",
-    "tap row": "shift",
-    "tap coefficient": "extra",
-}
-CHANNEL_OF = {
-    "total pressure": "p_total",
-    "static pressure": "p_static",
-    "pressure difference": "p_difference",
-}
-SCALAR_SLOTS = {
-    "angle": "alpha",
-    "chord": "length",
-    "moment centre": "centre",
-    "trailing-edge coefficient": "edge_common",
-}
 PER_UNIT = {"angle": 180.0 / np.pi}
 LINEAR_SLOTS = frozenset({"reading", "extra", "edge_common", "edge_loading", "added"})
 """Slots that enter the measured coefficients linearly, given all the others."""
@@ -50,7 +33,7 @@ class Entry:
     @property
     def on_taps(self) -> bool:
         """Whether the quantity has one value a tap."""
-        return self.slot in ("reading", "shift", "extra")
+        return self.slot in ON_TAPS
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
@@ -163,7 +146,7 @@ def _entry(
 ) -> tuple[Entry, Array]:
     """The entry of one act, and the standard uncertainty it states, (P, n) or (P,)."""
     slot, reading = nominal.slot(act)
-    if act in TAP_SLOTS:
+    if SLOT_OF.get(act) in ON_TAPS:
         scale = campaign.taps.full_scale if source.full_scale is None else source.full_scale
         half = spread(source.size, nominal.tap_reading(act), np.asarray(scale))
         moved = half * nominal.tangent_x if act == "tap row" else half
@@ -189,7 +172,7 @@ def ports_of(source: Source, campaign: Campaign) -> list[tuple[str, int, float]]
     if "tap pressure" not in source.acts_on:
         return []
     members, _ = _members(source, campaign)
-    stated = {CHANNEL_OF.get(act) for act in source.acts_on}
+    stated = {SLOT_OF.get(act) for act in source.acts_on}
     column = source.across_taps.removeprefix("by ")
     ports = []
     for name, channel in campaign.channels.items():

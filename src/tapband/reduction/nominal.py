@@ -28,6 +28,9 @@ SLOT_OF = {
     "moment centre": "centre",
     "trailing-edge coefficient": "edge_common",
 }
+"""Slot of the chain that each act moves; an act that is not here is a slot of its own name, or a coefficient."""
+ON_TAPS = frozenset({"reading", "shift", "extra"})
+"""Slots with one value a tap."""
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)

@@ -8,10 +8,11 @@ from dataclasses import dataclass, fields, replace
 import numpy as np
 from numpy.typing import NDArray
 
-from tapband.experiment.chain import Equation, Inputs, evaluate, prandtl_glauert, stream_of
+from tapband.experiment.chain import Equation, Inputs, evaluate
 from tapband.nouns.problem import Draws, Family
 from tapband.reduction.live_sets import LiveSet
 from tapband.reduction.loads import Entry, Loaded
+from tapband.reduction.response import Response
 
 Array = NDArray[np.float64]
 Indices = NDArray[np.int64]
@@ -90,9 +91,9 @@ class CampaignProblem:
             inputs = self._inputs(rows, where, draws)
             with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
                 y[where] = evaluate(equation, inputs)
-                response = _Response.of(equation, inputs)
-                for f in out:
-                    variance[f][where] = response.variance(self.loaded[f], rows)
+                added = Response.of(equation, inputs).variances({f: self.loaded[f] for f in out}, rows)
+            for f, one in added.items():
+                variance[f][where] = one
         return y, variance
 
     def inputs(self, point: int) -> tuple[Equation, Inputs]:
@@ -152,91 +153,3 @@ def _error(entry: Entry, draws: Array, rows: Indices) -> Array:
     own = np.array_equal(entry.member, np.arange(size))
     chosen = draws[..., :size] if own else np.take(draws, entry.member, axis=-1)
     return np.asarray(chosen * load[:, None, :])
-
-
-@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
-class _Response:
-    """How the measured integrals answer tap errors at each drawn trial."""
-
-    by_cp: Array
-    """(·, ·, 3, n): ∂(cn, ct, cm)/∂Cp_i, the drawn tap locations in it; leading axes broadcast."""
-    q: Array
-    cos: Array
-    sin: Array
-    factor: Array | None
-    """Prandtl-Glauert factor (Pb, T), None without a rule."""
-    edges: Mapping[str, Array]
-    outputs: int
-
-    @classmethod
-    def of(cls, equation: Equation, inputs: Inputs) -> _Response:
-        stream = stream_of(equation, inputs)
-        weights = equation.tap_weights
-        by_cp = weights[None, None]
-        if inputs.shift is not None:
-            rule = equation.quadrature
-            moved = weights * inputs.shift[..., None, :]
-            bent = 0.5 * moved * inputs.shift[..., None, :]
-            by_cp = weights - moved @ rule.slope + bent @ rule.curvature
-        rows = {"edge_common": equation.edge_common, "edge_loading": equation.edge_loading}
-        length = inputs.length if equation.in_lengths else None
-        centre = equation.moment_centre + (0.0 if inputs.centre is None else inputs.centre)
-        factor = None if equation.compressibility == "none" else prandtl_glauert(equation, stream.mach)
-        return cls(
-            by_cp=_about(by_cp, centre, length),
-            q=stream.q,
-            cos=np.cos(inputs.alpha),
-            sin=np.sin(inputs.alpha),
-            factor=factor,
-            outputs=len(equation.outputs),
-            edges={k: _about(v[None, None, :, None], centre, length)[..., 0] for k, v in rows.items()},
-        )
-
-    def variance(self, loaded: Loaded, rows: Indices) -> Array:
-        """Σ_k (∂y/∂ξ_k)² of one linear family, (Pb, T, m)."""
-        added = [e for e in loaded.entries if e.slot == "added"]
-        if added:
-            rest = [e for e in loaded.entries if e.slot != "added"]
-            assert not rest, "an error of a coefficient acts on nothing else"
-            return np.asarray(np.sum(added[0].load[rows] ** 2, axis=2)[:, None, :])
-        count = len(loaded.family.members)
-        body = [self._body(entry, count, rows) for entry in loaded.entries]
-        parts: Array = body[0] if len(body) == 1 else np.sum(np.broadcast_arrays(*body), axis=0)
-        squares = {
-            (i, j): np.sum(parts[..., i, :] * parts[..., j, :], axis=-1)
-            for i, j in ((0, 0), (1, 1), (2, 2), (0, 1))
-        }
-        cross = 2.0 * self.sin * self.cos * squares[0, 1]
-        lift = self.cos**2 * squares[0, 0] + self.sin**2 * squares[1, 1] - cross
-        drag = self.sin**2 * squares[0, 0] + self.cos**2 * squares[1, 1] + cross
-        five = [squares[0, 0], squares[1, 1], squares[2, 2], lift, drag]
-        measured = np.stack(np.broadcast_arrays(*five), axis=-1)
-        if self.factor is None:
-            return measured
-        return np.concatenate(np.broadcast_arrays(measured, measured * self.factor[..., None] ** 2), axis=-1)
-
-    def _body(self, entry: Entry, count: int, rows: Indices) -> Array:
-        """∂(cn, ct, cm)/∂ξ (·, ·, 3, G) of one entry."""
-        load = entry.load[rows]
-        if not entry.on_taps:
-            part = np.zeros((1, 1, 1, count))
-            part[..., entry.member[0]] = 1.0
-            return np.asarray(self.edges[entry.slot][..., None] * load[:, None, None, None] * part)
-        if entry.slot == "reading":
-            scaled = self.by_cp * (load[:, None, None, :] / self.q[..., None, None])
-        else:
-            scaled = self.by_cp * load[:, None, None, :]
-        if count == entry.member.size and np.array_equal(entry.member, np.arange(count)):
-            return np.asarray(scaled)
-        gather = (entry.member[:, None] == np.arange(count)).astype(np.float64)
-        return np.asarray(scaled @ gather)
-
-
-def _about(rows: Array, centre: Array | float, length: Array | None) -> Array:
-    """cn, ct, cm about the moment centre (…, 3, k) from cn, ct, cm₀ rows (…, 3, k)."""
-    cn, ct, cm0 = rows[..., 0, :], rows[..., 1, :], rows[..., 2, :]
-    if length is not None:
-        g = (1.0 / (1.0 + length))[..., None]
-        cn, ct, cm0 = cn * g, ct * g, cm0 * g * g
-    moved = centre[..., None] if isinstance(centre, np.ndarray) else centre
-    return np.stack(np.broadcast_arrays(cn, ct, cm0 + moved * cn), axis=-2)
