@@ -16,6 +16,7 @@ from numpy.typing import NDArray
 from tapband.experiment.place import at_nominal
 from tapband.experiment.quadrature import Quadrature
 from tapband.experiment.rotate import wind_axes
+from tapband.experiment.rowwise import in_pieces
 from tapband.experiment.rule import moved, refused
 from tapband.experiment.stream import Stream, solve
 from tapband.nouns.symbols import MEASURED
@@ -135,14 +136,14 @@ def evaluate(equation: Equation, inputs: Inputs) -> Values:
     else:
         nodes = _nodes(equation, cp, inputs)
         after = moved_nodes(equation, nodes, stream.mach)
-        parts = [values @ equation.quadrature.node_weights[0].T for values in (nodes, after)]
+        parts = [in_pieces(values, equation.quadrature.node_weights[0].T) for values in (nodes, after)]
     y = np.concatenate([_coefficients(equation, rows, inputs) for rows in parts], axis=-1)
     return y if inputs.added is None else np.asarray(y + inputs.added)
 
 
 def integrals(equation: Equation, cp: Values, inputs: Inputs) -> Values:
     """cn, ct, cm₀ (…, 3) from placed Cp (…, n)."""
-    rows = cp @ equation.tap_weights.T + equation.constant
+    rows = in_pieces(cp, equation.tap_weights.T) + equation.constant
     if inputs.edge_common is not None:
         rows = rows + inputs.edge_common[..., None] * equation.edge_common
     if inputs.edge_loading is not None:
@@ -166,7 +167,7 @@ def moved_nodes(equation: Equation, nodes: Values, mach: Values) -> Values:
 
 def _nodes(equation: Equation, cp: Values, inputs: Inputs) -> Values:
     rule = equation.quadrature
-    nodes = cp @ rule.nodes_of.T + rule.nodes_constant
+    nodes = in_pieces(cp, rule.nodes_of.T) + rule.nodes_constant
     if inputs.edge_common is not None:
         nodes = nodes + inputs.edge_common[..., None] * rule.edge_common
     if inputs.edge_loading is not None:

@@ -8,6 +8,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from tapband.experiment.quadrature import Quadrature
+from tapband.experiment.rowwise import in_pieces
 
 Values = NDArray[Any]
 
@@ -17,9 +18,9 @@ def at_nominal(cp: Values, shift: Values, rule: Quadrature) -> Values:
 
     Second order in the shift; the derivatives are those of the cubic through the readings.
     """
-    slope = cp @ rule.slope.T
+    slope = in_pieces(cp, rule.slope.T)
     slope += rule.slope_constant
-    moved = (cp @ rule.curvature.T + rule.curvature_constant) * (0.5 * shift)
+    moved = (in_pieces(cp, rule.curvature.T) + rule.curvature_constant) * (0.5 * shift)
     moved -= slope
     moved *= shift
     moved += cp

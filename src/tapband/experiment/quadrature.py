@@ -17,6 +17,7 @@ from numpy.typing import NDArray
 from scipy.interpolate import CubicSpline
 
 from tapband.experiment.contour import Contour
+from tapband.experiment.rowwise import in_pieces, sum_in_pieces
 
 Array = NDArray[np.float64]
 AT_EDGE = 1e-6
@@ -113,9 +114,9 @@ def quadrature(
         nodes_constant=constant,
         edge_common=edge.common,
         edge_loading=edge.loading,
-        slope=derivatives[0] @ edge.nodes_of,
+        slope=in_pieces(derivatives[0], edge.nodes_of),
         slope_constant=derivatives[0] @ constant,
-        curvature=derivatives[1] @ edge.nodes_of,
+        curvature=in_pieces(derivatives[1], edge.nodes_of),
         curvature_constant=derivatives[1] @ constant,
         rear=edge.rear,
         rear_mean=edge.rear_mean,
@@ -214,7 +215,7 @@ def _along_contour(contour: Contour, nodes: Array, rule: str, full_arm: bool) ->
     basis = CubicSpline(nodes, np.eye(nodes.size))(at) if rule == "contour-cubic" else _hats(nodes, at)
     dx, dy = w * contour.x_of(at, 1), w * contour.y_of(at, 1)
     lever = contour.x_of(at) * dx + (contour.y_of(at) * dy if full_arm else 0.0)
-    return np.asarray(np.vstack([-dx, dy, lever]) @ basis)
+    return sum_in_pieces(np.vstack([-dx, dy, lever]), basis)
 
 
 def _hats(nodes: Array, at: Array) -> Array:
