@@ -411,6 +411,7 @@ def compare(
     a: str,
     b: str,
     within: str | float | None = None,
+    trials: str | int | None = None,
     seed: int | None = None,
 ) -> Results:
     """The table ``differences`` alone, without reducing the whole campaign; see :meth:`Results.compare`."""
@@ -419,7 +420,11 @@ def compare(
     from tapband.files.answers import Setting, compared
 
     stated = campaign.intervals
-    intervals = replace(stated, seed=stated.seed if seed is None else seed)
+    intervals = replace(
+        stated,
+        trials=stated.trials if trials is None else str(trials),
+        seed=stated.seed if seed is None else seed,
+    )
     campaign = replace(campaign, intervals=intervals)
     assembled = assemble(campaign)
     latents = full_latents(assembled)

@@ -196,6 +196,18 @@ def test_monte_carlo_confirms_a_difference_and_sees_a_product() -> None:
     assert not drawn.agrees(found.value - found.U, found.value + found.U, found.u)[0, CL]
 
 
+def test_plain_joint_trials_agree_with_the_law_and_its_correction() -> None:
+    """20,000 plain trials: an end is good to √(p(1 − p)/N)/f = 0.019 u, here four of those; seeds differ."""
+    assembled = assemble(campaign(every_kind(), alphas=[2.0, 6.0], runs=["R1", "R2"]))
+    latents = latents_at(assembled)
+    found = asked(latents, "P1", "P2")
+    quick = of_differences(assembled.problem, latents, found, 0.95, 1)
+    plain = of_differences(assembled.problem, latents, found, 0.95, 2, "plain:20000")
+    np.testing.assert_allclose(plain.low, quick.low, atol=4.0 * 0.019 * float(found.u.max()))
+    assert np.all(np.abs(plain.high - quick.high) < 4.0 * 0.019 * found.u)
+    assert np.all(plain.high_sd < 0.04 * found.u)
+
+
 def test_joint_trials_move_ends_no_more_than_the_tolerance_where_the_chain_is_nearly_linear() -> None:
     runs = ["R1"] * 4 + ["R2"] * 4
     assembled = assemble(campaign(every_kind(), alphas=[0.0, 3.0, 6.0, 9.0] * 2, runs=runs))

@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING, Annotated, Any
 
 import typer
 
-from tapband.cli.options import CampaignFile, Quiet, Seed, Version
+from tapband.cli.options import CampaignFile, Quiet, Seed, Trials, Version
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -47,6 +47,7 @@ def compare(
     b: Name,
     within: Within = None,
     out: Folder = None,
+    trials: Trials = None,
     seed: Seed = None,
     quiet: Quiet = False,
     version: Version = False,
@@ -64,7 +65,7 @@ def compare(
     silent = quiet or bool(context.obj)
     if out is not None:
         check_target(out)
-    results = face.compare(face.load(campaign), a, b, within=within, seed=seed)
+    results = face.compare(face.load(campaign), a, b, within=within, trials=trials, seed=seed)
     if out is not None:
         from tapband.files.write import write
 

@@ -47,6 +47,7 @@ class Setting:
     seed: int
     same_angle: float
     problem: Evaluated | None
+    trials: str = "auto"
 
     @classmethod
     def of(cls, assembled: Assembled) -> Setting:
@@ -58,6 +59,7 @@ class Setting:
             seed=campaign.intervals.seed,
             same_angle=campaign.plan.polar.same_angle,
             problem=assembled.problem if stated_too is None else Together(stated=stated_too),
+            trials=campaign.intervals.trials,
         )
 
 
@@ -66,7 +68,7 @@ def compared(latents: Latents, setting: Setting, a: str, b: str, within: str | f
     found = compare(latents, a, b, within=tolerance(within, setting.same_angle), level=setting.level)
     if setting.problem is None:
         return frames.differences(found, Drawn.none(found.value.shape))
-    drawn = of_differences(setting.problem, latents, found, setting.level, setting.seed)
+    drawn = of_differences(setting.problem, latents, found, setting.level, setting.seed, setting.trials)
     return frames.differences(found, drawn)
 
 

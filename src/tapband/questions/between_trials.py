@@ -9,6 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from tapband.probability.draws import fresh, keyed
+from tapband.probability.montecarlo import parse_trials
 from tapband.questions.combine import Combination
 from tapband.questions.compare import Differences
 from tapband.questions.fit import Fits
@@ -26,13 +27,15 @@ MORE, ENOUGH = 4, 256
 """Times as many trials where the correction is not small, in tiles of their own, and the fewest of them.
 
 Rows past that budget have no Monte Carlo interval, and their table says so; asked for alone, they get one."""
+HELD = 20_000_000
+"""Values of differences held at once: a fixed number of trials is at most what this allows."""
 ENDS = ("low", "high", "low_sd", "high_sd")
 
 
 def of_differences(
-    problem: Evaluated, latents: Latents, found: Differences, level: float, seed: int
+    problem: Evaluated, latents: Latents, found: Differences, level: float, seed: int, trials: str = "auto"
 ) -> Drawn:
-    """Monte Carlo intervals (R, m) of differences."""
+    """Monte Carlo intervals (R, m) of differences; ``trials`` as of a campaign, N at most what memory holds."""
     half = np.sqrt(3.0 * found.added)
 
     def true(joint: Joint, rows: Codes) -> Array:
@@ -40,8 +43,9 @@ def of_differences(
         return applied(found.combination.only(rows), joint, away)
 
     return _drawn(
-        problem, latents, found.combination, found.value, found.u, half, true, level, seed, DIFFERENCES
-    )
+        problem, latents, found.combination, found.value, found.u, half, true, level, seed, DIFFERENCES,
+        trials,
+    )  # fmt: skip
 
 
 def of_fits(problem: Evaluated, latents: Latents, found: Fits, level: float, seed: int) -> Drawn:
@@ -75,24 +79,29 @@ def _drawn(
     level: float,
     seed: int,
     budget: int,
+    trials: str = "auto",
 ) -> Drawn:
+    engine, fixed = parse_trials(trials)
     points = np.unique(combination.point)
-    size = int(np.clip(budget // points.size, FEWEST, MOST))
+    count = int(np.clip(budget // points.size, FEWEST, MOST))
+    if fixed is not None:
+        count = max(FEWEST, min(fixed, HELD // value.size))
+    linear, moved = _trials(
+        problem, latents, combination, lambda j: true(j, np.arange(len(value))), half, seed, count
+    )
+    if engine == "plain":
+        return counted(value, moved, level)
     reach = reaches(problem.families, latents, combination, u, half, level)
-    joint = joint_trials(problem, latents, points, seed, 0, size)
-    extra = _rectangular(seed, 0, half, size)
-    away = joint.linear - latents.estimate[joint.points][:, None, :]
-    linear = np.nan_to_num(applied(combination, joint, np.nan_to_num(away))) + extra
-    first = corrected(value, u, reach, linear, true(joint, np.arange(len(value))) + extra)
+    first = corrected(value, u, reach, linear, moved)
     rough = ~first.nearly & np.isfinite(value) & (u > 0.0)
     if not rough.any():
         return first
     ends = {name: np.where(rough, np.nan, getattr(first, name)) for name in ENDS}
     rows = _affordable(np.flatnonzero(rough.any(axis=1)), combination, MORE * budget // ENOUGH)
     if rows.size:
-        more = _more_trials(
-            problem, latents, combination.only(rows), lambda j: true(j, rows), half[rows], seed, budget
-        )
+        some = combination.only(rows)
+        count = int(np.clip(MORE * budget // np.unique(some.point).size, ENOUGH, MORE * MOST))
+        _, more = _trials(problem, latents, some, lambda j: true(j, rows), half[rows], seed, count, first=1)
         second = counted(value[rows], more, level)
         for name in ENDS:
             ends[name][rows] = np.where(rough[rows], getattr(second, name), ends[name][rows])
@@ -105,24 +114,27 @@ def _affordable(rows: Codes, combination: Combination, points: int) -> Codes:
     return np.asarray(rows[(cost <= points) | (np.arange(rows.size) == 0)])
 
 
-def _more_trials(
+def _trials(
     problem: Evaluated,
     latents: Latents,
     combination: Combination,
     true: Callable[[Joint], Array],
     half: Array,
     seed: int,
-    budget: int,
-) -> Array:
-    """Values less their estimates (R, q, N) of rows that the linear law does not serve, from fresh tiles."""
+    count: int,
+    first: int = 0,
+) -> tuple[Array, Array]:
+    """What the linear model and the equation move each quantity by, (R, q, N) each, from tile ``first`` on."""
     points = np.unique(combination.point)
-    count = max(ENOUGH, min(MORE * budget // points.size, MORE * MOST))
     size = min(count, MOST)
-    parts = []
-    for tile in range(1, 1 + -(-count // size)):
+    linear, moved = [], []
+    for tile in range(first, first + -(-count // size)):
         joint = joint_trials(problem, latents, points, seed, tile, size)
-        parts.append(true(joint) + _rectangular(seed, tile, half, size))
-    return np.concatenate(parts, axis=2)
+        away = np.nan_to_num(joint.linear - latents.estimate[joint.points][:, None, :])
+        extra = _rectangular(seed, tile, half, size)
+        linear.append(np.nan_to_num(applied(combination, joint, away)) + extra)
+        moved.append(true(joint) + extra)
+    return np.concatenate(linear, axis=2)[..., :count], np.concatenate(moved, axis=2)[..., :count]
 
 
 def _rectangular(seed: int, tile: int, half: Array, size: int) -> Array:
