@@ -63,7 +63,8 @@ def assemble(campaign: Campaign) -> Assembled:
     nominal = nominal_of(campaign, raw, contour.tangent(campaign.taps.s)[0])
     outputs = MEASURED if campaign.reduction.compressibility == "none" else MEASURED + REFERENCE
     corrected = correct(campaign, raw, nominal, len(outputs))
-    contour = contour_of(campaign, corrected.chord)
+    if corrected.chord and campaign.section.contour_in_lengths:
+        contour = contour_of(campaign, corrected.chord)
     s = campaign.taps.s + corrected.location
     points = corrected.points
     sets = live_sets(campaign, contour, s, nominal.live, edge=corrected.edge, centre=corrected.centre)

@@ -67,12 +67,14 @@ def live_sets(
     campaign: Campaign, contour: Contour, s: Array, live: Mask, *, edge: float = 0.0, centre: float = 0.0
 ) -> tuple[LiveSet, ...]:
     """The sets that occur among points with live taps ``live`` (P, n), each computed once."""
-    masks, index = np.unique(live, axis=0, return_inverse=True)
+    members: dict[bytes, list[int]] = {}
+    for point, packed in enumerate(np.packbits(live, axis=1)):
+        members.setdefault(packed.tobytes(), []).append(point)
     return tuple(
         LiveSet(
-            key="live " + sha256(np.packbits(mask).tobytes()).hexdigest()[:16],
-            points=np.flatnonzero(index.ravel() == i),
-            equation=equation_of(campaign, contour, s, mask, edge=edge, centre=centre),
+            key="live " + sha256(packed).hexdigest()[:16],
+            points=np.array(points, dtype=np.int64),
+            equation=equation_of(campaign, contour, s, live[points[0]], edge=edge, centre=centre),
         )
-        for i, mask in enumerate(masks)
+        for packed, points in sorted(members.items())
     )
