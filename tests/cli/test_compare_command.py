@@ -66,6 +66,19 @@ def test_a_folder_of_other_work_is_refused_before_anything_is_computed(
     assert (tmp_path / "mine.txt").read_text() == "kept"
 
 
+def test_results_of_reduce_are_not_replaced_by_differences(
+    started: Path, tmp_path: Path, capsys: pytest.CaptureFixture[str]
+) -> None:
+    out = tmp_path / "reduced"
+    assert main(["reduce", str(started), "--out", str(out), "--trials", "300", "--quiet"]) == 0
+    assert main(["compare", str(started), "R1", "R2", "--out", str(out)]) == 2
+    assert capsys.readouterr().err == (
+        f"{out}: must not hold results of another command, which differences would replace; "
+        "got those of reduce; choose another --out\n"
+    )
+    assert (out / "coefficients.csv").exists()
+
+
 def test_a_tolerance_pairs_angles_that_a_smaller_one_leaves_out(
     started: Path, capsys: pytest.CaptureFixture[str]
 ) -> None:

@@ -60,11 +60,10 @@ def compare(
     and a run is written run:NAME or point:NAME.
     """
     from tapband import face
-    from tapband.files.write_folder import check_target
 
     silent = quiet or bool(context.obj)
     if out is not None:
-        check_target(out)
+        _check_folder(out)
     results = face.compare(face.load(campaign), a, b, within=within, trials=trials, seed=seed)
     if out is not None:
         from tapband.files.write import write
@@ -76,6 +75,22 @@ def compare(
         print_differences(results.tables["differences"], results.meta["level"], output())
         if out is not None:
             output().print(str(out / "differences.csv"), markup=False, soft_wrap=True)
+
+
+def _check_folder(out: Path) -> None:
+    """Refuse a folder that is not ours, or that holds the results of another command."""
+    from tapband.files.read_results import read
+    from tapband.files.write_folder import check_target, files_of
+    from tapband.nouns.errors import Fault, InputError
+
+    check_target(out)
+    if files_of(out) is not None:
+        kind = str(read(out).meta.get("kind", ""))
+        if kind != "compare":
+            rule = "must not hold results of another command, which differences would replace"
+            raise InputError(
+                [Fault(where=str(out), rule=rule, got=f"those of {kind}", do="choose another --out")]
+            )
 
 
 def print_differences(frame: pd.DataFrame, level: float, console: Console) -> None:
