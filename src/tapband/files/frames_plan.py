@@ -9,12 +9,13 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from tapband.nouns.errors import QuestionError
-from tapband.questions.allowances import Allowance
-from tapband.questions.basis import Basis
+from tapband.questions.averaging import Averaging
+from tapband.questions.layout import LayoutChoice
 from tapband.questions.planned import Comparison, Scores, comparison, scores, why_not_compared
 from tapband.questions.selection import Efficient
 from tapband.questions.sizing import Sized
 from tapband.questions.targets import Demands
+from tapband.questions.wiring_choice import WiringChoice
 from tapband.reduction import Reduced
 
 Array = NDArray[np.float64]
@@ -27,13 +28,19 @@ def plan_frames(sized: Sized) -> dict[str, pd.DataFrame]:
             sized.basis.demands, sized.declared.headline, sized.met, sized.basis.raw.names, sized.basis.raw.runs,
             sized.basis.assembled.problem.outputs,
         ),
-        "allowances": allowance_table(sized.allowances, sized.basis),
+        "allowances": allowance_table(sized),
     }  # fmt: skip
     if sized.choices is not None:
         tables["selection"] = selection_table(sized)
         tables["options"] = option_table(sized)
         tables["frontier"] = frontier_table(sized)
     tables["ranges"] = range_table(sized)
+    if sized.wiring is not None:
+        tables["wiring"], tables["wirings"] = wiring_tables(sized, sized.wiring)
+    if sized.layout is not None:
+        tables["layout"], tables["layouts"] = layout_tables(sized.layout)
+    if sized.averaging is not None:
+        tables["averaging"] = averaging_table(sized, sized.averaging)
     return tables
 
 
@@ -102,9 +109,14 @@ def planned_table(reduced: Reduced, comparison: Comparison) -> pd.DataFrame:
     )
 
 
-def allowance_table(allowed: Sequence[Allowance], basis: Basis) -> pd.DataFrame:
-    """One row a declared source; ``allowed`` is empty where even zero fails, infinite where nothing depends."""
-    demands, outputs = basis.demands, basis.assembled.problem.outputs
+def allowance_table(sized: Sized) -> pd.DataFrame:
+    """One row a declared source; ``allowed`` is empty where even zero fails, infinite where nothing depends on it.
+
+    ``equal_contribution`` and ``least_cost`` are its sizes in the two allocations of all sources together.
+    """
+    allowed, demands = sized.allowances, sized.basis.demands
+    outputs = sized.basis.assembled.problem.outputs
+    declared = np.array([a.declared for a in allowed], dtype=np.float64)
 
     def binding(values: Sequence[str], index: NDArray[np.int64]) -> list[str]:
         return ["" if a.demand is None else values[index[a.demand]] for a in allowed]
@@ -112,12 +124,18 @@ def allowance_table(allowed: Sequence[Allowance], basis: Basis) -> pd.DataFrame:
     return pd.DataFrame(
         {
             "source": [a.source for a in allowed],
-            "declared": [a.declared for a in allowed],
-            "allowed": [np.nan if a.allowed is None else a.allowed for a in allowed],
+            "declared": declared,
+            "allowed": np.array(
+                [np.nan if a.allowed is None else a.allowed for a in allowed], dtype=np.float64
+            ),
             "unit": [a.unit for a in allowed],
-            "headroom": [np.nan if a.factor is None else a.factor for a in allowed],
-            "binding_point": binding(basis.raw.keys, demands.point),
+            "headroom": np.array(
+                [np.nan if a.factor is None else a.factor for a in allowed], dtype=np.float64
+            ),
+            "binding_point": binding(sized.basis.raw.keys, demands.point),
             "binding_coefficient": binding(outputs, demands.output),
+            "equal_contribution": declared * sized.allocation.equal,
+            "least_cost": declared * sized.allocation.least_cost,
             "reason": [a.reason for a in allowed],
         }
     )
@@ -125,7 +143,8 @@ def allowance_table(allowed: Sequence[Allowance], basis: Basis) -> pd.DataFrame:
 
 def selection_table(sized: Sized) -> pd.DataFrame:
     """One row a slot; no rows where no choice meets the targets."""
-    assert sized.choices is not None and sized.selection is not None
+    assert sized.choices is not None
+    assert sized.selection is not None
     choice = sized.selection.choice
     chosen = () if choice is None else choice.chosen
     options = [sized.choices.options[j] for j in chosen]
@@ -140,7 +159,8 @@ def selection_table(sized: Sized) -> pd.DataFrame:
 
 def option_table(sized: Sized) -> pd.DataFrame:
     """One row an option: whether its full scale holds the readings, and whether it is chosen."""
-    assert sized.choices is not None and sized.selection is not None
+    assert sized.choices is not None
+    assert sized.selection is not None
     choices, choice = sized.choices, sized.selection.choice
     chosen = set() if choice is None else set(choice.chosen)
     scales = [np.nan if option.full_scale is None else option.full_scale for option in choices.options]
@@ -193,6 +213,72 @@ def range_table(sized: Sized) -> pd.DataFrame:
             "utilisation": seen.utilisation[used],
             "expected_lowest": seen.expected_lowest[used],
             "expected_highest": seen.expected_highest[used],
-            "saturates": np.where(past, "yes", np.where(np.isnan(seen.full_scale[used]), "", "no")).astype(object),
+            "saturates": np.where(past, "yes", np.where(np.isnan(seen.full_scale[used]), "", "no")).astype(
+                object
+            ),
         }
     )
+
+
+def wiring_tables(sized: Sized, choice: WiringChoice) -> tuple[pd.DataFrame, pd.DataFrame]:
+    """The wiring found, one row a tap (no module where the tap is not used); and all wirings judged."""
+    module = [""] * len(sized.basis.campaign.taps.names)
+    for tap, g in zip(choice.taps.tolist(), choice.found.module.tolist(), strict=True):
+        module[tap] = choice.modules[g]
+    found = pd.DataFrame({"tap": list(sized.basis.campaign.taps.names), "module": module})
+    demands, outputs = sized.basis.demands, sized.basis.assembled.problem.outputs
+    judged = pd.DataFrame(
+        {
+            "wiring": [one.name for one in choice.wirings],
+            "worst_ratio": np.array([one.worst for one in choice.wirings], dtype=np.float64),
+            "binding_point": [sized.basis.raw.keys[demands.point[one.demand]] for one in choice.wirings],
+            "binding_coefficient": [outputs[demands.output[one.demand]] for one in choice.wirings],
+        }
+    )
+    return found, judged
+
+
+def layout_tables(choice: LayoutChoice) -> tuple[pd.DataFrame, pd.DataFrame]:
+    """The layout found, one row a tap; and all layouts judged, one row a number of taps and kind."""
+    found = pd.DataFrame(
+        {
+            "tap": list(choice.names),
+            "surface": np.where(choice.s >= 0.0, "upper", "lower").astype(object),
+            "x": choice.x,
+            "y": choice.y,
+            "s": choice.s,
+        }
+    )
+    found.attrs["units"] = {"s": "chord"}
+    judged = pd.DataFrame(
+        {
+            "taps": [one.taps for one in choice.judged],
+            "layout": [one.layout for one in choice.judged],
+            "worst_ratio": np.array([one.interval for one in choice.judged], dtype=np.float64),
+            "rms_error_ratio": np.array([one.error for one in choice.judged], dtype=np.float64),
+        }
+    )
+    return found, judged.sort_values(["taps", "layout"], kind="stable", ignore_index=True)
+
+
+def averaging_table(sized: Sized, found: Averaging) -> pd.DataFrame:
+    """One row a target and point: what the fluctuation makes of it, and how long to average."""
+    basis = sized.basis
+    demands, points = basis.demands, basis.raw
+    table = pd.DataFrame(
+        {
+            "point": [points.names[p] for p in demands.point],
+            "run": [points.runs[p] for p in demands.point],
+            "coefficient": [basis.assembled.problem.outputs[j] for j in demands.output],
+            "u_single": found.single,
+            "u_single_bound": found.bound,
+            "effective_samples": np.full(found.single.size, found.effective),
+            "u_mean": found.mean,
+            "record_needed": found.record,
+            "samples_needed": np.ceil(found.record / (2.0 * found.time_scale)),
+            "difference": demands.limit,
+            "repeats_needed": found.repeats,
+        }
+    )
+    table.attrs["units"] = {"record_needed": "s"}
+    return table

@@ -14,10 +14,22 @@ FLUCTUATION = (
     "source that the campaign declares, or as samples."
 )
 
+JUDGED = (
+    "A layout is judged by its true error on inviscid flows of this section and of thinner, thicker and more or "
+    "less cambered ones; what the stream, the angle and other sources outside the taps add is left out of it."
+)
+
 
 def remarks(sized: Sized) -> tuple[str, ...]:
     """Lines for the reader, the most important first."""
-    said = [_headline(sized), *_selection(sized), *_ranges(sized), *sized.notes, ALLOWANCE]
+    said = [
+        _headline(sized), *_selection(sized), *_ranges(sized), *_wiring(sized), *_layout(sized),
+        *_averaging(sized), *sized.notes, ALLOWANCE,
+    ]  # fmt: skip
+    if not sized.allocation.possible:
+        said.append(
+            "No sizes of all declared sources together meet the targets: what stays fails them alone."
+        )
     forecast = sized.basis.campaign.plan.forecast
     if forecast is not None and forecast.fluctuation:
         said.append(FLUCTUATION)
@@ -79,6 +91,43 @@ def _ranges(sized: Sized) -> list[str]:
     if not past.size:
         return []
     names = ", ".join(seen.names[i] for i in past[:8]) + (" …" if past.size > 8 else "")
+    return [f"{past.size} channels may read past their full scale, margin and fluctuation counted: {names}."]
+
+
+def _wiring(sized: Sized) -> list[str]:
+    if sized.wiring is None:
+        return []
+    if not sized.wiring.shared:
+        return ["Wiring: no source is shared by module, so every wiring gives the same intervals."]
+    judged = {one.name: one.worst for one in sized.wiring.wirings}
+    others = ", ".join(f"{name} {worst:.3g}" for name, worst in judged.items() if name != "found")
     return [
-        f"{past.size} channels may read past their full scale, margin and fluctuation counted: {names}."
+        f"Wiring: the worst ratio of U to target is {judged['found']:.3g} with the wiring found; {others}."
+    ]
+
+
+def _layout(sized: Sized) -> list[str]:
+    choice = sized.layout
+    if choice is None:
+        return []
+    found, root, cosine = choice.of("found"), choice.of("root"), choice.of("cosine")
+    said = (
+        f"Taps: {found.taps} at the places found make a worst true rms error of {found.error:.3g} times its target "
+        f"(√x {root.error:.3g}, cosine {cosine.error:.3g}) and a worst U of {found.interval:.3g} times it "
+        f"(√x {root.interval:.3g}, cosine {cosine.interval:.3g})."
+    )
+    fewest = [one.taps for one in choice.judged if one.layout == "found" and one.interval <= 1.0]
+    more = f" The fewest looked at that meet every target are {min(fewest)}." if fewest else ""
+    return [said + more, JUDGED]
+
+
+def _averaging(sized: Sized) -> list[str]:
+    found = sized.averaging
+    if found is None:
+        return []
+    longest = float(np.max(np.nan_to_num(found.record, nan=np.inf)))
+    if np.isinf(longest):
+        return ["Averaging: some targets are missed however long a record is."]
+    return [
+        f"Averaging: a record of {longest:.3g} s keeps every target with the fluctuation of the forecast."
     ]

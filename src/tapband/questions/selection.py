@@ -9,6 +9,7 @@ where one separates it, and always by itself. The first optimum that holds is th
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass, field
 
 import numpy as np
@@ -23,6 +24,8 @@ Chosen = tuple[int, ...]
 
 ROUNDS = 5000
 """Cuts after which a search gives up; each removes at least one choice."""
+MOST = 400
+"""Efficient sets after which a frontier ends."""
 SAME = 1e-7
 """Relative difference of costs or ratios below which they are equal."""
 
@@ -162,7 +165,9 @@ def _in_units(cost: Array) -> Array:
     return cost * (1e4 / largest) if largest > 0.0 else cost
 
 
-def frontier(search: Search, most: int = 400) -> tuple[tuple[Efficient, ...], bool]:
+def frontier(
+    search: Search, progress: Callable[[int, int], None] | None = None, most: int = MOST
+) -> tuple[tuple[Efficient, ...], bool]:
     """All efficient choices from the cheapest to the best, and whether the list is complete.
 
     Each is the cheapest of its worst ratio and the best of its cost; ``most`` ends the list.
@@ -174,5 +179,7 @@ def frontier(search: Search, most: int = 400) -> tuple[tuple[Efficient, ...], bo
         if one is None:
             return tuple(found), True
         found.append(one)
+        if progress is not None:
+            progress(len(found), len(found) + 1)
         ratio = one.worst * (1.0 - SAME)
     return tuple(found), False

@@ -9,13 +9,17 @@ import numpy as np
 from numpy.typing import NDArray
 
 from tapband.nouns.campaign import Campaign
+from tapband.questions.allocation import Allocation, allocation
 from tapband.questions.allowances import Allowance, allowances
+from tapband.questions.averaging import Averaging, averaging
 from tapband.questions.basis import Basis, basis_of
 from tapband.questions.catalogue import Choices, choices_of
 from tapband.questions.choice import Selection, selected
 from tapband.questions.confirm import Confirmed, confirm
+from tapband.questions.layout import LayoutChoice, layout_choice
 from tapband.questions.ranges import Ranges, ranges
 from tapband.questions.selection import Efficient, Search, frontier
+from tapband.questions.wiring_choice import WiringChoice, wiring_choice
 
 Array = NDArray[np.float64]
 Progress = Callable[[float, float, str], None]
@@ -31,10 +35,14 @@ class Sized:
     """Intervals at each demand with the sources as declared."""
     ranges: Ranges
     allowances: tuple[Allowance, ...]
+    allocation: Allocation
     choices: Choices | None
     selection: Selection | None
     frontier: tuple[Efficient, ...]
     frontier_complete: bool
+    wiring: WiringChoice | None
+    layout: LayoutChoice | None
+    averaging: Averaging | None
     notes: tuple[str, ...]
 
     @property
@@ -52,24 +60,30 @@ class Sized:
 def sized(campaign: Campaign, trials: str | None = None, progress: Progress | None = None) -> Sized:
     """Size what the campaign asks for. ``trials`` as in :func:`confirm`; default the campaign's."""
     basis = basis_of(campaign)
-    seen = ranges(basis)
-    choices = choices_of(basis, seen) if campaign.plan.slots else None
-    selection = None if choices is None else selected(choices, trials)
-    efficient, complete = ((), True) if choices is None else frontier(Search(catalogue=choices.catalogue))
+    seen, plan = ranges(basis), campaign.plan
+    wiring = None if plan.wiring is None else wiring_choice(basis, _step(progress, "wiring"))
     declared = confirm(basis.campaign, basis.demands, trials)
-    allowed = allowances(basis, declared, trials, _step(progress, "allowances"))
-    result = Sized(
+    choices = choices_of(basis, seen) if plan.slots else None
+    selection = None if choices is None else selected(choices, trials)
+    efficient: tuple[Efficient, ...] = ()
+    complete = True
+    if choices is not None:
+        efficient, complete = frontier(Search(catalogue=choices.catalogue), _step(progress, "frontier"))
+    return Sized(
         basis=basis,
         declared=declared,
         ranges=seen,
-        allowances=allowed,
+        allowances=allowances(basis, declared, trials, _step(progress, "allowances")),
+        allocation=allocation(basis, declared, trials),
         choices=choices,
         selection=selection,
         frontier=efficient,
         frontier_complete=complete,
+        wiring=wiring,
+        layout=None if plan.layout is None else layout_choice(basis, _step(progress, "tap layout")),
+        averaging=averaging(basis, declared.factor),
         notes=basis.notes,
     )
-    return result
 
 
 def _step(progress: Progress | None, doing: str) -> Callable[[int, int], None] | None:
