@@ -206,7 +206,7 @@ class _Stage:
         got = self._estimate(points, rows, Tiles(seed=self.plan.seed, size=FINE, count=FINE))
         far = self.far[self.block.places(points)]
         delta = tolerance(self.model.u[points.start : points.stop])
-        wary = rows & (far > _HIDDEN * got.scatter) & (far > 0.1 * delta)
+        wary = rows & (far > _HIDDEN * got.scatter) & (far > 0.5 * delta)
         need = np.where(rows, self._need(points, got), np.inf)
         good = rows & (need == 0.0) & ~wary
         need = np.where(good, 0.0, np.maximum(need, np.where(wary, _WARY, 1.0)))

@@ -28,7 +28,7 @@ Array = NDArray[np.float64]
 
 TILE = 10_000
 """Trials of a logical tile of plain Monte Carlo: the block of JCGM 101:2008, 7.9.4."""
-FINE = 256
+FINE = 128
 """Trials of a logical tile of the accelerated engine."""
 
 

@@ -86,7 +86,7 @@ def estimated(
     return Estimate(
         numbers=Numbers(**{name: np.where(rows, value, np.nan) for name, value in numbers.items()}),
         doubt=np.stack([mean_doubt, u_doubt, ends.doubt, ends.doubt]),
-        scatter=np.sqrt((trials.shift * trials.shift).mean(axis=-1)),
+        scatter=trials.scatter,
         failed=trials.refused | (rows & (~ends.settled | lost)),
         trials=trials.shift.shape[-1],
     )

@@ -39,13 +39,12 @@ def line(model: Model, points: range, rows: Mask, along: Sequence[Direction], ti
     good = (rows & ~refused)[..., None]
     y0 = np.where(good, model.estimate[points.start : points.stop, :, None], 0.0)
     y, foot, values = (np.where(good, part, 0.0) for part in (y, foot, values))
-    slope = np.where(good, np.abs(slope), 1.0)
+    slope = np.where(good, slope, 1.0)
     quartic = np.asarray(np.linalg.inv(np.vander(nodes, increasing=True)), dtype=np.float64)
     parabola = np.asarray(np.linalg.solve(*_normal_equations(nodes, weights)), dtype=np.float64)
     away, away0 = values - y0, foot - y0
-    gain = away - away0
     linear = away0 + nodes[:, None, None, None] * np.where(good, slope, 0.0)
-    weight = weights[:, None, None, None]
+    left, weight = away - linear, weights[:, None, None, None]
     return Trials(
         smoothing=Line(
             base=NormalBase() if shape is Shape.NORMAL else ShapeBase(shape, top),
@@ -55,11 +54,12 @@ def line(model: Model, points: range, rows: Mask, along: Sequence[Direction], ti
             eta=eta[:, :1],
             y=y,
             linear=foot,
-            slope=slope,
+            slope=np.abs(slope),
         ),
-        shift=(weight * gain).sum(axis=0),
-        square=(weight * (away - linear) * (away + linear)).sum(axis=0),
+        shift=(weight * left).sum(axis=0),
+        square=(weight * left * (away + linear)).sum(axis=0),
         controls=_beside_line(x, eta[:, :1], axes, along),
+        scatter=np.sqrt((weight * left * left).sum(axis=0).mean(axis=-1)),
         refused=refused,
     )
 

@@ -49,8 +49,11 @@ class Model:
     @classmethod
     def of(cls, problem: Problem) -> Model:
         """From a problem."""
-        families, sensitivity = tuple(problem.families), tuple(problem.sensitivity)
+        families = tuple(problem.families)
         estimate = np.asarray(problem.estimate, dtype=np.float64)
+        # An output without an estimate may have no sensitivity either; it counts as unmoved, and is left out.
+        void = np.isnan(estimate)[..., None]
+        sensitivity = tuple(np.where(void, 0.0, s) if void.any() else s for s in problem.sensitivity)
         parts = np.zeros((*estimate.shape, len(families)))
         for f, columns in enumerate(sensitivity):
             parts[..., f] = (columns * columns).sum(axis=-1)

@@ -34,6 +34,8 @@ class Trials:
     """Squared distance from the estimate, less that of the linear model."""
     controls: Array
     """(Pb, K, N) variates whose mean is known to be 0."""
+    scatter: Array
+    """Root mean square (Pb, m) of what the linear model leaves of an output."""
     refused: Mask
     """(Pb, m) whether some trial was refused."""
 
@@ -81,8 +83,15 @@ def integrated(
     }
     smoothing = Normal(**laws) if base is None else Integrated(base=base, **laws)
     square = (away - away0) * (away + away0) + np.where(good, gain, 0.0)
-    controls = controls_of(x, axes.wave, np.zeros((len(points), PAIRS)))
-    return Trials(smoothing=smoothing, shift=away - away0, square=square, controls=controls, refused=refused)
+    shift, width = away - away0, laws["s"] - laws["s0"]
+    return Trials(
+        smoothing=smoothing,
+        shift=shift,
+        square=square,
+        controls=controls_of(x, axes.wave, np.zeros((len(points), PAIRS))),
+        scatter=np.sqrt((shift * shift + width * width).mean(axis=-1)),
+        refused=refused,
+    )
 
 
 def _integrated_tile(
