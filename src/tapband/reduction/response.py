@@ -56,13 +56,19 @@ class Response:
         """Σ_k (∂y/∂ξ_k)² of each linear family at the points ``rows``, (Pb, T or 1, m) by its number."""
         added = {f: _added(one, rows) for f, one in families.items() if one.entries[0].slot == "added"}
         within = {f: one for f, one in families.items() if f not in added}
-        squares: dict[int, list[Array]] = {f: [] for f in within}
+        trials = np.broadcast_shapes(*(values.shape[1:2] for values in self._drawn()))
+        squares = {f: np.empty((len(rows), len(PAIRS), *trials)) for f in within}
         for place, point in enumerate(rows.tolist() if within else []):
             by_cp = self._by_cp(place)
             for f, loaded in within.items():
                 body = self._body(by_cp, loaded, place, point)
-                squares[f].append(np.stack([np.einsum("tg,tg->t", body[i], body[j]) for i, j in PAIRS]))
-        return added | {f: self._turned(np.stack(some)) for f, some in squares.items()}
+                for (i, j), row in zip(PAIRS, squares[f][place], strict=True):
+                    row[:] = np.einsum("tg,tg->t", body[i], body[j])
+        return added | {f: self._turned(some) for f, some in squares.items()}
+
+    def _drawn(self) -> list[Array]:
+        """What of this the products depend on."""
+        return [v for v in (self.shift, self.q, self.centre, self.length) if v is not None]
 
     def _by_cp(self, place: int) -> Array:
         """∂(cn, ct, cm)/∂Cp_i of one point, (3, T or 1, n)."""
@@ -96,20 +102,20 @@ class Response:
             edge = getattr(self.equation, entry.slot)[:, None, None] * load
             only = np.arange(count) == entry.member[0]
             return np.asarray(self._about(edge, place) * only)
-        scaled = by_cp * load
-        if entry.slot == "reading":
-            scaled = scaled / _row(self.q, place)[:, None]
+        scaled = by_cp * (load / _row(self.q, place)[:, None] if entry.slot == "reading" else load)
         if count == entry.member.size and np.array_equal(entry.member, np.arange(count)):
             return np.asarray(scaled)
         return in_pieces(scaled, (entry.member[:, None] == np.arange(count)).astype(np.float64))
 
     def _about(self, rows: Array, place: int) -> Array:
         """cn, ct, cm about the moment centre (3, T or 1, k) from cn, ct, cm₀ rows."""
-        cn, ct, cm0 = rows
         if self.length is not None:
             g = 1.0 / (1.0 + _row(self.length, place)[:, None])
-            cn, ct, cm0 = cn * g, ct * g, cm0 * g * g
-        return np.stack(np.broadcast_arrays(cn, ct, cm0 + _row(self.centre, place)[:, None] * cn))
+            rows = rows * np.stack([g, g, g * g])
+        moved = np.empty((3, *np.broadcast_shapes(rows.shape[1:], (self.centre.shape[1], 1))))
+        moved[:] = rows
+        moved[2] += _row(self.centre, place)[:, None] * rows[0]
+        return moved
 
     def _turned(self, squares: Array) -> Array:
         """Variances of the coefficients (Pb, T or 1, m) from the products ``PAIRS`` (Pb, 4, T or 1)."""
