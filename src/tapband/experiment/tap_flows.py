@@ -13,6 +13,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 from scipy.interpolate import CubicSpline
+from scipy.linalg import solve_banded
 
 from tapband.experiment.contour import Contour
 from tapband.experiment.inviscid import flow_round
@@ -23,6 +24,15 @@ Array = NDArray[np.float64]
 PANELS = 120
 GAUSS = 3
 FINE = 401
+
+
+@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
+class TapWeights:
+    """Weights of taps (4, 3, n) and a constant (4, 3): the rule, then the three half-widths of finite tap
+    spacing (``bounds.spacing_half_widths``); rows of three are cn, ct, cm about the moment centre."""
+
+    by_cp: Array
+    constant: Array
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
@@ -52,29 +62,25 @@ class TapFlow:
         """dCp/ds (A, n) [1/chord]."""
         return np.asarray(-2.0 * self.speed(s) * self.speed(s, 1))
 
-    def weights(self, s: Array) -> tuple[Array, Array]:
-        """(3, n) per unit Cp of taps at rising arc lengths s (n,), closure included, and a constant (3,)."""
+    def weights(self, s: Array) -> TapWeights:
+        """What taps at rising arc lengths s (n,) integrate to, closure included."""
         nodes, to_nodes, constant = self._nodes(s)
-        by_node = self._by_node(nodes, self.linear)
-        return np.asarray(by_node @ to_nodes), np.asarray(by_node @ constant)
-
-    def spacing(self, s: Array, cp: Array) -> Array:
-        """(3, A, 3) half-widths of finite tap spacing at Cp (A, n); see ``bounds.spacing_half_widths``."""
-        nodes, to_nodes, constant = self._nodes(s)
-        value = cp @ to_nodes.T + constant
-        chosen = value @ self._by_node(nodes, self.linear).T
-        found = [chosen - value @ self._by_node(nodes, not self.linear).T]
-        ahead = int(np.flatnonzero(nodes == s[0])[0])
+        chosen = self._by_node(nodes, self.linear)
+        rows = [chosen, chosen - self._by_node(nodes, not self.linear)]
+        ahead = int(nodes[0] != s[0])
         for half in (0, 1):
-            kept = set(range(ahead + half, ahead + s.size, 2)) | {ahead, ahead + s.size - 1}
-            kept |= set(range(ahead)) | set(range(ahead + s.size, nodes.size))
-            some = np.array(sorted(kept))
-            found.append((chosen - value[:, some] @ self._by_node(nodes[some], self.linear).T) / 3.0)
-        return np.stack(found)
+            kept = np.ones(nodes.size, dtype=np.bool_)
+            kept[ahead + 1 - half : ahead + s.size - 1 : 2] = False
+            kept[[ahead, ahead + s.size - 1]] = True
+            thin = np.zeros_like(chosen)
+            thin[:, kept] = self._by_node(nodes[kept], self.linear)
+            rows.append((chosen - thin) / 3.0)
+        by_node = np.stack(rows)
+        return TapWeights(by_cp=by_node @ to_nodes, constant=by_node @ constant)
 
     def _by_node(self, nodes: Array, linear: bool) -> Array:
-        basis = _hats(nodes, self.at) if linear else CubicSpline(nodes, np.eye(nodes.size))(self.at)
-        return np.asarray(self.by_cp @ basis)
+        """(3, N) weights of an interpolant through nodes (N,)."""
+        return interpolant_weights(nodes, self.at, self.by_cp, linear=linear)
 
     def _nodes(self, s: Array) -> tuple[Array, Array, Array]:
         """Nodes (N,), their values by tap (N, n), and what a stated closing value adds to them (N,)."""
@@ -170,11 +176,64 @@ def thickness_of(x: Array, y: Array) -> float:
     return float(np.nanmax(upper - lower))
 
 
-def _hats(nodes: Array, at: Array) -> Array:
-    """(K, N) values of the piecewise linear cardinal functions."""
+def interpolant_weights(nodes: Array, at: Array, rows: Array, *, linear: bool = False) -> Array:
+    """(m, N) weights on node values of Σ_k rows_k f(at_k), f the interpolant through N ≥ 4 nodes.
+
+    f is piecewise linear, or the cubic spline with not-a-knot ends. The spline's slopes solve A m = R f; the
+    weights are solved for with Aᵀ, one right side a row instead of one a node. ``rows`` (m, K) at ``at`` (K,).
+
+    *Source* de Boor, A Practical Guide to Splines (1978), chapter IV.
+    """
     left = np.clip(np.searchsorted(nodes, at, side="right") - 1, 0, nodes.size - 2)
-    t = (at - nodes[left]) / (nodes[left + 1] - nodes[left])
-    basis = np.zeros((at.size, nodes.size))
-    rows = np.arange(at.size)
-    basis[rows, left], basis[rows, left + 1] = 1.0 - t, t
-    return basis
+    step = np.diff(nodes)
+    t = (at - nodes[left]) / step[left]
+    if linear:
+        return _summed(rows, left, 1.0 - t, t, nodes.size)
+    values = _summed(rows, left, (1.0 + 2.0 * t) * (1.0 - t) ** 2, t * t * (3.0 - 2.0 * t), nodes.size)
+    h = step[left]
+    slopes = _summed(rows, left, h * t * (1.0 - t) ** 2, h * t * t * (t - 1.0), nodes.size)
+    transposed, lower, upper = _spline_system(nodes, step)
+    moved = solve_banded((1, 1), transposed, slopes.T, check_finite=False).T
+    # R f: each equation weighs the divided differences before and after it.
+    by_difference = moved[:, :-1] * upper + moved[:, 1:] * lower
+    ends = _end_terms(nodes, step)
+    by_difference[:, 1] += moved[:, 0] * ends[0]
+    by_difference[:, -2] += moved[:, -1] * ends[1]
+    by_difference /= step
+    values[:, 1:] += by_difference
+    values[:, :-1] -= by_difference
+    return values
+
+
+def _summed(rows: Array, left: NDArray[np.int64], near: Array, far: Array, size: int) -> Array:
+    """(m, N) sums of rows (m, K) times the two weights of each place on the nodes left and right of it."""
+    out = np.empty((len(rows), size))
+    for out_row, row in zip(out, rows, strict=True):
+        out_row[:] = np.bincount(left, row * near, size)
+        out_row[1:] += np.bincount(left, row * far, size)[:-1]
+    return out
+
+
+def _spline_system(nodes: Array, step: Array) -> tuple[Array, Array, Array]:
+    """Aᵀ as bands (3, N), and what each divided difference (N − 1,) weighs in the equation at its right and at
+    its left node."""
+    size = nodes.size
+    bands = np.zeros((3, size))  # of the transpose: upper, middle, lower
+    bands[1, 1:-1] = 2.0 * (step[:-1] + step[1:])
+    bands[1, [0, -1]] = step[1], step[-2]
+    below, above = np.append(step[1:], nodes[-1] - nodes[-3]), np.append(nodes[2] - nodes[0], step[:-1])
+    bands[0, 1:], bands[2, :-1] = below, above
+    lower, upper = np.empty(size - 1), np.empty(size - 1)
+    lower[:-1], upper[1:] = 3.0 * step[1:], 3.0 * step[:-1]
+    first, last = nodes[2] - nodes[0], nodes[-1] - nodes[-3]
+    upper[0] = (step[0] + 2.0 * first) * step[1] / first
+    lower[-1] = (step[-1] + 2.0 * last) * step[-2] / last
+    return bands, lower, upper
+
+
+def _end_terms(nodes: Array, step: Array) -> tuple[float, float]:
+    """What the second difference from either end weighs in the end's equation."""
+    return (
+        float(step[0] ** 2 / (nodes[2] - nodes[0])),
+        float(step[-1] ** 2 / (nodes[-1] - nodes[-3])),
+    )

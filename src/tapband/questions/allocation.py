@@ -24,7 +24,7 @@ from numpy.typing import NDArray
 from tapband.nouns.campaign import Campaign
 from tapband.probability.linearised import coverage_factor
 from tapband.questions.basis import Basis, expanded_of
-from tapband.questions.confirm import Confirmed, confirm
+from tapband.questions.confirm import FAR, FEW, Confirmed, confirm
 from tapband.questions.sizes import scaled
 
 Array = NDArray[np.float64]
@@ -62,7 +62,8 @@ def allocation(basis: Basis, declared: Confirmed, trials: str | None = None) -> 
             return Allocation(equal=nothing, least_cost=nothing, possible=False)
         sizes = _settled(parts, rule)
         for _ in range(CONFIRMED if np.any(np.isfinite(sizes)) else 0):
-            seen = confirm(resized(basis.campaign, sizes), basis.demands, trials)
+            far = trials is None and float(np.nanmax(sizes)) > FAR
+            seen = confirm(resized(basis.campaign, sizes), basis.demands, FEW if far else trials)
             if not np.all(np.isfinite(seen.factor)):
                 break
             parts = _parts(basis, seen.factor)

@@ -16,7 +16,7 @@ from numpy.typing import NDArray
 from tapband.nouns.campaign import Campaign
 from tapband.nouns.source import Source
 from tapband.questions.basis import Basis, Terms, expanded_of
-from tapband.questions.confirm import Confirmed, confirm
+from tapband.questions.confirm import FAR, FEW, Confirmed, confirm
 from tapband.questions.freedom import z_of
 from tapband.questions.sizes import scaled, stated_size, unit_sized
 from tapband.questions.targets import ROUNDING, Demands
@@ -31,8 +31,6 @@ NEGLIGIBLE = 1e-20
 """Share of the variance below which a source moves a coefficient by rounding alone."""
 NEAR = 0.002
 """Distance from the target, relative, at which an allowance is left as it is."""
-FAR, FEW = 50.0, "20000"
-"""Times the declared size past which a fixed number of trials confirms an allowance, and that number."""
 WATCHED = 2
 """Demands, the nearest to their targets, that Monte Carlo looks at while an allowance is confirmed."""
 

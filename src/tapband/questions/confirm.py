@@ -15,6 +15,11 @@ from tapband.reduction import reduce_campaign
 Array = NDArray[np.float64]
 
 
+FAR, FEW = 50.0, "10000"
+"""Times a declared size past which a fixed number of trials confirms, and that number: there the chain bends so
+much that an adaptive run may take minutes."""
+
+
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
 class Confirmed:
     """Expanded uncertainties at each demand (D,): the headline one and the linearised one.

@@ -32,7 +32,7 @@ Progress = Callable[[int, int], None]
 FAMILY = ((0.09, 0.0), (0.12, 0.02), (0.15, -0.015), (0.18, 0.01), (0.105, -0.01), (0.135, 0.03))
 """Thickness, and camber added to the section's own [chords], of the other sections a layout is judged on."""
 ANGLES = 9
-ITERATIONS, FIRST_LOOK = 60, 12
+ITERATIONS, FIRST_LOOK = 60, 8
 LADDER = (0.4, 0.5, 0.65, 0.8, 1.0, 1.25, 1.6, 2.0)
 """Numbers of taps looked at, in parts of the number asked for."""
 FEWEST = 7

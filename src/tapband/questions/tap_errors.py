@@ -83,7 +83,10 @@ def _groups(source: Source, basis: Basis) -> int:
         return 1
     column = basis.campaign.taps.columns[source.across_taps.removeprefix("by ")]
     live = basis.assembled.nominal.live.any(axis=0)
-    return max(1, len({value for value, on in zip(column, np.atleast_1d(live).tolist(), strict=True) if on and value}))
+    return max(
+        1,
+        len({value for value, on in zip(column, np.atleast_1d(live).tolist(), strict=True) if on and value}),
+    )
 
 
 def _full_scale(source: Source, basis: Basis) -> float:
@@ -117,16 +120,17 @@ class LayoutErrors:
 
 def layout_errors(flow: TapFlow, errors: TapErrors, s: Array) -> LayoutErrors:
     """The errors of taps at rising arc lengths s (n,) on the flow's contour [chords]."""
-    weight, constant = flow.weights(s)
+    made = flow.weights(s)
     cp = flow.cp(s)
     turn = _turn(flow.alpha)
-    off = np.einsum("amk,ak->am", turn, cp @ weight.T + constant - flow.exact)
+    value = np.einsum("jkn,an->jak", made.by_cp, cp) + made.constant[:, None, :]
+    value[0] -= flow.exact
+    moved = np.einsum("amk,jak->jam", turn, value)
     tangent = flow.contour.tangent(s)[0]
-    half = np.einsum("amk,jak->jam", turn, flow.spacing(s, cp))
     return LayoutErrors(
-        off=off,
-        variance=errors.variance(np.matmul(turn, weight), cp, flow.slope(s), tangent),
-        spacing=np.sum(half**2, axis=0) / 3.0,
+        off=moved[0],
+        variance=errors.variance(np.matmul(turn, made.by_cp[0]), cp, flow.slope(s), tangent),
+        spacing=np.sum(moved[1:] ** 2, axis=0) / 3.0,
     )
 
 
