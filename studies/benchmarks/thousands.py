@@ -1,0 +1,120 @@
+"""How long do thousands of points take, in how much memory, and how does the time grow?
+
+Computation: linearised and accelerated Monte Carlo to the tolerance, 60 taps, about 130 latents. Whole command:
+reading the files, budget, rankings, fits, report and tables too, against importing numpy, scipy, pandas and
+matplotlib alone. Growth exponents in points, taps, sources and plain trials.
+"""
+
+from __future__ import annotations
+
+import sys
+import tempfile
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass
+from pathlib import Path
+
+from budgets import normal, polar
+from timing import Ran, exponent, program, python, seconds
+from written import write
+
+from tapband.nouns.source import INDEPENDENT, Source
+from tapband.probability.montecarlo import run
+from tapband.reduction import assemble, reduce_campaign
+
+IMPORTS = "import numpy, scipy, scipy.stats, pandas, matplotlib.pyplot"
+"""What a script that reduces by hand would load."""
+GROWTH = 1.1
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Command:
+    """A whole command beside the bare imports."""
+
+    command: Ran
+    imports: Ran
+
+    @property
+    def ratio(self) -> float:
+        """Of processor time."""
+        return self.command.processor / self.imports.processor
+
+
+def command(points: int, taps: int = 60) -> Command:
+    """``tapband reduce`` of so many points."""
+    with tempfile.TemporaryDirectory() as folder:
+        campaign = write(Path(folder) / "campaign", points, taps)
+        imports = program([sys.executable, "-c", IMPORTS])
+        ran = program(
+            [sys.executable, "-m", "tapband", "reduce", str(campaign), "--quiet"], one_thread=False, ok=(0, 1)
+        )
+    return Command(command=ran, imports=imports)
+
+
+def computation(points: int, threads: int = 2) -> Ran:
+    """Both propagators of so many points, in a program of its own."""
+    return python(
+        "from budgets import polar\n"
+        "from tapband.reduction import reduce_campaign\n"
+        f"reduced = reduce_campaign(polar({points}), threads={threads})\n"
+        "assert reduced.montecarlo.reached.all()\n",
+        one_thread=False,
+    )
+
+
+def growth(factor: int = 8, rounds: int = 3) -> dict[str, float]:
+    """Growth exponents over ``factor`` times as many points, taps, sources and plain trials."""
+    one = assemble(polar(1)).problem
+
+    def trials(n: int) -> Callable[[], object]:
+        return lambda: run(one, 0.95, f"plain:{10_000 * n}", threads=1)
+
+    works: dict[str, Callable[[int], Callable[[], object]]] = {
+        "points": lambda n: lambda: reduce_campaign(polar(64 * n), threads=1),
+        "taps": lambda n: lambda: reduce_campaign(polar(64, 30 * n), threads=1),
+        "sources": lambda n: lambda: reduce_campaign(polar(64, sources=many(4 * n)), threads=1),
+        "trials": trials,
+    }
+    found = {}
+    for name, work in works.items():
+        sizes = (1, factor if name != "taps" else max(factor // 2, 2))
+        jobs = [work(n) for n in sizes]
+        times = [
+            min(column)
+            for column in zip(*[[seconds(job) for job in jobs] for _ in range(rounds)], strict=True)
+        ]
+        found[name] = exponent(sizes, times)
+    return found
+
+
+def many(count: int) -> Sequence[Source]:
+    """The budget cut into ``count`` sources, independent across taps in turn."""
+    kinds = [source for source in normal() if source.across_taps == INDEPENDENT]
+    return [_named(kinds[i % len(kinds)], f"source {i}") for i in range(count)]
+
+
+def _named(source: Source, name: str) -> Source:
+    from dataclasses import replace
+
+    return replace(source, name=name, group=name)
+
+
+def main() -> None:
+    """Full size."""
+    for points in (200, 10_000):
+        one = command(points)
+        print(
+            f"{points} points, whole command: {one.command.wall:.1f} s, {one.command.processor:.1f} s of processor, "
+            f"{one.ratio:.1f} times the imports ({one.imports.processor:.2f} s), peak {one.command.peak:.0f} MB"
+        )
+    ran = computation(10_000)
+    print(
+        f"10,000 points, computation: {ran.wall:.1f} s on the wall, {ran.processor:.1f} s of processor, "
+        f"peak {ran.peak:.0f} MB"
+    )
+    for name, power in growth().items():
+        print(f"growth with {name}: {power:.2f}")
+        assert power < GROWTH, (name, power)
+
+
+if __name__ == "__main__":
+    main()
