@@ -80,3 +80,18 @@ def test_one_point_reduces() -> None:
     r = tapband.reduce(campaign(every_kind(), alphas=(3.0,)))
     assert len(r.coefficients) == 1
     assert np.isfinite(r.coefficients["cl_mc_low"]).all()
+
+
+def test_figures_draw_on_the_axes_given(results: tapband.Results) -> None:
+    from matplotlib.figure import Figure
+
+    for draw in (
+        lambda ax: results.plot_coefficient("cl", ax=ax),
+        lambda ax: results.plot_pressure("P2", ax=ax),
+        lambda ax: results.plot_contributors("cm", ax=ax),
+        lambda ax: results.plot_groups("cl", "P2", ax=ax),
+        lambda ax: results.plot_taps_along_chord("cl", "P2", ax=ax),
+    ):
+        ax = Figure().subplots()
+        assert draw(ax) is ax
+        assert ax.get_xlabel() or ax.get_ylabel()

@@ -6,11 +6,9 @@ results.coefficients[["point", "cl", "cl_U"]]
 
 from __future__ import annotations
 
-import sys
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field, replace
 from functools import cached_property
-from importlib.metadata import version
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -18,21 +16,19 @@ import numpy as np
 from numpy.typing import NDArray
 
 from tapband.files.load import load
+from tapband.files.provenance import head, meta
 from tapband.nouns.campaign import Campaign
 from tapband.nouns.errors import QuestionError
 from tapband.nouns.plan import Polar
-from tapband.nouns.version import VERSION
 from tapband.questions.latents import Latents, from_arrays, latents_of, to_arrays
 from tapband.questions.stated import full_latents
-from tapband.questions.statement import statements
 from tapband.reduction import Reduced, assemble, reduce_campaign
-from tapband.reduction.undeclared import NO_WALL_CORRECTION, NOT_TOTAL_DRAG, undeclared
 from tapband.report.plan_result import Plan
+from tapband.report.plots import Plots
 
 if TYPE_CHECKING:
     import pandas as pd
     from distributed import Client
-    from matplotlib.axes import Axes
     from uncertainties import UFloat
 
     from tapband.files.answers import Setting
@@ -41,16 +37,10 @@ __all__ = ["Campaign", "Plan", "Results", "forecast", "load", "reduce", "size"]
 
 Array = NDArray[np.float64]
 Progress = Callable[[int, int], None]
-CAUTIONS = (
-    NO_WALL_CORRECTION,
-    NOT_TOTAL_DRAG,
-    "An interval covers the sources that are declared, and no others.",
-    "Loads that safety depends on need the review of a competent person; local rules come first.",
-)
 
 
 @dataclass(frozen=True, kw_only=True, eq=False)
-class Results:
+class Results(Plots):
     """Tables, warnings and correlations of a reduced campaign.
 
     ``tables`` by file name without its ending; each is an attribute too. ``campaign`` is None for results
@@ -234,44 +224,6 @@ class Results:
             raise QuestionError("rank: needs the campaign; got results read from a folder; reduce it again")
         return rank(self.campaign, point, sobol)
 
-    def plot_groups(self, coefficient: str, point: str, ax: Axes | None = None) -> Axes:
-        """Linear shares and Sobol' indices of the groups of sources at one point."""
-        from tapband.report.figures_rank import groups
-
-        return groups(self, coefficient, point, ax=ax)
-
-    def plot_taps_on_section(self, coefficient: str, point: str, ax: Axes | None = None) -> Axes:
-        """Shares of the taps on the section's outline."""
-        from tapband.report.figures_rank import taps_on_section
-
-        return taps_on_section(self, coefficient, point, ax=ax)
-
-    def plot_taps_along_chord(self, coefficient: str, point: str, ax: Axes | None = None) -> Axes:
-        """Shares of the taps along the chord."""
-        from tapband.report.figures_rank import taps_along_chord
-
-        return taps_along_chord(self, coefficient, point, ax=ax)
-
-    def plot_shares(self, coefficient: str, ax: Axes | None = None) -> Axes:
-        """Shares of the groups of sources against angle."""
-        from tapband.report.figures_rank import shares
-
-        return shares(self, coefficient, ax=ax)
-
-    def plot_drivers(self, ax: Axes | None = None) -> Axes:
-        """The leading group of every point and coefficient."""
-        from tapband.report.figures_rank import drivers
-
-        return drivers(self, ax=ax)
-
-    def plot_wiring(
-        self, coefficient: str, point: str, source: str | None = None, ax: Axes | None = None
-    ) -> Axes:
-        """The interval that four wirings of the taps would give, of one source or of all of tap pressure."""
-        from tapband.report.figure_wiring import wiring
-
-        return wiring(self, coefficient, point, source, ax=ax)
-
     def write(self, folder: str | Path, *, excel: bool = False, figures: str | None = None) -> Path:
         """Write every table, ``results.json`` and the report; whole or not at all."""
         from tapband.report.publish import publish
@@ -343,7 +295,7 @@ def size(campaign: Campaign, progress: Callable[[float, float, str], None] | Non
 
     answers = sized(campaign, progress=progress)
     campaign = answers.basis.campaign
-    return plan_of(answers, {**_head(campaign), "warnings": list(campaign.warnings)})
+    return plan_of(answers, {**head(campaign), "warnings": list(campaign.warnings)})
 
 
 def _results(reduced: Reduced, kind: str) -> Results:
@@ -359,13 +311,13 @@ def _results(reduced: Reduced, kind: str) -> Results:
     planning, said, unmet = outcome_frames(reduced, forecast=kind == "forecast")
     if kind == "forecast":
         tables["cp"]["flag"] = [f"forecast; {flag}" if flag else kind for flag in tables["cp"]["flag"]]
-    meta = _meta(reduced)
+    said_of = meta(reduced)
     targets = planning["targets"].to_dict("records") if "targets" in planning else []
-    status = max(int(meta["exit_status"]), int(unmet), int(answers.failed))
-    warnings = [*meta["warnings"], *said, *answers.warnings, *left_out]
+    status = max(int(said_of["exit_status"]), int(unmet), int(answers.failed))
+    warnings = [*said_of["warnings"], *said, *answers.warnings, *left_out]
     return Results(
         tables={**tables, **planning},
-        meta={**meta, "kind": kind, "warnings": warnings, "targets": targets, "exit_status": status},
+        meta={**said_of, "kind": kind, "warnings": warnings, "targets": targets, "exit_status": status},
         arrays=to_arrays(answers.latents),
         campaign=reduced.campaign,
         reduced=reduced,
@@ -399,7 +351,7 @@ def rank(
     )
     return Results(
         tables={**frames(reduced), **point_tables(reduced, sobol)},
-        meta={**_meta(reduced), "kind": "rank"},
+        meta={**meta(reduced), "kind": "rank"},
         arrays=to_arrays(latents_of(reduced)),
         campaign=reduced.campaign,
         reduced=reduced,
@@ -432,51 +384,7 @@ def compare(
     warnings = [*campaign.warnings, *assembled.warnings, *table.attrs["notes"]]
     return Results(
         tables={"differences": table},
-        meta={**_head(campaign), "kind": "compare", "warnings": warnings},
+        meta={**head(campaign), "kind": "compare", "warnings": warnings},
         arrays=to_arrays(latents),
         campaign=campaign,
     )
-
-
-def _meta(reduced: Reduced) -> dict[str, Any]:
-    campaign, drawn = reduced.campaign, reduced.montecarlo
-    empty = bool(np.any(~np.isfinite(reduced.linear.estimate)))
-    return {
-        **_head(campaign),
-        "trials_used": np.max(drawn.trials, axis=-1).tolist()
-        if drawn.trials.ndim > 1
-        else drawn.trials.tolist(),
-        "refused": drawn.refused.tolist(),
-        "method": list(drawn.method),
-        "corrections": [str(c) for c in reduced.assembled.corrected.made],
-        "warnings": list(reduced.warnings),
-        "moment_centre": campaign.section.moment_centre + reduced.assembled.corrected.centre,
-        "stated": statements(reduced),
-        "exit_status": int(empty),
-    }
-
-
-def _head(campaign: Campaign) -> dict[str, Any]:
-    """What every result says of the campaign it comes from and of the program."""
-    names = ("numpy", "scipy", "pandas")
-    return {
-        "format": 1,
-        "kind": "reduce",
-        "title": campaign.title,
-        "name": campaign.name,
-        "level": campaign.intervals.level,
-        "same_angle": float(np.degrees(campaign.plan.polar.same_angle)),
-        "seed": campaign.intervals.seed,
-        "trials": campaign.intervals.trials,
-        "versions": {
-            "tapband": VERSION,
-            "python": sys.version.split()[0],
-            **{n: version(n) for n in names},
-        },
-        "inputs": dict(campaign.inputs),
-        "integration": campaign.reduction.integration,
-        "compressibility": campaign.reduction.compressibility,
-        "reference_mach": campaign.reduction.reference_mach,
-        "undeclared": list(undeclared(campaign)),
-        "cautions": list(CAUTIONS),
-    }
