@@ -20,7 +20,9 @@ def instruments(zero: float = 3.0, setting: float = 0.02, place: float = 1.5e-4)
     return (
         source("module zero", "tap pressure", size(4.0, Shape.RECTANGULAR), "by run", "by module"),
         source("port zero", "tap pressure", size(zero), COMMON, INDEPENDENT),
-        source("gain", "tap pressure", size(0.0004, Shape.NORMAL, Scale.READING, dof=12.0), COMMON, "by module"),
+        source(
+            "gain", "tap pressure", size(0.0004, Shape.NORMAL, Scale.READING, dof=12.0), COMMON, "by module"
+        ),
         source("angle setting", "angle", size(np.radians(setting), dof=6.0), INDEPENDENT),
         source("static", "static pressure", size(8.0, Shape.RECTANGULAR), COMMON),
         source("tap place", "tap location", size(place), COMMON, INDEPENDENT),
@@ -63,7 +65,11 @@ def planned(
     )
     pressures = str(more.pop("pressures", "relative to static"))
     made = campaign(
-        sources or instruments(), alphas=more.pop("alphas", ANGLES), mach=0.2, pressures=pressures, **more  # type: ignore[arg-type]
+        sources or instruments(),
+        alphas=more.pop("alphas", ANGLES),
+        mach=0.2,
+        pressures=pressures,
+        **more,  # type: ignore[arg-type]
     )
     return replace(made, plan=plan, points=made.points if readings else None)
 

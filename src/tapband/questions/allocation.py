@@ -7,14 +7,15 @@ B = (limit/k)² less what stays, and v the variance of a source as declared:
 - least cost: Σ 1/f smallest, each source as dear as any other at its declared size and its cost inverse to
   its size, subject to Σ f² v ≤ B at every demand. In log f this is convex; with one demand f ~ v^(-1/3).
 
-k depends on the answer through the degrees of freedom and is found again until it stands.
+k depends on the answer through the degrees of freedom: it is found again until it stands, and the least cost
+is then polished with k inside.
 
 *Source* geometric programs: Boyd and Vandenberghe, Convex Optimization (2004), section 4.5.
 """
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass, replace
 from typing import Any
 
@@ -23,8 +24,9 @@ from numpy.typing import NDArray
 
 from tapband.nouns.campaign import Campaign
 from tapband.probability.linearised import coverage_factor
+from tapband.questions.allowances import Allowance
 from tapband.questions.basis import Basis, expanded_of
-from tapband.questions.confirm import FAR, FEW, Confirmed, confirm
+from tapband.questions.confirm import FAR, Confirmed, confirm, confirm_far
 from tapband.questions.sizes import scaled
 
 Array = NDArray[np.float64]
@@ -37,7 +39,8 @@ NEGLIGIBLE = 1e-20
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
 class Allocation:
-    """Factors (S,) on the declared sizes; NaN where no target depends on a source, or zero is declared.
+    """Factors (S,) on the declared sizes; NaN where a source stays as it is: no target depends on it, even zero
+    fails, zero is declared, or what it does is not linear at its allowance.
 
     ``possible`` is false where what stays already passes a target; factors are then all NaN.
     """
@@ -47,26 +50,30 @@ class Allocation:
     possible: bool
 
 
-def allocation(basis: Basis, declared: Confirmed, trials: str | None = None) -> Allocation:
+def allocation(
+    basis: Basis, declared: Confirmed, alone: Sequence[Allowance], trials: str | None = None
+) -> Allocation:
     """Both allocations of the declared sources, against the headline interval.
 
-    ``declared`` are both intervals as declared; their ratio at an allocation is found there, once.
+    ``declared`` are both intervals as declared; their ratio at an allocation is found there. ``alone`` are the
+    allowances: a source that has none in the linearised sense stays as it is.
     """
+    shared = np.array([one.straight and one.declared > 0.0 for one in alone], dtype=np.bool_)
     size = len(basis.campaign.sources)
     nothing = np.full(size, np.nan)
     first = np.where(np.isfinite(declared.factor), declared.factor, 1.0)
     found = []
     for rule in (_equal, _least_cost):
-        parts = _parts(basis, first)
+        parts = _parts(basis, first, shared)
         if np.any(parts.ratio(np.zeros(size)) >= 1.0):
             return Allocation(equal=nothing, least_cost=nothing, possible=False)
         sizes = _settled(parts, rule)
         for _ in range(CONFIRMED if np.any(np.isfinite(sizes)) else 0):
-            far = trials is None and float(np.nanmax(sizes)) > FAR
-            seen = confirm(resized(basis.campaign, sizes), basis.demands, FEW if far else trials)
+            look = confirm_far if float(np.nanmax(sizes)) > FAR else confirm
+            seen = look(resized(basis.campaign, sizes), basis.demands, trials)
             if not np.all(np.isfinite(seen.factor)):
                 break
-            parts = _parts(basis, seen.factor)
+            parts = _parts(basis, seen.factor, shared)
             if np.any(parts.ratio(np.zeros(size)) >= 1.0):
                 break
             sizes = _settled(parts, rule)
@@ -83,13 +90,13 @@ def resized(campaign: Campaign, factor: Array) -> Campaign:
     return replace(campaign, sources=sources)
 
 
-def _parts(basis: Basis, factor: Array) -> _Parts:
-    names = [source.name for source in basis.campaign.sources]
-    place = np.array([basis.names.index(name) for name in names], dtype=np.int64)
-    stays = np.array([i not in place for i in range(len(basis.names))], dtype=np.bool_)
+def _parts(basis: Basis, factor: Array, shared: NDArray[np.bool_]) -> _Parts:
+    """Terms of all declared sources, zero for those that stay as they are."""
+    place = np.array([basis.names.index(s.name) for s in basis.campaign.sources], dtype=np.int64)
+    stays = np.array([i not in place[shared] for i in range(len(basis.names))], dtype=np.bool_)
     return _Parts(
-        variance=basis.variance[:, place],
-        quartic=basis.quartic[:, place],
+        variance=basis.variance[:, place] * shared,
+        quartic=basis.quartic[:, place] * shared,
         fixed=basis.variance[:, stays].sum(axis=1),
         fixed_quartic=basis.quartic[:, stays].sum(axis=1),
         limit=basis.demands.limit / factor,
@@ -143,8 +150,29 @@ def _settled(parts: _Parts, share: Callable[[Array, Array], Array]) -> Array:
         if np.max(np.abs(new - factor)) <= 1e-9 * np.max(new):
             break
         factor = 0.5 * (factor + new)
+    if share is _least_cost:
+        factor[live] = _polished(parts, live, factor)
     factor = factor * _to_the_limit(parts, factor)
     return np.where(live, factor, np.nan)
+
+
+def _polished(parts: _Parts, live: NDArray[np.bool_], factor: Array) -> Array:
+    """The least cost with the very k of every trial point, from the geometric program's answer."""
+    from scipy.optimize import minimize
+
+    def full(x: Array) -> Array:
+        out = np.zeros_like(factor)
+        out[live] = np.exp(x)
+        return out
+
+    def cost(x: Array) -> tuple[float, Array]:
+        return float(np.sum(np.exp(-x))), -np.exp(-x)
+
+    start: Any = np.log(factor[live])
+    limits: Any = {"type": "ineq", "fun": lambda x: 1.0 - parts.ratio(full(x))}
+    options: Any = {"maxiter": 200, "ftol": 1e-13}
+    found = minimize(cost, start, jac=True, constraints=limits, method="SLSQP", options=options)
+    return np.exp(np.asarray(found.x, dtype=np.float64)) if found.success else factor[live]
 
 
 def _to_the_limit(parts: _Parts, factor: Array) -> float:

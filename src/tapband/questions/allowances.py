@@ -16,7 +16,7 @@ from numpy.typing import NDArray
 from tapband.nouns.campaign import Campaign
 from tapband.nouns.source import Source
 from tapband.questions.basis import Basis, Terms, expanded_of
-from tapband.questions.confirm import FAR, FEW, Confirmed, confirm
+from tapband.questions.confirm import FAR, Confirmed, confirm, confirm_far
 from tapband.questions.freedom import z_of
 from tapband.questions.sizes import scaled, stated_size, unit_sized
 from tapband.questions.targets import ROUNDING, Demands
@@ -26,9 +26,13 @@ Indices = NDArray[np.int64]
 Progress = Callable[[int, int], None]
 
 GRID = 400
-ROUNDS = 6
+ROUNDS = 16
 NEGLIGIBLE = 1e-20
 """Share of the variance below which a source moves a coefficient by rounding alone."""
+STRAIGHT = 0.9
+"""Linearised part of the target at an allowance, below which curvature makes the rest."""
+FAR_OFF = 1.3
+"""Ratio past which the linearised answer is no guide to the next size."""
 NEAR = 0.002
 """Distance from the target, relative, at which an allowance is left as it is."""
 WATCHED = 2
@@ -51,6 +55,9 @@ class Allowance:
     factor: float | None
     demand: int | None
     reason: str
+    straight: bool
+    """Whether the linearised interval still tells the size of the error there: not so where a coefficient first
+    answers to the square of an error."""
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
@@ -135,6 +142,7 @@ def _allowance(basis: Basis, source: Source, declared: Confirmed, trials: str | 
         factor=None if size is None else size if standard > 0.0 else np.inf,
         demand=None if size is not None and np.isinf(size) else demand,
         reason=reason,
+        straight=size is not None and 0.0 < size < np.inf and float(np.max(one.ratio(size))) > STRAIGHT,
     )
 
 
@@ -176,9 +184,8 @@ class _Quest:
         """The worst headline ratio at a size, and its demand; the factors there are noted."""
         near = np.argsort(-self.one.ratio(size) * self.factor, kind="stable")[:WATCHED]
         moved = replacing(self.basis.campaign, scaled(self.probe, size))
-        # Far from anything declared the chain bends so much that an adaptive run may take minutes.
-        far = size > FAR and self.trials is None
-        seen = confirm(moved, _some(self.basis.demands, near), FEW if far else self.trials)
+        look = confirm_far if size > FAR else confirm
+        seen = look(moved, _some(self.basis.demands, near), self.trials)
         known = np.isfinite(seen.headline)
         self.factor = self.factor.copy()
         self.factor[near[known]] = seen.factor[known]
@@ -186,7 +193,8 @@ class _Quest:
         return float(np.max(headline)), int(near[np.argmax(headline)])
 
     def _refined(self, size: float, demand: int) -> tuple[float, int]:
-        low, high = 0.0, np.inf
+        """The size at which the worst headline ratio is 1, between one that holds and one that fails."""
+        holds, fails = (0.0, 0.0), (np.inf, np.inf)
         best = (0.0, demand)
         for _ in range(ROUNDS):
             worst, where = self._seen(size)
@@ -194,12 +202,30 @@ class _Quest:
                 best = (size, where)
             if abs(worst - 1.0) <= NEAR:
                 break
-            low, high = (max(low, size), high) if worst < 1.0 else (low, min(high, size))
-            wanted = self.one.largest(self.factor)[0]
-            if wanted is None or not low < wanted < high:
-                wanted = 0.5 * (low + min(high, 2.0 * max(low, size)))
-            size = wanted
+            if worst < 1.0:
+                holds = max(holds, (size, worst))
+            else:
+                fails = min(fails, (size, worst))
+            size = self._between(holds, fails)
+            if fails[0] - holds[0] <= NEAR * holds[0]:
+                break
         return best
+
+    def _between(self, holds: tuple[float, float], fails: tuple[float, float]) -> float:
+        """The next size to look at: the linearised root with the factors seen last, where that lies between."""
+        wanted = self.one.largest(self.factor)[0]
+        if np.isinf(fails[0]):
+            return wanted if wanted is not None and wanted > holds[0] else 2.0 * holds[0]
+        if holds[0] == 0.0:
+            far = fails[1] > FAR_OFF or wanted is None or not wanted < fails[0]
+            return fails[0] / min(fails[1], 1e3) if far or wanted is None else wanted
+        # The ratio as a power of the size between the two.
+        power = np.log(fails[1] / holds[1]) / np.log(fails[0] / holds[0])
+        inside = float(holds[0] * holds[1] ** (-1.0 / power))
+        middle = float(np.sqrt(holds[0] * fails[0]))
+        if fails[0] > 4.0 * holds[0]:
+            return middle
+        return min(max(inside, holds[0] ** 0.95 * fails[0] ** 0.05), holds[0] ** 0.05 * fails[0] ** 0.95)
 
 
 def replacing(campaign: Campaign, source: Source) -> Campaign:

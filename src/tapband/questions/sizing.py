@@ -69,12 +69,13 @@ def sized(campaign: Campaign, trials: str | None = None, progress: Progress | No
     complete = True
     if choices is not None:
         efficient, complete = frontier(Search(catalogue=choices.catalogue), _step(progress, "frontier"))
+    alone = allowances(basis, declared, trials, _step(progress, "allowances"))
     return Sized(
         basis=basis,
         declared=declared,
         ranges=seen,
-        allowances=allowances(basis, declared, trials, _step(progress, "allowances")),
-        allocation=allocation(basis, declared, trials),
+        allowances=alone,
+        allocation=allocation(basis, declared, alone, trials),
         choices=choices,
         selection=selection,
         frontier=efficient,
