@@ -209,11 +209,9 @@ class _Stage:
         wary = rows & (far > _HIDDEN * got.scatter) & (far > 0.5 * delta)
         need = np.where(rows, self._need(points, got), np.inf)
         good = rows & (need == 0.0) & ~wary
-        need = np.where(good, 0.0, np.maximum(need, np.where(wary, _WARY, 1.0)))
-        if self.plan.fixed is None:
-            self.block.store(self.model, points, good, got, self.method)
-            return need
-        return np.maximum(need, 1.0)
+        self.block.store(self.model, points, good, got, self.method)
+        least = np.where(wary, _WARY, 1.0) if self.plan.fixed is None else 0.0
+        return np.where(good, 0.0, np.maximum(need, least))
 
     def finish(self, points: range, rows: Mask, tiles: Array) -> None:
         """Fresh trials until ``rows`` are good enough, starting from the numbers of ``tiles`` (Pb, m)."""
@@ -238,15 +236,20 @@ class _Stage:
         self.block.plain[self.block.places(points)] |= pending
 
     def _need(self, points: range, got: Estimate) -> Array:
-        """Tiles (Pb, m) that rows need by an estimate: 0 where it suffices, inf where plain is cheaper."""
+        """Tiles (Pb, m) that rows need by an estimate: 0 where it suffices, inf where plain is cheaper.
+
+        Where the number of trials is fixed, any that do not fail are better spent here than plainly.
+        """
         u = self.model.u[points.start : points.stop]
         excess = got.excess(u)
         tiles = _MARGIN * got.trials * excess * excess / TILE
+        tiles = np.where(got.failed, np.inf, np.maximum(tiles, 1e-9))
+        if self.plan.fixed is not None:
+            return tiles
         ratio = u / np.where(u > 0.0, tolerance(u), 1.0)
         plain = np.maximum(_PLAIN_ENDS * ratio * ratio, _PLAIN_LEAST)
         dear = ~(tiles * (TILE * _COST[self.method]) < plain) | (tiles > LADDER[-1])
-        tiles = np.where(dear | got.failed, np.inf, np.maximum(tiles, 1e-9))
-        return np.where(~got.failed & (excess < 1.0), 0.0, tiles)
+        return np.where(~got.failed & (excess < 1.0), 0.0, np.where(dear, np.inf, tiles))
 
     def _fixed(self, points: range, pending: Mask, count: int) -> None:
         """The same number of trials for all rows that are left."""

@@ -61,6 +61,16 @@ class Seen:
     d: Array
     e: Array
 
+    def renewed(self, new: Seen, rows: NDArray[np.bool_]) -> Seen:
+        """The new values in some rows: one that has stopped must not move with those beside it."""
+        wide = rows[..., None]
+        return Seen(
+            cdf=np.where(rows, new.cdf, self.cdf),
+            pdf=np.where(rows, new.pdf, self.pdf),
+            d=np.where(wide, new.d, self.d),
+            e=np.where(wide, new.e, self.e),
+        )
+
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Side:
