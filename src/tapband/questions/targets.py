@@ -19,7 +19,7 @@ Array = NDArray[np.float64]
 Indices = NDArray[np.int64]
 
 SAME_ANGLE = 1e-9
-"""[rad] Slack of an angle at the end of a range, for rounding."""
+"""[rad] Slack of an angle, for rounding."""
 ROUNDING = 1e-9
 """Relative excess over a target that is rounding."""
 
@@ -73,7 +73,10 @@ def points_of(target: Target, campaign: Campaign, points: Points) -> Indices:
     if target.alpha_range is None:
         return np.arange(len(points.names))
     low, high = target.alpha_range
-    return np.flatnonzero((points.alpha >= low - SAME_ANGLE) & (points.alpha <= high + SAME_ANGLE))
+    slack = (
+        campaign.plan.polar.same_angle + SAME_ANGLE
+    )  # a point set at an end may have been corrected past it
+    return np.flatnonzero((points.alpha >= low - slack) & (points.alpha <= high + slack))
 
 
 def _at_angles_of(names: Sequence[str], campaign: Campaign, points: Points) -> NDArray[np.bool_]:

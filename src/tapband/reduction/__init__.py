@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 from numpy.typing import NDArray
 
-from tapband.experiment.screening import flags
+from tapband.experiment.screening import SUSPICIONS, flags
 from tapband.experiment.stream import reynolds
 from tapband.nouns.campaign import Campaign
 from tapband.probability.coverage import agreement
@@ -23,6 +23,8 @@ if TYPE_CHECKING:
 
 Array = NDArray[np.float64]
 Progress = Callable[[int, int], None]
+
+SHOWN = 4
 
 __all__ = ["Assembled", "Reduced", "TapIntervals", "assemble", "reduce_campaign"]
 
@@ -109,16 +111,17 @@ def finish(campaign: Campaign, assembled: Assembled, linear: Linearised, drawn: 
             points.t_total,
             campaign.section.chord + assembled.corrected.chord,
         )
+    taps = _taps(assembled, campaign.intervals.level)
     return Reduced(
         campaign=campaign,
         assembled=assembled,
         linear=linear,
         montecarlo=drawn,
         agrees=agreement(linear, drawn),
-        taps=_taps(assembled, campaign.intervals.level),
+        taps=taps,
         condition_u=np.sqrt(assembled.condition_variance.sum(axis=2)),
         reynolds=number,
-        warnings=campaign.warnings + assembled.warnings + _said(assembled, drawn),
+        warnings=campaign.warnings + assembled.warnings + _said(assembled, drawn) + _flagged(assembled, taps),
     )
 
 
@@ -130,7 +133,7 @@ def _taps(assembled: Assembled, level: float) -> TapIntervals:
     with np.errstate(invalid="ignore", divide="ignore"):
         terms = np.sum(variance**2 / nu, axis=2)
         dof = np.where(terms > 0.0, u2**2 / terms, np.inf)
-    u = np.sqrt(u2)
+    u, stream = np.sqrt(u2), assembled.stream
     text = np.full(u.shape, "", dtype=object)
     for one in assembled.sets:
         i = one.points
@@ -139,9 +142,10 @@ def _taps(assembled: Assembled, level: float) -> TapIntervals:
             assembled.s,
             assembled.cp[i],
             u[i],
-            assembled.stream.mach[i],
+            stream.mach[i],
             assembled.nominal.reading[i],
             assembled.campaign.taps.full_scale,
+            stream.p_static[i, None] + assembled.cp[i] * stream.q[i, None],
         )
     return TapIntervals(u=u, U=coverage_factor(dof, level) * u, flag=text)
 
@@ -161,4 +165,17 @@ def _said(assembled: Assembled, drawn: MonteCarlo) -> tuple[str, ...]:
     for p in np.flatnonzero(short.any(axis=1)):
         names = ", ".join(np.array(assembled.problem.outputs)[short[p]])
         said.append(f"{points.keys[p]}: Monte Carlo did not reach its tolerance for {names}")
+    return tuple(said)
+
+
+def _flagged(assembled: Assembled, taps: TapIntervals) -> tuple[str, ...]:
+    """One line for each kind of suspicion, with the readings it falls on."""
+    names, keys = assembled.campaign.taps.names, assembled.points.keys
+    said = []
+    for kind in SUSPICIONS:
+        where = [(p, i) for p, i in np.argwhere(taps.flag != "").tolist() if kind in taps.flag[p, i]]
+        if where:
+            some = ", ".join(f"{names[i]} at {keys[p]}" for p, i in where[:SHOWN])
+            more = f" and {len(where) - SHOWN} more in cp.csv" if len(where) > SHOWN else ""
+            said.append(f"{len(where)} readings flagged {kind}, used all the same: {some}{more}")
     return tuple(said)

@@ -21,6 +21,8 @@ if TYPE_CHECKING:
 Array = NDArray[np.float64]
 SAME_ANGLE = 1e-7
 """[deg] Slack of an angle at the end of a range, for rounding."""
+SLACK = 1.0
+"""[deg] How far a listed point may lie past its range: the list has decided, within what counts as one angle."""
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -91,17 +93,17 @@ def _listed(frame: pd.DataFrame, target: Target, named: pd.DataFrame) -> NDArray
     wanted = set(np.array(keys(rows), dtype=object)[_numbers(rows, "target") == target.expanded])
     listed = np.array([key in wanted for key in keys(frame)], dtype=bool)
     # Two targets of one size on one coefficient differ by their points alone.
-    return listed & _among(frame, target) if target.points is None else listed
+    return listed & _among(frame, target, SLACK) if target.points is None else listed
 
 
-def _among(frame: pd.DataFrame, target: Target) -> NDArray[np.bool_]:
+def _among(frame: pd.DataFrame, target: Target, slack: float = SAME_ANGLE) -> NDArray[np.bool_]:
     if target.points is not None:
         pairs = zip(keys(frame), frame["point"], strict=True)
         return np.array([key in target.points or name in target.points for key, name in pairs], dtype=bool)
     if target.alpha_range is not None:
         low, high = (degrees(end) for end in target.alpha_range)
         alpha = _numbers(frame, "alpha")
-        return (alpha >= low - SAME_ANGLE) & (alpha <= high + SAME_ANGLE)
+        return (alpha >= low - slack) & (alpha <= high + slack)
     return np.ones(len(frame), dtype=bool)
 
 
