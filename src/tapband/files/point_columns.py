@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import re
+from collections import Counter
 from collections.abc import Sequence
 from dataclasses import dataclass
 
@@ -115,7 +116,16 @@ def _tap_columns(table: Table, taps: TapList | None, findings: Findings) -> list
                 f"add the column {name}, or list the tap in taps.excluded",
                 kind=f"{table.file}, columns of taps",
             )  # fmt: skip
+    _warn_of_odd_units(table, found, findings)
     return found
+
+
+def _warn_of_odd_units(table: Table, columns: Sequence[Column], findings: Findings) -> None:
+    """A few taps in another unit than the rest are legal, and seldom meant."""
+    usual, count = Counter(column.unit for column in columns).most_common(1)[0] if columns else ("", 0)
+    odd = [f"{column.name} [{column.unit}]" for column in columns if column.unit != usual]
+    if odd and count > 2 * len(odd):
+        findings.warn(f"{table.file}: taps in another unit than the others, which are in {usual}: {listed(odd)}")
 
 
 def _groups(table: Table, arrangement: Arrangement | None, taps: Sequence[str]) -> list[Column]:
