@@ -6,8 +6,8 @@ from collections.abc import Sequence
 from dataclasses import replace
 
 import numpy as np
-from campaigns import campaign, size, source
 
+from campaigns import campaign, size, source
 from tapband.nouns.campaign import Campaign
 from tapband.nouns.plan import Forecast, Layout, Option, Plan, Slot, Target, Wiring
 from tapband.nouns.source import COMMON, INDEPENDENT, Scale, Shape, Source
@@ -91,8 +91,10 @@ def angle_slot() -> Slot:
     """Two ways to set the angle."""
     options = [
         Option(
-            name=name, cost=cost, sources=(source("angle setting", "angle", size(np.radians(u), dof=6.0), INDEPENDENT),)
+            name=name,
+            cost=cost,
+            sources=(source("angle setting", "angle", size(np.radians(u), dof=6.0), INDEPENDENT),),
         )
         for name, cost, u in (("servo", 2400.0, 0.01), ("scale", 300.0, 0.08))
-    ]  # fmt: skip
+    ]
     return Slot(name="angle", replaces=("angle setting",), options=tuple(options))

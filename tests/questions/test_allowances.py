@@ -209,8 +209,11 @@ def test_what_stays_may_make_every_allocation_impossible() -> None:
 
 def test_stated_sizes_are_in_the_unit_of_their_statement() -> None:
     sources: tuple[Source, ...] = (
-        *instruments(), source("range", "tap pressure", size(0.0006, Shape.RECTANGULAR, Scale.FULL_SCALE), COMMON, INDEPENDENT),
-    )  # fmt: skip
+        *instruments(),
+        source(
+            "range", "tap pressure", size(0.0006, Shape.RECTANGULAR, Scale.FULL_SCALE), COMMON, INDEPENDENT
+        ),
+    )
     basis = basis_of(planned(sources))
     value, unit = stated_size(sources[-1], basis)
     assert (value, unit) == (pytest.approx(0.0006 * 130_000.0 / np.sqrt(3.0)), "Pa")  # one full scale for all

@@ -225,7 +225,8 @@ class _Quest:
         middle = float(np.sqrt(holds[0] * fails[0]))
         if fails[0] > 4.0 * holds[0]:
             return middle
-        return min(max(inside, holds[0] ** 0.95 * fails[0] ** 0.05), holds[0] ** 0.05 * fails[0] ** 0.95)
+        low, high = holds[0] ** 0.95 * fails[0] ** 0.05, holds[0] ** 0.05 * fails[0] ** 0.95
+        return float(min(max(inside, low), high))
 
 
 def replacing(campaign: Campaign, source: Source) -> Campaign:

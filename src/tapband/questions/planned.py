@@ -2,12 +2,11 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
 
-from tapband.nouns.campaign import Campaign
 from tapband.nouns.errors import QuestionError
 from tapband.probability.linearised import propagate
 from tapband.questions.forecasting import outlook
@@ -43,32 +42,26 @@ class Comparison:
 
 
 def comparison(reduced: Reduced) -> Comparison | None:
-    """The forecast's intervals, interpolated in angle, beside those achieved; None without a forecast.
+    """The forecast's intervals at the angles read, beside those achieved; None without a forecast.
 
-    Both are linearised: what was planned and what was found differ by the flow, not by the method.
+    The expected flow is taken at each point's own angle, as far as the forecast's angles reach. Both intervals
+    are linearised: what was planned and what was found differ by the flow, not by the method.
     """
     campaign, points = reduced.campaign, reduced.assembled.points
     forecast = campaign.plan.forecast
     if forecast is None:
         return None
-    alpha, expanded, outputs = _forecast_intervals(campaign)
-    order = np.argsort(alpha)
     slack = campaign.plan.polar.same_angle
-    inside = (points.alpha >= alpha.min() - slack) & (points.alpha <= alpha.max() + slack)
+    low, high = min(forecast.alpha), max(forecast.alpha)
+    inside = np.flatnonzero((points.alpha >= low - slack) & (points.alpha <= high + slack))
     planned = np.full((len(points.names), len(reduced.outputs)), np.nan)
-    for j, name in enumerate(reduced.outputs):
-        if name in outputs:
-            values = expanded[order, outputs.index(name)]
-            planned[:, j] = np.where(inside, np.interp(points.alpha, alpha[order], values), np.nan)
+    if inside.size:
+        alpha, place = np.unique(np.clip(points.alpha[inside], low, high), return_inverse=True)
+        ahead = replace(forecast, alpha=tuple(alpha.tolist()))
+        at = replace(campaign, plan=replace(campaign.plan, forecast=ahead))
+        assembled = assemble(outlook(at).campaign)
+        planned[inside] = propagate(assembled.problem, campaign.intervals.level).U[place.ravel()]
     return Comparison(outputs=reduced.outputs, planned=planned, achieved=reduced.linear.U)
-
-
-def _forecast_intervals(campaign: Campaign) -> tuple[Array, Array, tuple[str, ...]]:
-    """Angles (A,) [rad], linearised U (A, m) and names of the coefficients (m)."""
-    plan = outlook(campaign).campaign
-    assembled = assemble(plan)
-    linear = propagate(assembled.problem, campaign.intervals.level)
-    return assembled.points.alpha, linear.U, assembled.problem.outputs
 
 
 def why_not_compared(error: QuestionError) -> str:

@@ -3,8 +3,9 @@
 A source shared by module adds, at demand d, Σ_g (Σ_{i in g} a_di)² to the variance, a_di the sensitivity of
 the coefficient to that source at tap i. On a closed contour the sum over all taps vanishes for a common
 error; a good wiring brings every module's own sum near zero, which interleaving along the contour nearly
-does. From several plain wirings the best is improved by exchanging pairs of taps, and by moving taps to free
-ports, until no such step helps: a local optimum, found the same way every time.
+does. Several plain wirings are improved by exchanging pairs of taps, and by moving taps to free ports, until no
+such step helps; then the best of them is shaken and improved again. The answer is a good local optimum, found
+the same way every time, and need not be the best there is.
 
 D demands, F sources shared by module, n live taps, G modules.
 """
@@ -28,6 +29,8 @@ Progress = Callable[[int, int], None]
 COLUMN = "module"
 ROUNDS = 40
 """Steps a tap after which the search ends; it has ended long before."""
+SHAKES, FEWEST_SHAKES, SHAKEN_PAIRS = 24, 4, 3
+"""Times the best wiring is shaken (fewer where that is much work), and pairs of taps exchanged each time."""
 LEAST = 1e-9
 """Smallest gain of a step."""
 
@@ -102,9 +105,9 @@ def wiring_choice(basis: Basis, progress: Progress | None = None) -> WiringChoic
     shared, terms = _terms(basis, taps, modules)
     starts = _starts(basis, taps, modules, free)
     judged = [_judged(name, module, terms) for name, module in starts.items()]
-    best = min(judged, key=lambda one: one.worst)
-    module = best.module if not shared else _improved(terms, best.module, free, progress)
-    found = _judged("found", module, terms)
+    found = _judged("found", min(judged, key=lambda one: one.worst).module, terms)
+    if shared:
+        found = _sought(terms, [one.module for one in judged], found, free, progress)
     return WiringChoice(modules=modules, taps=taps, wirings=(*judged, found), shared=shared)
 
 
@@ -198,7 +201,28 @@ def _judged(name: str, module: Indices, terms: _Terms) -> Wired:
     return Wired(name=name, module=module, worst=float(np.max(ratio)), demand=int(np.argmax(ratio)))
 
 
-def _improved(terms: _Terms, module: Indices, free: Sequence[int], progress: Progress | None) -> Indices:
+def _sought(
+    terms: _Terms, starts: Sequence[Indices], best: Wired, free: Sequence[int], progress: Progress | None
+) -> Wired:
+    """The best local optimum from plain wirings, then from the best so far with a few taps exchanged."""
+    work = starts[0].size ** 2 * terms.tap.shape[0] * terms.tap.shape[1]
+    shaken = int(np.clip(SHAKES * 1e5 / max(work, 1), FEWEST_SHAKES, SHAKES))
+    generator = np.random.default_rng(0)
+    for k in range(len(starts) + shaken):
+        module = starts[k] if k < len(starts) else best.module.copy()
+        if k >= len(starts):
+            for _ in range(SHAKEN_PAIRS):
+                i, j = generator.integers(0, module.size, 2)
+                module[[i, j]] = module[[j, i]]
+        one = _judged("found", _improved(terms, module, free), terms)
+        if one.worst < best.worst:
+            best = one
+        if progress is not None:
+            progress(k + 1, len(starts) + shaken)
+    return best
+
+
+def _improved(terms: _Terms, module: Indices, free: Sequence[int]) -> Indices:
     """The steepest exchange or move again and again, until none lowers the worst ratio.
 
     Among steps of one worst ratio (a target that no wiring helps) the mean of all ratios decides.
@@ -206,7 +230,7 @@ def _improved(terms: _Terms, module: Indices, free: Sequence[int], progress: Pro
     module = module.copy()
     sums = terms.sums(module)
     score = _score(terms.ratio((sums**2).sum(axis=-1)))
-    for round_ in range(ROUNDS * module.size):
+    for _ in range(ROUNDS * module.size):
         steps, after = _steps(terms, module, sums, free)
         if not len(steps):
             break
@@ -222,8 +246,6 @@ def _improved(terms: _Terms, module: Indices, free: Sequence[int], progress: Pro
             module[i] = g
         sums = terms.sums(module)
         score = (float(after[best, 0]), float(after[best, 1]))
-        if progress is not None:
-            progress(round_ + 1, max(round_ + 2, module.size))
     return module
 
 
