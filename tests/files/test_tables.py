@@ -226,3 +226,69 @@ def test_bad_cell_of_a_workbook_is_named_by_row(tmp_path: Path) -> None:
     assert str(caught.value).startswith(
         'taps.xlsx, row 4, column x: must be a number; got "there"; write a number, or leave the cell empty'
     )
+
+
+@pytest.mark.parametrize("mark", [";", "\t"])
+def test_one_row_of_decimal_commas_is_read(mark: str, tmp_path: Path) -> None:
+    campaign = good(tmp_path)
+    text = [line for line in (GOOD / "points.csv").read_text().splitlines() if not line.startswith("#")][:2]
+    (tmp_path / "points.csv").write_text("\n".join(text) + "\n")
+    plain = points_of(load(campaign))
+    commas = "\n".join(text).replace(",", mark).replace(".", ",") + "\n"
+    (tmp_path / "points.csv").write_text(commas)
+    np.testing.assert_array_equal(points_of(load(campaign)).readings, plain.readings)
+
+
+def test_a_cell_that_is_no_number_is_said_once(tmp_path: Path) -> None:
+    campaign = good(tmp_path)
+    rows = [line for line in (GOOD / "points.csv").read_text().splitlines() if not line.startswith("#")]
+    names, cells = rows[0].split(","), rows[1].split(",")
+    numbers = [i for i, name in enumerate(names) if "[" in name]
+    bad = [f"lost{i}" if i in numbers else cell for i, cell in enumerate(cells)]
+    (tmp_path / "points.csv").write_text(rows[0] + "\n" + ",".join(bad) + "\n")
+    with pytest.raises(InputError) as caught:
+        load(campaign)
+    assert str(caught.value).split("\n") == [
+        f'points.csv, line 2, column {names[i].split(" ")[0]}: must be a number; got "lost{i}"; '
+        "write a number, or leave the cell empty where it is missing"
+        for i in numbers
+    ]
+
+
+def test_a_line_break_inside_a_cell_is_named(tmp_path: Path) -> None:
+    campaign = good(tmp_path)
+    rows = [line for line in (GOOD / "points.csv").read_text().splitlines() if not line.startswith("#")]
+    rest = rows[1].split(",", 1)[1]
+    (tmp_path / "points.csv").write_text("\n".join([rows[0], f'"a\n1",{rest}', *rows[2:]]) + "\n")
+    with pytest.raises(InputError) as caught:
+        load(campaign)
+    assert str(caught.value) == (
+        'points.csv, line 2: must not break the line inside a cell: such breaks are not read; got ""a"; '
+        "write the cell on one line, or remove the quotation mark"
+    )
+
+
+def test_a_line_break_inside_a_heading_is_named(tmp_path: Path) -> None:
+    campaign = good(tmp_path, contour_csv='x,"y\n"\n1,0\n')
+    with pytest.raises(InputError) as caught:
+        load(campaign)
+    assert str(caught.value) == (
+        'contour.csv, line 1: must not break the line inside a cell: such breaks are not read; got "x,"y"; '
+        "write the cell on one line, or remove the quotation mark"
+    )
+
+
+def test_an_angle_past_half_a_turn_is_refused_in_its_own_unit(tmp_path: Path) -> None:
+    campaign = good(tmp_path, ("points.csv", "alpha [deg]", "alpha [rad]"))
+    first = [line for line in (GOOD / "points.csv").read_text().splitlines() if not line.startswith("#")][1]
+    text = (tmp_path / "points.csv").read_text().splitlines()
+    names = next(line for line in text if not line.startswith("#")).split(",")
+    cells = first.split(",")
+    cells[names.index("alpha [rad]")] = "4"
+    (tmp_path / "points.csv").write_text(",".join(names) + "\n" + ",".join(cells) + "\n")
+    with pytest.raises(InputError) as caught:
+        load(campaign)
+    assert str(caught.value) == (
+        "points.csv, line 2, column alpha: must lie within ±3.14159 rad (±180 deg); got 4; "
+        "correct the angle or its unit"
+    )

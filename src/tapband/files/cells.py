@@ -28,9 +28,13 @@ def text_of(value: object) -> str:
 def numbers_of(
     columns: Sequence[Sequence[object] | Array], names: Sequence[str], lines: NDArray[np.int64], file: str,
     findings: Findings,
-) -> Array:  # fmt: skip
-    """Typed cells of some columns as numbers (R, k), NaN where missing; what is no finite number is noted."""
+) -> tuple[Array, NDArray[np.bool_]]:  # fmt: skip
+    """Typed cells of some columns as numbers (R, k), NaN where missing, and which are no finite number.
+
+    The latter are noted.
+    """
     out = np.full((len(lines), len(columns)), nan)
+    refused = np.zeros(out.shape, dtype=np.bool_)
     for place, (cells, name) in enumerate(zip(columns, names, strict=True)):
         if isinstance(cells, np.ndarray) and not np.isinf(cells).any():
             out[:, place] = cells
@@ -39,12 +43,13 @@ def numbers_of(
             number, rule = _number(cell)
             out[row, place] = number
             if rule:
+                refused[row, place] = True
                 findings.add(
                     f"{file}, row {lines[row]}, column {name}", rule, shown(text_of(cell)),
                     "write a number, or leave the cell empty where it is missing",
                     kind=f"{file}, column {name}",
                 )  # fmt: skip
-    return out
+    return out, refused
 
 
 def _number(cell: object) -> tuple[float, str]:

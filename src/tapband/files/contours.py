@@ -98,7 +98,8 @@ def _points(
     blocks = list(table.blocks((x_column.index, y_column.index), (), findings))
     lines = np.concatenate([block.lines for block in blocks] or [np.empty(0, dtype=np.int64)])
     xy = np.concatenate([block.numbers for block in blocks] or [np.empty((0, 2))])
-    for row, column in np.argwhere(np.isnan(xy)):
+    empty = [np.column_stack((block.empty(0), block.empty(1))) for block in blocks]
+    for row, column in np.argwhere(np.concatenate(empty)) if empty else ():
         name = (x_column, y_column)[column].name
         findings.add(
             table.at(int(lines[row]), name), "must be given at every point", "nothing", "write the number",

@@ -26,6 +26,8 @@ ROWS = 4096
 """Rows of a block."""
 MARKS = ("\t", ";", ",")
 _SNIFF = 1 << 18
+_BREAK = "must not break the line inside a cell: such breaks are not read"
+_JOIN = "write the cell on one line, or remove the quotation mark"
 _NUMBER = re.compile(r"[+-]?(?:\d+([.,]?)\d*|([.,])\d+)(?:[eE][+-]?\d+)?")
 
 
@@ -66,12 +68,16 @@ def open_csv(path: Path, name: str, findings: Findings) -> Table | None:
         return None
     if not _is_text(head, name, findings):
         return None
+    cut = len(head) == _SNIFF
     lines = _data_lines(head.decode("utf-8-sig", errors="ignore").replace("\r\n", "\n").replace("\r", "\n"))
     if not lines:
         findings.add(name, "is empty", do="write a header row and the rows below it")
         return None
     first = lines[0][0]
-    dialect = _sniff([line for _, line in lines[:-1] or lines])
+    if lines[0][1].count('"') % 2:
+        findings.add(f"{name}, line {first}", _BREAK, shown(lines[0][1]), _JOIN)
+        return None
+    dialect = _sniff([line for _, line in (cut and lines[:-1]) or lines])  # the last one may be cut short
     cells = _cells(lines[0][1], dialect)
     columns = read_header(cells, name, f"{name}, line {first}", findings)
     if columns is None:
@@ -166,13 +172,20 @@ def _even(raw: list[str], done: int, name: str, dialect: Dialect, shape: Shape, 
     plain = done >= shape.first and not quoted and "#" not in text and min(map(len, rows)) >= shape.width
     if plain and {row.count(mark) for row in rows} == {shape.width - 1}:
         return Lines(at=at, rows=rows, quoted=False)
-    keep = []
+    keep, inside = [], False
     for i, row in enumerate(rows):
         if at[i] <= shape.first or not _is_data(row):
+            continue
+        if inside:  # the rest of a cell that is noted already
+            inside = row.count('"') % 2 == 0
             continue
         cells = len(_cells(row, dialect))
         if cells == shape.width:
             keep.append(i)
+            continue
+        if row.count('"') % 2:
+            findings.add(f"{name}, line {at[i]}", _BREAK, shown(row), _JOIN, kind=name)
+            inside = True
             continue
         findings.add(
             f"{name}, line {at[i]}", f"must have {shape.width} cells like the header", str(cells),
@@ -187,16 +200,16 @@ def _read(
     findings: Findings,
 ) -> Block:  # fmt: skip
     """One block, by NumPy where it can read it, else cell by cell."""
-    plain = _plain(lines, dialect, numbers)
+    plain, refused = _plain(lines, dialect, numbers), None
     if plain is None or (texts and lines.quoted):
         cells = [_cells(row, dialect) for row in lines.rows]
         if plain is None:
-            plain = _by_cell(cells, lines.at, name, dialect, shape, numbers, findings)
+            plain, refused = _by_cell(cells, lines.at, name, dialect, shape, numbers, findings)
     else:
         last = max(texts, default=0) + 1
         cells = [row.split(dialect.delimiter, last) for row in lines.rows] if texts else []
     columns = tuple(["" if (cell := row[i].strip()) in MISSING else cell for row in cells] for i in texts)
-    return Block(lines=lines.at, numbers=plain, texts=columns)
+    return Block(lines=lines.at, numbers=plain, texts=columns, refused=refused)
 
 
 def _plain(lines: Lines, dialect: Dialect, numbers: Sequence[int]) -> Array | None:
@@ -235,9 +248,10 @@ def _numpy(rows: list[str], dialect: Dialect, columns: Sequence[int]) -> Array |
 def _by_cell(
     cells: list[list[str]], places: NDArray[np.int64], name: str, dialect: Dialect, shape: Shape,
     numbers: Sequence[int], findings: Findings,
-) -> Array:  # fmt: skip
-    """Numbers cell by cell (R, k); a cell that is none is noted and counts as missing."""
+) -> tuple[Array, NDArray[np.bool_]]:  # fmt: skip
+    """Numbers cell by cell (R, k) and which cells hold none: these are noted and count as missing."""
     out = np.full((len(cells), len(numbers)), nan)
+    refused = np.zeros(out.shape, dtype=np.bool_)
     for row, line in enumerate(places.tolist()):
         for column, index in enumerate(numbers):
             text = cells[row][index].strip()
@@ -247,11 +261,12 @@ def _by_cell(
             if number is not None and isfinite(number):
                 out[row, column] = number
             else:
+                refused[row, column] = True
                 where = f"{name}, column {shape.names[index]}"
                 place = f"{name}, line {line}, column {shape.names[index]}"
                 rule, do = _why(text, number, dialect)
                 findings.add(place, rule, shown(text), do, kind=where)
-    return out
+    return out, refused
 
 
 def _number(text: str, dialect: Dialect) -> float | None:

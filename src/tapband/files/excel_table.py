@@ -94,7 +94,8 @@ def _blocks(
         def column(index: int, block: list[Row] = block) -> list[object]:
             return [row[index] if index < len(row) else None for _, row in block]
 
-        found = numbers_of([column(i) for i in numbers], [names[i] for i in numbers], lines, name, findings)
-        yield Block(
-            lines=lines, numbers=found, texts=tuple([text_of(cell) for cell in column(i)] for i in texts)
+        found, refused = numbers_of(
+            [column(i) for i in numbers], [names[i] for i in numbers], lines, name, findings
         )
+        cells = tuple([text_of(cell) for cell in column(i)] for i in texts)
+        yield Block(lines=lines, numbers=found, texts=cells, refused=refused)

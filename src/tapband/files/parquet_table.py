@@ -47,10 +47,10 @@ def _blocks(
         lines = np.arange(done + 1, done + batch.num_rows + 1, dtype=np.int64)
         done += batch.num_rows
         columns = [_numeric(batch.column(i)) for i in range(len(numbers))]
-        found = numbers_of(columns, [names[i] for i in numbers], lines, name, findings)
+        found, refused = numbers_of(columns, [names[i] for i in numbers], lines, name, findings)
         cells = range(len(numbers), len(numbers) + len(texts))
         yield Block(
-            lines=lines, numbers=found,
+            lines=lines, numbers=found, refused=refused,
             texts=tuple([text_of(cell) for cell in batch.column(i).to_pylist()] for i in cells),
         )  # fmt: skip
 

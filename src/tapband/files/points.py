@@ -52,6 +52,8 @@ class _Keys:
     lines: list[int] = field(default_factory=list)
     cells: list[tuple[str, ...]] = field(default_factory=list)
     varying: dict[int, int] = field(default_factory=dict)
+    refused: set[int] = field(default_factory=set)
+    """Points with a cell whose fault is noted already."""
 
     def index(self, block: Block, run_at: int | None) -> NDArray[np.int64]:
         """Index of each row's point (R,), new keys added."""
@@ -143,6 +145,8 @@ def _gather(
     for block in _blocks(table, roles, findings):
         point = keys.index(block, _run_at(roles))
         numbers = roles.si(block.numbers)
+        if block.refused is not None:
+            keys.refused.update(point[block.refused.any(axis=1)].tolist())
         _check_rows(table, roles, block, numbers, findings)
         if arrangement is not None and roles.sound:
             check_stream(table, roles, block, numbers, arrangement, findings)
@@ -181,13 +185,14 @@ def _check_rows(table: Table, roles: Roles, block: Block, numbers: Array, findin
     for column in range(1 + len(roles.channels)):
         note(
             column,
-            np.isnan(numbers[:, column]),
+            block.empty(column),
             "must be given in every row",
             "write the number or remove the row",
         )
     if not roles.sound:
         return
-    note(0, np.abs(numbers[:, 0]) > pi + 1e-9, "must lie within ±180 deg", "correct the angle or its unit")
+    rule = f"must lie within {_half_turn(roles)}"
+    note(0, np.abs(numbers[:, 0]) > pi + 1e-9, rule, "correct the angle or its unit")
     for column, item in enumerate(roles.optional, start=1 + len(roles.channels)):
         values = numbers[:, column]
         if item.name == "t_total":
@@ -201,13 +206,20 @@ def _check_rows(table: Table, roles: Roles, block: Block, numbers: Array, findin
             )
 
 
+def _half_turn(roles: Roles) -> str:
+    """±180 deg in the unit of the angle column."""
+    if roles.alpha.unit in {"deg", "degree", "degrees", "°"}:
+        return f"±180 {roles.alpha.unit}"
+    return f"±{pi / roles.factor[0]:.6g} {roles.alpha.unit} (±180 deg)"
+
+
 def _check_live(table: Table, keys: _Keys, readings: Array, taps: TapList, findings: Findings) -> None:
     """Note points at which too few taps have a reading."""
     live = np.isfinite(readings) & ~taps.excluded
     sides = [(np.ones_like(taps.excluded), FEWEST, "")]
     if taps.upper is not None:
         sides += [(taps.upper, 2, " on the upper surface"), (~taps.upper, 2, " on the lower surface")]
-    said = np.zeros(len(readings), dtype=np.bool_)
+    said = np.isin(np.arange(len(readings)), list(keys.refused))
     for side, fewest, words in sides:
         count = np.count_nonzero(live & side, axis=1)
         table_has = int(np.count_nonzero(side & ~taps.excluded))

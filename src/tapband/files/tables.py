@@ -30,11 +30,20 @@ class Column:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Block:
-    """Consecutive rows: their place in the file, numbers (R, k) with NaN where missing, texts by column."""
+    """Consecutive rows: their place in the file, numbers (R, k) with NaN where missing, texts by column.
+
+    ``refused`` (R, k) are cells whose fault is noted already, None where there is none.
+    """
 
     lines: NDArray[np.int64]
     numbers: Array
     texts: tuple[Sequence[str], ...]
+    refused: NDArray[np.bool_] | None = None
+
+    def empty(self, column: int) -> NDArray[np.bool_]:
+        """Rows (R,) in which nothing stands in a number column."""
+        empty = np.isnan(self.numbers[:, column])
+        return empty if self.refused is None else empty & ~self.refused[:, column]
 
 
 _STREAM = ("p_total", "p_static", "p_difference", "q", "mach", "t_total")

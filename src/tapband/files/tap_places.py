@@ -35,8 +35,8 @@ def place_taps(
         findings.add(table.file, "must place the taps by x with surface, x with y, or s", got, do)
         return None
     before = len(findings)
-    given = {column.name: block.numbers[:, i] for i, column in enumerate(places)}
-    _check_given(table, block, {name: given[name] for name in way}, findings)
+    empty = {column.name: block.empty(i) for i, column in enumerate(places)}
+    _check_given(table, block, {name: empty[name] for name in way}, findings)
     upper = (
         _uppers(table, block, surface, findings) if surface else np.zeros(len(block.lines), dtype=np.bool_)
     )
@@ -51,9 +51,9 @@ def place_taps(
     return s, upper
 
 
-def _check_given(table: Table, block: Block, at: dict[str, Array], findings: Findings) -> None:
-    for name, values in at.items():
-        for line in block.lines[np.isnan(values)].tolist():
+def _check_given(table: Table, block: Block, empty: dict[str, NDArray[np.bool_]], findings: Findings) -> None:
+    for name, rows in empty.items():
+        for line in block.lines[rows].tolist():
             findings.add(
                 table.at(line, name), "must be given for every tap", "nothing", "write the number",
                 kind=table.of(name),

@@ -108,7 +108,12 @@ def _whole(table: Table, numbers: Sequence[Column], texts: Sequence[Column], fin
         lines=np.concatenate([block.lines for block in blocks]),
         numbers=np.concatenate([block.numbers for block in blocks]),
         texts=tuple([cell for block in blocks for cell in block.texts[i]] for i in range(len(texts))),
+        refused=np.concatenate([_refused(block) for block in blocks]),
     )
+
+
+def _refused(block: Block) -> NDArray[np.bool_]:
+    return np.zeros(block.numbers.shape, dtype=np.bool_) if block.refused is None else block.refused
 
 
 def _check_names(
