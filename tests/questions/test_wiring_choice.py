@@ -77,7 +77,7 @@ def test_found_wiring_is_the_best_of_those_shown_and_fits_its_ports() -> None:
     assert by_name["interleaved"] < 0.2 * by_name["blocks"]
 
 
-@pytest.mark.parametrize("taps", [8, 9])
+@pytest.mark.parametrize("taps", [7, 9])
 def test_found_wiring_of_two_modules_is_within_a_fiftieth_of_the_best_there_is(taps: int) -> None:
     # Steps of one exchange may end short of the optimum; 2 % is this test's own choice.
     half = taps // 2 + 1

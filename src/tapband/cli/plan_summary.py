@@ -7,6 +7,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
+from tapband.cli.terminal import print_table
 from tapband.files.write_text import one_line
 from tapband.report.rounding import significant
 
@@ -27,9 +28,9 @@ def print_plan(plan: Plan, folder: Path, console: Console) -> None:
     _say(console, f"Sizing. {title}")
     for note in plan.notes[:LINES]:
         _say(console, f"- {one_line(note)}")
-    console.print(_allowances(plan))
+    print_table(console, _allowances(plan))
     if "selection" in plan.tables and len(plan.tables["selection"]):
-        console.print(_selection(plan))
+        print_table(console, _selection(plan))
     _say(console, f"tables: {folder}")
 
 
