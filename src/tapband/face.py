@@ -19,6 +19,7 @@ from tapband.files.load import load
 from tapband.files.provenance import head, meta
 from tapband.nouns.campaign import Campaign
 from tapband.nouns.errors import QuestionError
+from tapband.nouns.monte_carlo import seed_fault, trials_fault, trials_text
 from tapband.nouns.plan import Polar
 from tapband.questions.latents import Latents, from_arrays, latents_of, to_arrays
 from tapband.questions.stated import full_latents
@@ -267,9 +268,7 @@ def reduce(
     points done and points in all. ``client`` of a running Dask cluster spreads the points over its workers;
     the rows are the same.
     """
-    reduced = reduce_campaign(
-        campaign, None if trials is None else str(trials), seed, progress, client=client
-    )
+    reduced = reduce_campaign(_asked("reduce", campaign, trials, seed), progress=progress, client=client)
     return _results(reduced, "reduce")
 
 
@@ -283,8 +282,8 @@ def forecast(
     """Before a test: what its forecast expects, reduced as readings would be; marked as forecast everywhere."""
     from tapband.questions.forecasting import outlook
 
-    plan = outlook(campaign).campaign
-    reduced = reduce_campaign(plan, None if trials is None else str(trials), seed, progress, client=client)
+    plan = outlook(_asked("forecast", campaign, trials, seed)).campaign
+    reduced = reduce_campaign(plan, progress=progress, client=client)
     return _results(reduced, "forecast")
 
 
@@ -293,9 +292,26 @@ def size(campaign: Campaign, progress: Callable[[float, float, str], None] | Non
     from tapband.questions.sizing import sized
     from tapband.report.plan_result import plan_of
 
-    answers = sized(campaign, progress=progress)
+    answers = sized(_asked("size", campaign), progress=progress)
     campaign = answers.basis.campaign
     return plan_of(answers, {**head(campaign), "warnings": list(campaign.warnings)})
+
+
+def _asked(
+    question: str, campaign: Campaign, trials: str | int | None = None, seed: int | None = None
+) -> Campaign:
+    """The campaign with the trials and the seed that are asked for; what cannot be asked is refused."""
+    if not isinstance(campaign, Campaign):
+        rule = f"{question}: takes a campaign"
+        do = f'write tapband.{question}(tapband.load("campaign.toml"), ...)'
+        raise QuestionError(f"{rule}; got {type(campaign).__name__}; {do}")
+    trials = campaign.intervals.trials if trials is None else trials
+    seed = campaign.intervals.seed if seed is None else seed
+    for fault in (trials_fault(trials, "trials"), seed_fault(seed, "seed")):
+        if fault is not None:
+            raise QuestionError(str(fault))
+    intervals = replace(campaign.intervals, trials=trials_text(trials), seed=int(seed))
+    return replace(campaign, intervals=intervals)
 
 
 def _results(reduced: Reduced, kind: str) -> Results:
@@ -340,15 +356,10 @@ def rank(
     from tapband.files.frames_rank import point_tables
     from tapband.questions.rank_point import reduced_at
 
+    campaign = _asked("rank", campaign, trials, seed)
     if campaign.points is None:
         raise QuestionError("rank: needs readings; got a campaign without them; add a table of points")
-    stated = campaign.intervals
-    reduced = reduced_at(
-        campaign,
-        point,
-        stated.trials if trials is None else str(trials),
-        stated.seed if seed is None else seed,
-    )
+    reduced = reduced_at(campaign, point, campaign.intervals.trials, campaign.intervals.seed)
     return Results(
         tables={**frames(reduced), **point_tables(reduced, sobol)},
         meta={**meta(reduced), "kind": "rank"},
@@ -367,17 +378,11 @@ def compare(
     seed: int | None = None,
 ) -> Results:
     """The table ``differences`` alone, without reducing the whole campaign; see :meth:`Results.compare`."""
+    campaign = _asked("compare", campaign, trials, seed)
     if campaign.points is None:
         raise QuestionError("compare: needs readings; got a campaign without them; add a table of points")
     from tapband.files.answers import Setting, compared
 
-    stated = campaign.intervals
-    intervals = replace(
-        stated,
-        trials=stated.trials if trials is None else str(trials),
-        seed=stated.seed if seed is None else seed,
-    )
-    campaign = replace(campaign, intervals=intervals)
     assembled = assemble(campaign)
     latents = full_latents(assembled)
     table = compared(latents, Setting.of(assembled), a, b, within)

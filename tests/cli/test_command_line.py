@@ -63,13 +63,11 @@ MISTAKES = [
     (["--verbose"], "tapband: No such option: --verbose (Possible options: --version); see 'tapband --help'"),
     (
         ["reduce", "c.toml", "--trials", "1e6"],
-        "--trials: must be auto, a whole number, or plain: and a whole number; "
-        'got "1e6"; write --trials auto, 200000 or plain:1000000',
+        '--trials: must be "auto", a whole number from 100, or "plain:N"; got "1e6"; write "auto"',
     ),
     (
         ["reduce", "c.toml", "--trials", "0"],
-        "--trials: must be auto, a whole number, or plain: and a whole number; "
-        'got "0"; write --trials auto, 200000 or plain:1000000',
+        '--trials: must be "auto", a whole number from 100, or "plain:N"; got "0"; write "auto"',
     ),
 ]
 
@@ -85,8 +83,7 @@ def test_a_mistake_in_the_command_is_one_line_on_standard_error(
 @pytest.mark.parametrize(
     "arguments",
     [
-        ["reduce", "c.toml", "d.toml"], ["reduce", "c.toml", "--seed", "-1"],
-        ["reduce", "c.toml", "--seed", "x"],
+        ["reduce", "c.toml", "d.toml"],
         ["reduce", "c.toml", "--figures", "gif"], ["reduce", "c.toml", "--out"], ["schema", "extra"],
         ["reduce", "--sed", "3", "c.toml"], ["check", "c.toml", "--excel"], ["start"], ["-x"],
     ],

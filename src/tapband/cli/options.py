@@ -2,14 +2,14 @@
 
 from __future__ import annotations
 
-import re
 from enum import StrEnum
 from pathlib import Path
 from typing import Annotated
 
 import typer
 
-from tapband.nouns.errors import QuestionError
+from tapband.nouns.errors import Fault, QuestionError
+from tapband.nouns.monte_carlo import seed_fault, trials_fault
 
 
 class FigureKind(StrEnum):
@@ -29,10 +29,22 @@ def _show_version(asked: bool) -> None:
 
 
 def _checked_trials(text: str | None) -> str | None:
-    if text is None or re.fullmatch(r"auto|(plain:)?[1-9][0-9]*", text):
-        return text
-    rule = "--trials: must be auto, a whole number, or plain: and a whole number"
-    raise QuestionError(f'{rule}; got "{text}"; write --trials auto, 200000 or plain:1000000')
+    _refuse(None if text is None else trials_fault(text, "--trials"))
+    return text
+
+
+def _checked_seed(text: str) -> int:
+    try:
+        number: int | str = int(text)
+    except ValueError:  # no number, or of more digits than Python reads
+        number = text
+    _refuse(seed_fault(number, "--seed"))
+    return int(number)
+
+
+def _refuse(fault: Fault | None) -> None:
+    if fault is not None:
+        raise QuestionError(str(fault))
 
 
 CampaignFile = Annotated[Path, typer.Argument(metavar="CAMPAIGN", help="The campaign file (TOML).")]
@@ -49,14 +61,17 @@ Trials = Annotated[
 ]  # fmt: skip
 Seed = Annotated[
     int | None,
-    typer.Option(min=0, metavar="N", help="Seed of the Monte Carlo draws. Default: as declared."),
+    typer.Option(
+        parser=_checked_seed, metavar="N", help="Seed of the Monte Carlo draws. Default: as declared."
+    ),
 ]
 Out = Annotated[
     Path | None,
     typer.Option(
         metavar="DIR",
-        help="Folder of the results. Default: <campaign name>-results beside the campaign. An existing folder"
-        " is replaced only if tapband wrote it; files of your own in it stay.",
+        help="Folder of the results. Default: CAMPAIGN-results beside the campaign, CAMPAIGN the name of its file"
+        " without the ending. An existing folder is replaced only if tapband wrote it; files of your own in it"
+        " stay.",
     ),
 ]
 Excel = Annotated[bool, typer.Option("--excel", help="Also one workbook, a sheet a table (results.xlsx).")]

@@ -7,7 +7,6 @@ is wrong with it in a :class:`~tapband.files.faults.Findings`.
 from __future__ import annotations
 
 import os
-import re
 from contextlib import suppress
 from dataclasses import dataclass
 from pathlib import Path
@@ -48,10 +47,10 @@ from tapband.nouns.campaign import (
     Section,
     Taps,
 )  # fmt: skip
+from tapband.nouns.errors import QuestionError
+from tapband.nouns.monte_carlo import trials_fault, trials_text
 from tapband.nouns.plan import Plan
 from tapband.nouns.source import Source
-
-FEWEST_TRIALS = 100
 
 
 def load(path: str | os.PathLike[str]) -> Campaign:
@@ -59,6 +58,9 @@ def load(path: str | os.PathLike[str]) -> Campaign:
 
     Raises :class:`~tapband.nouns.errors.InputError` with every fault of the file and its tables.
     """
+    if not isinstance(path, (str, os.PathLike)):
+        rule = "load: takes the path of a campaign file"
+        raise QuestionError(f'{rule}; got {type(path).__name__}; write tapband.load("campaign.toml")')
     findings = Findings()
     where = Path(path)
     text = read_campaign_text(where, findings)
@@ -193,15 +195,10 @@ def _reduction(part: ReductionPart) -> Reduction:
 
 
 def _intervals(part: IntervalsPart, folder: Folder) -> Intervals:
-    trials = str(part.trials).replace(" ", "")
-    match = re.fullmatch(r"(plain:)?(\d{1,15})", trials)
-    if trials != "auto" and (match is None or int(match[2]) < FEWEST_TRIALS):
-        folder.findings.add(
-            folder.at("intervals.trials"),
-            f'must be "auto", a whole number from {FEWEST_TRIALS}, or "plain:N"',
-            shown(part.trials), 'write "auto"',
-        )  # fmt: skip
-    return Intervals(level=part.level, trials=trials, seed=part.seed)
+    fault = trials_fault(part.trials, folder.at("intervals.trials"))
+    if fault is not None:
+        folder.findings.add(fault.where, fault.rule, fault.got, fault.do)
+    return Intervals(level=part.level, trials=trials_text(part.trials), seed=part.seed)
 
 
 def _plan(parts: Parts, text: CampaignText, setting: Setting) -> Plan:
