@@ -3,12 +3,17 @@
 from __future__ import annotations
 
 import io
+import os
+import subprocess
+import sys
+from dataclasses import dataclass
 from pathlib import Path
 
 import pytest
 from rich.console import Console
 
 from synthetic_results import Synthetic, synthetic
+from tapband.cli import main
 from tapband.cli.summary import print_summary
 
 HALF_DIGIT = 0.51e-4
@@ -58,3 +63,65 @@ def test_hostile_names_are_shown_and_not_obeyed() -> None:
     text = "\n".join(printed(synthetic(points=4, taps=11, sources=6, names=names)))
     assert "\x1b" not in text
     assert "[bold red]x[/]: 4 points" in text
+
+
+def test_a_narrow_terminal_loses_no_column(tmp_path: Path) -> None:
+    done = _command(tmp_path, "reduce", COLUMNS="40")
+    assert "R1/P01 " in done.stdout
+    assert "…   " not in done.stdout
+    assert max(len(line.rstrip()) for line in done.stdout.splitlines()[:-1]) <= 80
+
+
+def test_a_terminal_without_unicode_shows_intervals_in_plain_letters(tmp_path: Path) -> None:
+    done = _command(tmp_path, "reduce", PYTHONIOENCODING="ascii")
+    assert "?" not in done.stdout
+    assert " +- 0." in done.stdout
+    assert "target cl +- 0.02: met" in done.stdout
+
+
+def test_output_closed_early_is_no_failure(tmp_path: Path) -> None:
+    for name in ("reduce", "check", "schema"):
+        read, write = os.pipe()
+        os.close(read)
+        assert _command(tmp_path, name, stdout=write) == _Done(code=0, stdout="", stderr="")
+        os.close(write)
+
+
+@pytest.mark.skipif(not Path("/dev/full").exists(), reason="the system has no full device")
+def test_output_without_room_is_said_in_one_line(tmp_path: Path) -> None:
+    said = "tapband: the output cannot be written (no space left on device); write it elsewhere\n"
+    with open("/dev/full", "w") as full:
+        for name in ("reduce", "check", "schema"):
+            assert _command(tmp_path, name, stdout=full.fileno()) == _Done(code=2, stdout="", stderr=said)
+
+
+def test_help_says_where_results_go(capsys: pytest.CaptureFixture[str]) -> None:
+    assert main(["reduce", "--help"]) == 0
+    said = " ".join(capsys.readouterr().out.replace("│", " ").split())
+    assert "Default: CAMPAIGN-results beside the campaign, CAMPAIGN the name of its file without" in said
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class _Done:
+    code: int
+    stdout: str
+    stderr: str
+
+
+def _command(folder: Path, name: str, stdout: int = subprocess.PIPE, **environment: str) -> _Done:
+    """One command on a starter campaign of three points, in a process of its own."""
+    campaign = folder / "demo" / "campaign.toml"
+    if not campaign.exists():
+        assert main(["start", str(campaign.parent), "--quiet"]) == 0
+        table = campaign.with_name("points.csv")
+        lines = [
+            line for line in table.read_text(encoding="utf-8").splitlines(keepends=True) if line[0] != "#"
+        ]
+        table.write_text("".join(lines[:4]), encoding="utf-8")
+    arguments = [] if name == "schema" else [str(campaign)]
+    arguments += ["--trials", "256"] if name == "reduce" else []
+    done = subprocess.run(
+        [sys.executable, "-m", "tapband", name, *arguments], stdout=stdout, stderr=subprocess.PIPE, text=True,
+        encoding="utf-8", timeout=100, check=False, env={**os.environ, **environment},
+    )  # fmt: skip
+    return _Done(code=done.returncode, stdout=done.stdout or "", stderr=done.stderr)

@@ -38,8 +38,15 @@ def test_folder_in_place_of_a_campaign_offers_the_file_inside(tmp_path: Path) ->
     good(tmp_path)
     with pytest.raises(InputError) as caught:
         load(tmp_path)
-    name = tmp_path.name
-    assert str(caught.value) == f"{name}: must be a file; got a folder; give {name}/campaign.toml"
+    assert str(caught.value) == f"{tmp_path}: must be a file; got a folder; give {tmp_path}/campaign.toml"
+
+
+def test_the_folder_one_stands_in_is_named_too(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    good(tmp_path)
+    monkeypatch.chdir(tmp_path)
+    with pytest.raises(InputError) as caught:
+        load(".")
+    assert str(caught.value) == ".: must be a file; got a folder; give campaign.toml"
 
 
 def test_misspelt_campaign_offers_the_nearest_name(tmp_path: Path) -> None:

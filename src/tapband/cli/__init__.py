@@ -1,18 +1,25 @@
 """The command ``tapband``.
 
-Exit status: 0 done, 1 done but a target is missed, 2 bad input, 70 a fault of ours, 130 interrupted.
+Exit status: 0 done, 1 done but a target is missed, 2 bad input or no room for the output,
+70 a fault of ours, 130 interrupted.
 
 Nothing heavy is imported before a command needs it, so that ``--help`` and ``--version`` answer at once.
 """
 
 from __future__ import annotations
 
+import codecs
+import errno
+import os
 import sys
 from collections.abc import Sequence
 
 INTERRUPTED = 130
 BAD_INPUT = 2
 OUR_FAULT = 70
+NO_ROOM = frozenset({errno.ENOSPC, errno.EDQUOT, errno.EFBIG, errno.EIO})
+PLAIN = {"…": "..", "±": "+-", "\N{MINUS SIGN}": "-", "\N{EN DASH}": "-", "°": " deg", "×": "x", "·": "*"}
+"""What a terminal without Unicode shows; every other letter it lacks becomes "?"."""
 
 
 def main(arguments: Sequence[str] | None = None) -> int:
@@ -21,17 +28,27 @@ def main(arguments: Sequence[str] | None = None) -> int:
         return _run(sys.argv[1:] if arguments is None else list(arguments))
     except KeyboardInterrupt:
         return _interrupted()
-    except BrokenPipeError:
+    except (BrokenPipeError, SystemExit):  # the parser of the command line turns the former into the latter
         _drop_output()
         return 0
     except Exception as error:
         return _failed(error)
 
 
+def _plain(error: UnicodeError) -> tuple[str, int]:
+    if not isinstance(error, UnicodeEncodeError):
+        raise error
+    lost = error.object[error.start : error.end]
+    return "".join(PLAIN.get(letter, "?") for letter in lost), error.end
+
+
+codecs.register_error("tapband.plain", _plain)
+
+
 def _run(arguments: list[str]) -> int:
     for stream in (sys.stdout, sys.stderr):
-        if hasattr(stream, "reconfigure"):  # a terminal without Unicode shows "?" instead of failing
-            stream.reconfigure(errors="replace")
+        if hasattr(stream, "reconfigure"):
+            stream.reconfigure(errors="tapband.plain")
     from tapband.cli.app import app
 
     status = app(arguments, prog_name="tapband", standalone_mode=False)
@@ -59,6 +76,11 @@ def _failed(error: Exception) -> int:
         return BAD_INPUT
     if type(error).__name__ == "Abort":
         return _interrupted()
+    if isinstance(error, OSError) and error.errno in NO_ROOM:
+        _drop_output()
+        reason = (error.strerror or "no reason given").lower()
+        print(f"tapband: the output cannot be written ({reason}); write it elsewhere", file=sys.stderr)
+        return BAD_INPUT
     import traceback
 
     traceback.print_exception(error)
@@ -67,7 +89,5 @@ def _failed(error: Exception) -> int:
 
 
 def _drop_output() -> None:
-    """The reader of a pipe has gone; nothing more is written, and Python's own flush at exit stays quiet."""
-    import os
-
+    """Nobody reads on, or there is no room: nothing more is written, and the flush at exit stays quiet."""
     os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())

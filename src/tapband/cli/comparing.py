@@ -95,6 +95,7 @@ def _check_folder(out: Path) -> None:
 
 def print_differences(frame: pd.DataFrame, level: float, console: Console) -> None:
     """Print the differences, what remains in them, and the notes, in 80 columns."""
+    from tapband.cli.terminal import print_table
     from tapband.files.write_text import one_line
 
     pairs = list(dict.fromkeys(zip(frame["a"], frame["b"], strict=True)))
@@ -102,10 +103,10 @@ def print_differences(frame: pd.DataFrame, level: float, console: Console) -> No
     if len(pairs) == 1:
         a, b = (one_line(str(name)) for name in pairs[0])
         _say(console, f"{a} minus {b}, {percent} intervals; * is significant")
-        console.print(_one(frame))
+        print_table(console, _one(frame))
     else:
         _say(console, f"{len(pairs)} pairs, A minus B, {percent} intervals; * is significant")
-        console.print(_many(frame))
+        print_table(console, _many(frame))
     for line in [*_findings(frame), *(str(note) for note in frame.attrs.get("notes", ()))]:
         _say(console, line)
 

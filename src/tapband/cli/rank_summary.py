@@ -7,6 +7,7 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
+from tapband.cli.terminal import print_table
 from tapband.files.write_text import one_line
 from tapband.nouns.errors import QuestionError
 from tapband.questions.rank_order import carriers
@@ -78,19 +79,19 @@ def _coefficient(results: Results, name: str, console: Console) -> None:
         console,
         f"U = {significant(stands, 3)} linearised; with a group or source halved or removed U becomes:",
     )
-    console.print(_shares(groups, "group"))
+    print_table(console, _shares(groups, "group"))
     for note in groups["note"]:
         if note:
             _say(console, f"  {note}")
     sources = _rows(results.tables["source_ranking"], name)
     if len(sources) > len(groups):
-        console.print(_shares(sources.head(SOURCES), "source"))
+        print_table(console, _shares(sources.head(SOURCES), "source"))
     chord = results.campaign.section.chord if results.campaign else float("nan")
     _taps(_rows(results.tables["tap_ranking"], name), chord, console)
     wiring = results.tables["wiring_comparison"]
     rows = wiring[np.asarray(wiring["coefficient"].astype(object) == name)]
     if len(rows):
-        console.print(_wiring(rows))
+        print_table(console, _wiring(rows))
 
 
 def _rows(frame: pd.DataFrame, name: str) -> pd.DataFrame:
@@ -155,7 +156,7 @@ def _taps(rows: pd.DataFrame, chord: float, console: Console) -> None:
             _percent(row["share"]), significant(float(row["if_lost"]), 2),
             significant(float(row["location_leverage"]) * 1e-3 / chord, 2),
         )  # fmt: skip
-    console.print(table)
+    print_table(console, table)
     negative = taps[np.asarray(taps["share"], dtype=float) < -LEAST]
     if len(negative):
         reasons = list(dict.fromkeys(str(note) for note in negative["note"]))

@@ -8,6 +8,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
+from tapband.cli.terminal import print_table
 from tapband.files.write_columns import COEFFICIENTS
 from tapband.files.write_text import one_line
 from tapband.report.headline import Headline, Verdict, coefficients_of, headline, keys, verdicts
@@ -38,9 +39,9 @@ def print_summary(results: Outcome, folder: Path, console: Console) -> None:
     campaign = results.campaign
     title = one_line(campaign.title or campaign.name) if campaign else "results"
     _say(console, f"{title}: {len(frame)} points {kind}, {100 * float(str(level)):g} % intervals")
-    console.print(_table(frame, first))
+    print_table(console, _table(frame, first))
     if others and len(frame) <= ENDS:
-        console.print(_table(frame, others))
+        print_table(console, _table(frame, others))
     for line in [*_targets(results, frame), *_distrust(results, frame, shown)]:
         _say(console, line)
     _say(console, f"report: {folder / 'report.html'}")

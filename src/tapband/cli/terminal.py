@@ -11,18 +11,31 @@ from typing import TYPE_CHECKING
 if TYPE_CHECKING:
     from rich.console import Console
     from rich.progress import Progress
+    from rich.table import Table
 
 WAIT = 0.7
 """Seconds before a progress line appears; shorter work shows none."""
-WIDTH = 80
+LEAST, WIDTH = 60, 80
 
 
 def output() -> Console:
-    """Standard output, at most 80 columns; colours only on a terminal, and none with ``NO_COLOR``."""
+    """Standard output, 60 to 80 columns; colours only on a terminal, and none with ``NO_COLOR``."""
     from rich.console import Console
 
+    class Output(Console):
+        def on_broken_pipe(self) -> None:
+            """Leave it to the command, whose work is done, to end."""
+            raise BrokenPipeError
+
     wide = Console(file=sys.stdout, highlight=False)
-    return Console(file=sys.stdout, highlight=False, width=min(wide.width, WIDTH))
+    return Output(file=sys.stdout, highlight=False, width=max(LEAST, min(wide.width, WIDTH)))
+
+
+def print_table(console: Console, table: Table) -> None:
+    """Print a table at its full 80 columns: a narrower terminal wraps it, and no column is lost."""
+    narrow, console.width = console.width, max(console.width, WIDTH)
+    console.print(table)
+    console.width = narrow
 
 
 class ProgressLine:

@@ -97,8 +97,8 @@ def is_readable(path: Path, name: str, findings: Findings, where: str = "") -> b
         return False
     if folder:
         inside = next((file for file in beside if file.endswith(path.suffix or ".toml")), None)
-        do = f"give {name.rstrip('/')}/{inside}" if inside and not where else "give the file inside it"
-        findings.add(place, "must be a file", got or "a folder", do)
+        do = f"give {path / inside}" if inside and not where else "give the file inside it"
+        findings.add(place if where else str(path), "must be a file", got or "a folder", do)
     elif path.exists():
         findings.add(place, "must be a plain file", got or "something else", "give a plain file")
     else:
