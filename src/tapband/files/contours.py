@@ -16,6 +16,8 @@ from tapband.files.units import LENGTH, quantity
 from tapband.nouns.campaign import Section
 
 FEWEST = 20
+_LEAST, _MOST = 0.005, 20.0
+"""Chords [m] outside of which a unit is more likely wrong than a model so small or so large."""
 _EDGE = 0.1
 """How far from the rearmost point the ends of a contour may lie [chords]."""
 
@@ -29,6 +31,10 @@ def read_chord(part: SectionPart | None, folder: Folder) -> float:
     if chord <= 0.0:
         folder.findings.add(where, "must be above zero", shown(part.chord), 'write for example "400 mm"')
         return nan
+    if not _LEAST <= chord <= _MOST:
+        folder.findings.warn(
+            f"{where}: {shown(part.chord)} is a chord of {chord:.4g} m; see whether its unit is right"
+        )
     return chord
 
 

@@ -11,7 +11,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from tapband.files.acts import Arrangement
-from tapband.files.faults import Findings, RuleError, listed
+from tapband.files.faults import Findings, RuleError, listed, nearest
 from tapband.files.tables import STANDARD, Array, Column, Table, column_unit, need
 from tapband.files.taps import TapList
 from tapband.files.units import ANGLE, NUMBER, PRESSURE, TEMPERATURE, unit
@@ -62,7 +62,7 @@ def find_roles(
     """The columns by role; what is missing, without unit or of the wrong kind is noted."""
     point = need(table, "point", findings)
     alpha = need(table, "alpha", findings)
-    channels = [need(table, name, findings, _why(name, arrangement)) for name in _channels(arrangement)]
+    channels = [_channel(table, name, taps, arrangement, findings) for name in _channels(arrangement)]
     optional = [column for name in OPTIONAL if (column := table.column(name))]
     names = taps.names if taps else ()
     tap_columns = _tap_columns(table, taps, findings)
@@ -87,6 +87,23 @@ def find_roles(
         groups=(point, *groups), factor=np.array([unit.factor for unit in units]),
         shift=np.array([unit.shift for unit in units]), sound=len(findings) == before,
     )  # fmt: skip
+
+
+def _channel(
+    table: Table, name: str, taps: TapList | None, arrangement: Arrangement | None, findings: Findings
+) -> Column | None:
+    """The column of a channel; a misspelt reference may be a word of the campaign file or a column."""
+    why = _why(name, arrangement)
+    found = table.column(name)
+    if found is not None or arrangement is None or name != arrangement.reference:
+        return found or need(table, name, findings, why)
+    taken = {*STANDARD, *(taps.names if taps else ())}
+    near = nearest(name, ["static", "total", "vacuum", *(set(table.names) - taken)])
+    do = 'add the column, or write pressures = "relative to static", "... total" or "... vacuum"'
+    if near:
+        do = f'write pressures = "relative to {near}", or add the column {name}'
+    findings.add(table.file, f"needs the column {name} ({why})", "none of that name", do)
+    return None
 
 
 def _channels(arrangement: Arrangement | None) -> Sequence[str]:
@@ -125,7 +142,9 @@ def _warn_of_odd_units(table: Table, columns: Sequence[Column], findings: Findin
     usual, count = Counter(column.unit for column in columns).most_common(1)[0] if columns else ("", 0)
     odd = [f"{column.name} [{column.unit}]" for column in columns if column.unit != usual]
     if odd and count > 2 * len(odd):
-        findings.warn(f"{table.file}: taps in another unit than the others, which are in {usual}: {listed(odd)}")
+        findings.warn(
+            f"{table.file}: taps in another unit than the others, which are in {usual}: {listed(odd)}"
+        )
 
 
 def _groups(table: Table, arrangement: Arrangement | None, taps: Sequence[str]) -> list[Column]:

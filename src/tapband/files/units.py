@@ -26,6 +26,7 @@ PRESSURE, LENGTH, ANGLE, TEMPERATURE, TIME, NUMBER = (
     "number",
 )
 EXAMPLE = {PRESSURE: "Pa", LENGTH: "mm", ANGLE: "deg", TEMPERATURE: "K", TIME: "s"}
+_OTHER = {PRESSURE: "kPa", LENGTH: "m", ANGLE: "rad", TEMPERATURE: "degC", TIME: "min"}
 _PHRASE = {
     PRESSURE: "a pressure",
     LENGTH: "a length",
@@ -193,7 +194,9 @@ def quantity(value: object, dimension: str, *, also: str = "") -> float:
         return number
     example = f'"{bare(number)} {EXAMPLE[dimension]}"' + (f" or {also}" if also else "")
     if not name:
-        raise RuleError("needs a unit", shown(value), f"write {example}")
+        either = f'"{bare(number)} {EXAMPLE[dimension]}" or "{bare(number)} {_OTHER[dimension]}"'
+        do = f"write the unit that is meant, as in {either}" + (f", or {also}" if also else "")
+        raise RuleError("needs a unit", shown(value), do)
     if name.startswith("%"):
         raise RuleError(f"must be {_PHRASE[dimension]}", shown(value), f"write {example}")
     try:
