@@ -10,6 +10,7 @@ import pytest
 from numpy.typing import NDArray
 from scipy.special import ndtr
 
+import tapband
 from campaigns import campaign, every_kind, size, source
 from tapband.nouns.plan import Limit, Plan
 from tapband.nouns.source import COMMON, INDEPENDENT, Shape, Source
@@ -133,3 +134,14 @@ def test_a_limit_reaches_points_within_what_counts_as_one_angle() -> None:
         "limit[3] on cm: no point in its range; nothing was decided",
         "limit[4]: cl_ref is not computed here; nothing was decided",
     ]
+
+
+@pytest.mark.parametrize("level", [0.005, 0.95, 0.9999])
+def test_regions_are_finite_at_any_level_and_few_degrees_of_freedom(level: float) -> None:
+    """A warning of NumPy (a root below zero) would fail the test too."""
+    few = source("few", "static pressure", size(6.0, dof=2.0))
+    drift = source("drift", "total pressure", size(9.0, Shape.RECTANGULAR))
+    results = tapband.reduce(campaign((few, drift), level=level), trials=256)
+    ratio = results.regions.select_dtypes("number").to_numpy()
+    assert len(ratio) > 0
+    assert np.isfinite(ratio).all()

@@ -115,7 +115,7 @@ class ReductionPart(Part):
 class IntervalsPart(Part):
     """The level of the intervals and the Monte Carlo plan."""
 
-    level: float = example(0.95, "Coverage probability.", default=0.95, gt=0.0, lt=1.0)
+    level: float = example(0.95, "Coverage probability.", default=0.95, gt=0.0, le=0.9999)
     trials: Quantity = example("auto", '"auto", a number, or "plain:N".', default="auto")
     seed: int = example(7, "Seed of the Monte Carlo draws.", default=1, ge=0, lt=2**63)
 

@@ -91,15 +91,18 @@ def _of_pair(
     directions = whitened([s[points][:, [i, j]] for s in latents.sensitivity], covariance[points])
     k = factor(directions, latents.dof[:, points], level)
     change = change_of_share(families, directions, k)
-    # The density of r² at k² is ½ exp(−k²/2).
-    slight = np.sqrt(k * k - 2.0 * np.where(np.abs(change) > SLIGHT, 0.0, change) * np.exp(0.5 * k * k))
+    large = np.abs(change) > min(SLIGHT, 0.2 * (1.0 - level))  # else more than a fifth of what lies outside
+    # The density of r² at k² is ½ exp(−k²/2); few degrees of freedom make k so large that it says nothing.
+    square = k * k - 2.0 * np.where(large, 0.0, change) * np.exp(np.minimum(0.5 * k * k, 100.0))
+    large |= (np.abs(change) > SAME) & (square <= 0.0)
+    slight = np.sqrt(np.maximum(square, 0.0))
     centre = latents.estimate[points][:, [i, j]]
     shift, ratio = (part[:, [i, j]] for part in moments(reduced))
     left = MOST
     found = []
     for n, p in enumerate(points.tolist()):
         here, around, factor_, method = centre[n], covariance[p], float(k[n]), LINEARISED
-        if abs(change[n]) > SLIGHT:
+        if large[n]:
             own = [one[n] for one in directions]
             factor_, method = drawn_factor(families, own, p, level, seed), SHAPES
         elif abs(change[n]) > SAME:
