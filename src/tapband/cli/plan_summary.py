@@ -9,7 +9,6 @@ import numpy as np
 
 from tapband.cli.terminal import print_table
 from tapband.files.write_text import one_line
-from tapband.report.rounding import significant
 
 if TYPE_CHECKING:
     from rich.console import Console
@@ -20,6 +19,8 @@ if TYPE_CHECKING:
 LINES = 10
 """Most remarks shown."""
 NAME = 30
+NUMBER = 9
+"""Width of a number: names give way to it."""
 
 
 def print_plan(plan: Plan, folder: Path, console: Console) -> None:
@@ -45,8 +46,9 @@ def _grid(*columns: tuple[str, bool]) -> Table:
     table = Table(box=box.SIMPLE_HEAD, pad_edge=False, padding=(0, 1))
     for name, number in columns:
         table.add_column(
-            name, justify="right" if number else "left", max_width=NAME, no_wrap=True, overflow="ellipsis"
-        )
+            name, justify="right" if number else "left", max_width=NAME, min_width=NUMBER if number else None,
+            no_wrap=True, overflow="ellipsis",
+        )  # fmt: skip
     return table
 
 
@@ -57,9 +59,9 @@ def _allowances(plan: Plan) -> Table:
     table = _grid(("source", False), ("declared", True), ("allowed", True), ("unit", False), ("binds", False))
     for row in frame.to_dict("records"):
         allowed = float(row["allowed"])
-        shown = "none" if np.isnan(allowed) else "any" if np.isinf(allowed) else significant(allowed)
+        shown = "none" if np.isnan(allowed) else "any" if np.isinf(allowed) else f"{allowed:.3g}"
         binds = f"{row['binding_coefficient']} {row['binding_point']}".strip() or str(row["reason"])
-        cells = [one_line(str(row["source"])), significant(float(row["declared"])), shown, str(row["unit"])]
+        cells = [one_line(str(row["source"])), f"{float(row['declared']):.3g}", shown, str(row["unit"])]
         table.add_row(*(Text(cell.replace("\N{MINUS SIGN}", "-")) for cell in [*cells, one_line(binds)]))
     return table
 

@@ -49,7 +49,7 @@ def _headline(sized: Sized) -> str:
     missed = int(np.sum(~sized.met))
     ratio = sized.declared.headline / sized.basis.demands.limit
     worst = int(np.argmax(np.where(np.isfinite(ratio), ratio, np.inf)))
-    where = f"the nearest is {place(sized, worst)} with U {ratio[worst]:.3g} times its target"
+    where = f"the nearest is {place(sized, worst)} with U {ratio[worst]:.4g} times its target"
     if not missed:
         return f"As declared, every target is met; {where}."
     return f"As declared, {missed} of {ratio.size} intervals are wider than their targets; {where}."
@@ -73,13 +73,13 @@ def _selection(sized: Sized) -> list[str]:
     if chosen.choice is not None:
         names = "; ".join(choices.options[j].name for j in chosen.choice.chosen)
         first = f"The cheapest options that meet every target cost {chosen.choice.cost:g}: {names}."
-        return [first, f"What binds is {where}: U is {ratio:.3g} times its target.", *said]
+        return [first, f"What binds is {where}: U is {ratio:.4g} times its target.", *said]
     assert chosen.smallest is not None
     names = "; ".join(choices.options[j].name for j in chosen.smallest.chosen)
     expanded = ratio * sized.basis.demands.limit[chosen.binding]
     return [
         "Infeasible: no set of options meets every target.",
-        f"The smallest worst ratio that can be reached is {ratio:.3g}, at a cost of {chosen.smallest.cost:g}, with "
+        f"The smallest worst ratio that can be reached is {ratio:.4g}, at a cost of {chosen.smallest.cost:g}, with "
         f"{names}; what binds is {where} with U = {expanded:.3g}.",
         *said,
     ]
@@ -100,9 +100,9 @@ def _wiring(sized: Sized) -> list[str]:
     if not sized.wiring.shared:
         return ["Wiring: no source is shared by module, so every wiring gives the same intervals."]
     judged = {one.name: one.worst for one in sized.wiring.wirings}
-    others = ", ".join(f"{name} {worst:.3g}" for name, worst in judged.items() if name != "found")
+    others = ", ".join(f"{name} {worst:.4g}" for name, worst in judged.items() if name != "found")
     return [
-        f"Wiring: the worst ratio of U to target is {judged['found']:.3g} with the wiring found; {others}."
+        f"Wiring: the worst ratio of U to target is {judged['found']:.4g} with the wiring found; {others}."
     ]
 
 
