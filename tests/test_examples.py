@@ -17,7 +17,7 @@ SAYS = {
     "polar_fit": ("cl_slope", "alpha_zero_lift", "as the sources that change predict", "polar.svg"),
     "sizing_a_scanner": ("17 kPa modules", "worst_ratio", "headroom"),
     "own_stage": ("cl: ", "cm: ", "by Monte Carlo"),
-    "many_campaigns": ("better scanner", 'needs a unit; got "0.03"; write "0.03 deg"'),
+    "many_campaigns": ("better scanner", 'needs a unit; got "0.03"; write the unit that is meant'),
 }
 LOOP = "many_campaigns"
 LONGEST = 45

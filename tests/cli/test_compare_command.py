@@ -91,4 +91,7 @@ def test_a_tolerance_pairs_angles_that_a_smaller_one_leaves_out(
 
 def test_a_tolerance_without_a_unit_is_one_line(started: Path, capsys: pytest.CaptureFixture[str]) -> None:
     assert main(["compare", str(started), "R1", "R2", "--within", "0.1"]) == 2
-    assert capsys.readouterr().err == 'within: needs a unit; got "0.1"; write "0.1 deg"\n'
+    assert (
+        capsys.readouterr().err
+        == 'within: needs a unit; got "0.1"; write the unit that is meant, as in "0.1 deg" or "0.1 rad"\n'
+    )

@@ -80,7 +80,10 @@ MISUSES: list[tuple[Callable[[], object], str]] = [
         "compare: two runs must hold one config each, or some in common; "
         'got "R1" with clean and "R4" with flap, trip; compare configs',
     ),
-    (lambda: results().compare("R1", "R2", "0.1"), 'within: needs a unit; got "0.1"; write "0.1 deg"'),
+    (
+        lambda: results().compare("R1", "R2", "0.1"),
+        'within: needs a unit; got "0.1"; write the unit that is meant, as in "0.1 deg" or "0.1 rad"',
+    ),
     (lambda: results().compare("R1", "R2", "3 Pa"), 'within: must be an angle; got "3 Pa"; write "3 deg"'),
     (
         lambda: results().compare("R1", "R2", -1.0),
