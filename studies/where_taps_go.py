@@ -58,6 +58,7 @@ SOURCES = (
 class Found:
     """By layout: places τ (n,), rms error over target (sections, angles, 3), share held (3,)."""
 
+    angles: tuple[float, ...]
     tau: dict[str, Array]
     error: dict[str, Array]
     held: dict[str, Array]
@@ -94,7 +95,7 @@ def find(draws: int = 400, angles: Sequence[float] = BETWEEN, iterations: int = 
         parts = [_simulated(section_of(*shape), places, angles, draws) for shape in OTHERS]
         error[name] = np.array([rms for rms, _ in parts])
         held[name] = np.mean([share for _, share in parts], axis=0)
-    return Found(tau=tau, error=error, held=held)
+    return Found(angles=tuple(angles), tau=tau, error=error, held=held)
 
 
 def _simulated(
@@ -143,7 +144,7 @@ def draw(found: Found, path: Path) -> None:
     """Errors against angle, the worst section; and the places of the taps."""
     with drawn(path, 2, width=8.0) as (left, right):
         for i, (name, error) in enumerate(found.error.items()):
-            left.semilogy(BETWEEN[: error.shape[1]], error.max(axis=(0, 2)), label=name, **look(i))
+            left.semilogy(found.angles, error.max(axis=(0, 2)), label=name, **look(i))
             x = np.sign(found.tau[name]) * found.tau[name] ** 2
             right.plot(x, np.full(x.size, float(-i)), **{**look(i), "linestyle": "none"})
         left.set(xlabel="angle of attack, deg", ylabel="worst rms error over its target")

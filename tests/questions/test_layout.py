@@ -13,11 +13,12 @@ from scipy.interpolate import CubicSpline
 
 from campaigns import size, source
 from exact_sections import section_of
-from plans import forecast, planned, targets
+from plans import planned
 from tapband import face
 from tapband.experiment.bounds import spacing_half_widths
 from tapband.experiment.contour import Contour
 from tapband.experiment.tap_flows import arc_length, interpolant_weights, tap_flow, tau_of
+from tapband.files.frames_plan import layout_tables
 from tapband.nouns.errors import QuestionError
 from tapband.nouns.plan import Layout
 from tapband.nouns.source import COMMON, INDEPENDENT
@@ -42,7 +43,7 @@ def test_places_found_beat_plain_spacing_on_three_other_sections_and_intervals_h
     tmp_path: Path, monkeypatch: pytest.MonkeyPatch
 ) -> None:
     module = study(monkeypatch)
-    found = module.find(draws=40, iterations=30)
+    found = module.find(draws=16, angles=(-1.0, 5.0, 11.0), iterations=12)
     module.conclude(found)  # the wanted 10 % and 93 %
     module.draw(found, tmp_path / "figure.svg")
     assert (tmp_path / "figure.svg").stat().st_size > 10_000
@@ -68,8 +69,12 @@ def test_layout_keeps_spacing_rearmost_place_and_fixed_taps() -> None:
         assert found.s[found.names.index(name)] == pytest.approx(campaign.taps.s[place], abs=1e-12)
 
 
-def test_layouts_are_judged_for_other_numbers_too_and_more_taps_do_better() -> None:
-    found = small()
+@pytest.fixture(scope="module")
+def found() -> LayoutChoice:
+    return small()
+
+
+def test_layouts_are_judged_for_other_numbers_too_and_more_taps_do_better(found: LayoutChoice) -> None:
     numbers = sorted({one.taps for one in found.judged if one.layout == "root"})
     assert len(numbers) > 4
     errors = {one.taps: one.error for one in found.judged if one.layout == "root"}
@@ -166,12 +171,9 @@ def test_a_frame_leaves_taken_places_where_they_are() -> None:
     assert np.all(np.diff(tau) > 0.0)
 
 
-def test_plan_holds_layout_and_what_the_number_of_taps_buys() -> None:
-    plan = face.size(
-        planned(HOLES, layout=Layout(taps=15, rearmost=0.95), ahead=forecast((2.0,)), wanted=targets())
-    )
-    assert plan.tables["layout"].columns.tolist()[:4] == ["tap", "surface", "x", "y"]
-    assert set(plan.tables["layout"]["surface"]) == {"upper", "lower"}
-    table = plan.tables["layouts"]
-    assert set(table["layout"]) == {"found", "root", "cosine", "present"}
-    assert any(note.startswith("Taps: 15 at the places found") for note in plan.notes)
+def test_tables_hold_the_layout_and_what_the_number_of_taps_buys(found: LayoutChoice) -> None:
+    layout, judged = layout_tables(found)
+    assert layout.columns.tolist()[:4] == ["tap", "surface", "x", "y"]
+    assert layout["surface"].tolist() == ["upper" if s >= 0.0 else "lower" for s in found.s]
+    assert judged.columns.tolist() == ["taps", "layout", "worst_ratio", "rms_error_ratio"]
+    assert judged["taps"].is_monotonic_increasing
