@@ -18,8 +18,8 @@ if TYPE_CHECKING:
 
 LINES = 10
 """Most remarks shown."""
-NAME = 30
-NUMBER = 9
+NAME = 25
+NUMBER = 8
 """Width of a number: names give way to it."""
 
 
