@@ -60,7 +60,8 @@ def _allowances(plan: Plan) -> Table:
     for row in frame.to_dict("records"):
         allowed = float(row["allowed"])
         shown = "none" if np.isnan(allowed) else "any" if np.isinf(allowed) else f"{allowed:.3g}"
-        binds = f"{row['binding_coefficient']} {row['binding_point']}".strip() or str(row["reason"])
+        point = str(row["binding_point"]).removeprefix("forecast/")
+        binds = f"{row['binding_coefficient']} {point}".strip() or str(row["reason"])
         cells = [one_line(str(row["source"])), f"{float(row['declared']):.3g}", shown, str(row["unit"])]
         table.add_row(*(Text(cell.replace("\N{MINUS SIGN}", "-")) for cell in [*cells, one_line(binds)]))
     return table
