@@ -17,6 +17,7 @@ from __future__ import annotations
 import sys
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
+from functools import lru_cache
 from pathlib import Path
 
 import numpy as np
@@ -92,10 +93,13 @@ def find(draws: int = 400, angles: Sequence[float] = BETWEEN, iterations: int = 
     }
     error, held = {}, {}
     for name, places in tau.items():
-        parts = [_simulated(section_of(*shape), places, angles, draws) for shape in OTHERS]
+        parts = [_simulated(_section(*shape), places, angles, draws) for shape in OTHERS]
         error[name] = np.array([rms for rms, _ in parts])
         held[name] = np.mean([share for _, share in parts], axis=0)
     return Found(angles=tuple(angles), tau=tau, error=error, held=held)
+
+
+_section = lru_cache(section_of)
 
 
 def _simulated(

@@ -20,12 +20,12 @@ from tapband.experiment.contour import Contour
 from tapband.experiment.tap_flows import arc_length, interpolant_weights, tap_flow, tau_of
 from tapband.files.frames_plan import layout_tables
 from tapband.nouns.errors import QuestionError
-from tapband.nouns.plan import Layout
+from tapband.nouns.plan import ExpectedTable, Layout
 from tapband.nouns.source import COMMON, INDEPENDENT
 from tapband.questions.basis import basis_of
 from tapband.questions.layout import LayoutChoice, apart, cosine_spaced, layout_choice, root_spaced
 from tapband.questions.layout_search import Frame
-from tapband.questions.new_taps import tap_names, with_taps, worst_interval
+from tapband.questions.new_taps import expected_at, tap_names, with_taps, worst_interval
 from tapband.reduction import assemble
 
 HOLES = (
@@ -87,13 +87,27 @@ def test_interval_of_a_layout_is_that_of_the_campaign_with_these_taps() -> None:
     basis = basis_of(planned(HOLES))
     # The present taps put in again: same places, same intervals.
     ratio = float(np.max(basis.expanded() / basis.demands.limit))
-    assert worst_interval(basis, np.sort(basis.assembled.s)) == pytest.approx(ratio, rel=1e-9)
+    s = np.sort(basis.assembled.s)
+    assert worst_interval(basis, s, expected_at(basis, s)) == pytest.approx(ratio, rel=1e-9)
+
+
+def test_a_table_of_expected_pressures_is_splined_between_its_taps() -> None:
+    basis = basis_of(planned(HOLES))
+    cp = expected_at(basis, basis.assembled.s)
+    table = ExpectedTable(alpha=np.array(basis.raw.alpha), cp=cp)
+    campaign = planned(HOLES)
+    assert campaign.plan.forecast is not None
+    ahead = replace(campaign.plan.forecast, expected=table)
+    own = basis_of(replace(campaign, plan=replace(campaign.plan, forecast=ahead)))
+    between = 0.5 * (basis.assembled.s[27:-3] + basis.assembled.s[28:-2])
+    # Behind the nose 41 taps carry the flow to 0.02 in Cp between them.
+    assert expected_at(own, between) == pytest.approx(expected_at(basis, between), abs=0.02)
 
 
 def test_new_taps_take_modules_in_turn_and_the_scale_of_their_neighbour() -> None:
     basis = basis_of(planned(HOLES))
     s = np.linspace(-0.9, 0.9, 9)
-    made = with_taps(basis, s, [f"X{i}" for i in range(9)])
+    made = with_taps(basis, s, [f"X{i}" for i in range(9)], expected_at(basis, s))
     assert made.taps.columns["module"] == ("M1", "M2", "M3", "M4", "M1", "M2", "M3", "M4", "M1")
     assert np.all(made.taps.full_scale == 130_000.0)
     assert made.points is not None

@@ -8,7 +8,7 @@ zeros, and a layout that seeks them starves the nose.
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from itertools import pairwise
 
@@ -22,7 +22,7 @@ from tapband.nouns.errors import QuestionError
 from tapband.nouns.plan import Layout
 from tapband.questions.basis import Basis
 from tapband.questions.layout_search import Frame, Judge, searched
-from tapband.questions.new_taps import tap_names, worst_interval
+from tapband.questions.new_taps import expected_at, tap_names, worst_interval
 from tapband.questions.tap_errors import tap_errors
 
 Array = NDArray[np.float64]
@@ -81,13 +81,12 @@ def layout_choice(
     contour = basis.assembled.contour
     s = apart(contour, arc_length(contour, tau), frame.at, wanted.smallest_spacing)
     x, y = contour.point(s)
-    layouts = [("found", s), *((name, arc_length(contour, row)) for name, row in plain.items())]
-    judged = [_judged(basis, judge, name, one) for name, one in layouts]
-    judged += _ladder(basis, judge, wanted, end, tau_of(contour, s))
     live = basis.assembled.nominal.live.any(axis=0)
-    present = np.sort(basis.assembled.s[live])
-    judged.append(_judged(basis, judge, "present", present))
-    return LayoutChoice(s=s, names=tap_names(s, _fixed(basis, wanted)), x=x, y=y, judged=tuple(judged))
+    layouts = [("found", s), *((name, arc_length(contour, row)) for name, row in plain.items())]
+    layouts += _ladder(basis, wanted, end, tau_of(contour, s))
+    layouts.append(("present", np.sort(basis.assembled.s[live])))
+    names = tap_names(s, _fixed(basis, wanted))
+    return LayoutChoice(s=s, names=names, x=x, y=y, judged=_judged(basis, judge, layouts))
 
 
 def root_spaced(count: int, end: tuple[float, float]) -> Array:
@@ -230,14 +229,18 @@ def _positions(start: Array, inner: list[float], shift: int) -> Indices | None:
     return np.array(at, dtype=np.int64) if all(b > a for a, b in pairwise(at)) else None
 
 
-def _judged(basis: Basis, judge: Judge, name: str, s: Array) -> Judged:
-    error = judge.worst(tau_of(basis.assembled.contour, s))
-    return Judged(taps=s.size, layout=name, interval=worst_interval(basis, s), error=error)
+def _judged(basis: Basis, judge: Judge, layouts: Sequence[tuple[str, Array]]) -> tuple[Judged, ...]:
+    """Every layout judged; the flow is solved for all their taps at once."""
+    expected = expected_at(basis, np.concatenate([s for _, s in layouts]))
+    ends = np.cumsum([s.size for _, s in layouts])
+    found = []
+    for (name, s), cp in zip(layouts, np.split(expected, ends[:-1], axis=1), strict=True):
+        error = judge.worst(tau_of(basis.assembled.contour, s))
+        found.append(Judged(taps=s.size, layout=name, interval=worst_interval(basis, s, cp), error=error))
+    return tuple(found)
 
 
-def _ladder(
-    basis: Basis, judge: Judge, wanted: Layout, end: tuple[float, float], found: Array
-) -> list[Judged]:
+def _ladder(basis: Basis, wanted: Layout, end: tuple[float, float], found: Array) -> list[tuple[str, Array]]:
     """Other numbers of taps, spread as those found, and in the plain layouts."""
     contour = basis.assembled.contour
     part = np.linspace(0.0, 1.0, found.size)
@@ -248,5 +251,5 @@ def _ladder(
         for name, tau in rows.items():
             s = arc_length(contour, tau)
             if np.min(np.diff(s)) >= wanted.smallest_spacing or name != "found":
-                result.append(_judged(basis, judge, name, s))
+                result.append((name, s))
     return result

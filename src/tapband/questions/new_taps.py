@@ -9,7 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.interpolate import CubicSpline
 
-from tapband.experiment.expected import expected_readings
+from tapband.experiment.expected import expected_cp, expected_readings
 from tapband.nouns.campaign import Campaign
 from tapband.nouns.plan import ExpectedTable
 from tapband.probability.linearised import propagate
@@ -37,16 +37,32 @@ def tap_names(s: Array, fixed: Sequence[tuple[str, float]]) -> tuple[str, ...]:
     return tuple(names)
 
 
-def with_taps(basis: Basis, s: Array, names: Sequence[str]) -> Campaign:
-    """The campaign planned for with taps at rising arc lengths s (n,) [chords], and its expected readings.
+def expected_at(basis: Basis, s: Array) -> Array:
+    """Expected Cp (A, n) at arc lengths s (n,) [chords], any order; A the angles of the forecast, as stated.
+
+    A table of expected pressures is splined along the contour between its taps.
+    """
+    forecast = basis.campaign.plan.forecast
+    assert forecast is not None
+    if forecast.expected is None:
+        taps = replace(basis.campaign.taps, s=s)
+        return expected_cp(replace(basis.campaign, taps=taps)).cp
+    live = np.flatnonzero(basis.assembled.nominal.live.any(axis=0))
+    order = live[np.argsort(basis.assembled.s[live], kind="stable")]
+    place = basis.assembled.s[order]
+    known = expected_cp(basis.campaign).cp[:, order]
+    return np.asarray(CubicSpline(place, known, axis=1)(np.clip(s, place[0], place[-1])))
+
+
+def with_taps(basis: Basis, s: Array, names: Sequence[str], cp: Array) -> Campaign:
+    """The campaign planned for with taps at rising arc lengths s (n,) [chords] that are to read Cp (A, n).
 
     A new tap takes the full scale and the groups of the tap nearest to it along the contour, but for modules,
-    which it takes in turn; a table of expected pressures is splined along the contour.
+    which it takes in turn.
     """
     campaign, contour = basis.campaign, basis.assembled.contour
     live = np.flatnonzero(basis.assembled.nominal.live.any(axis=0))
-    old = basis.assembled.s[live]
-    nearest = live[np.argmin(np.abs(s[:, None] - old), axis=1)].tolist()
+    nearest = live[np.argmin(np.abs(s[:, None] - basis.assembled.s[live]), axis=1)].tolist()
     columns = {
         name: _in_turn(values, live.tolist(), s.size)
         if name == "module"
@@ -58,16 +74,11 @@ def with_taps(basis: Basis, s: Array, names: Sequence[str]) -> Campaign:
         campaign.taps, names=tuple(names), s=s, x=x, y=y, upper=s >= 0.0,
         excluded=np.zeros(s.size, dtype=np.bool_), full_scale=campaign.taps.full_scale[nearest], columns=columns,
     )  # fmt: skip
-    plan = campaign.plan
-    assert plan.forecast is not None
-    if plan.forecast.expected is not None:
-        table = plan.forecast.expected
-        order = live[np.argsort(old, kind="stable")]
-        cp = CubicSpline(basis.assembled.s[order], table.cp[:, order], axis=1)
-        inside = np.clip(s, basis.assembled.s[order[0]], basis.assembled.s[order[-1]])
-        plan = replace(
-            plan, forecast=replace(plan.forecast, expected=ExpectedTable(alpha=table.alpha, cp=cp(inside)))
-        )
+    forecast = campaign.plan.forecast
+    assert forecast is not None
+    order = np.argsort(forecast.alpha)
+    table = ExpectedTable(alpha=np.array(forecast.alpha)[order], cp=cp[order])
+    plan = replace(campaign.plan, forecast=replace(forecast, expected=table))
     campaign = replace(campaign, taps=taps, plan=plan)
     return replace(campaign, points=expected_readings(campaign))
 
@@ -77,9 +88,9 @@ def _in_turn(values: Sequence[str], live: Sequence[int], count: int) -> tuple[st
     return tuple(groups[i % len(groups)] for i in range(count))
 
 
-def worst_interval(basis: Basis, s: Array) -> float:
-    """The largest ratio of linearised interval to target with taps at rising arc lengths s (n,) [chords]."""
-    campaign = with_taps(basis, s, [f"tap {i + 1}" for i in range(s.size)])
+def worst_interval(basis: Basis, s: Array, cp: Array) -> float:
+    """The largest ratio of linearised interval to target with taps at rising arc lengths s (n,) reading Cp (A, n)."""
+    campaign = with_taps(basis, s, [f"tap {i + 1}" for i in range(s.size)], cp)
     points = campaign.points
     assert points is not None
     problem = assemble(campaign).problem
