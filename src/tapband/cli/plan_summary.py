@@ -18,7 +18,7 @@ if TYPE_CHECKING:
 
 LINES = 10
 """Most remarks shown."""
-NAME = 25
+NAME = 21
 NUMBER = 8
 """Width of a number: names give way to it."""
 
