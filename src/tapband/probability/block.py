@@ -49,8 +49,10 @@ _PLAIN_LEAST = 1e5
 _MARGIN = 1.4
 """Trials beyond those that an estimate asks for, so that the next rarely asks again."""
 _ROUNDS = 6
-_HIDDEN = 12.0
-"""A probe at 3 standard deviations sees up to 7 times the pilot's root mean square of a smooth difference."""
+_HALF = 0.5
+"""Share of δ below which nothing that a probe sees can matter."""
+_HIDDEN = 20.0
+"""The farthest probe sees up to 14 times the pilot's root mean square of a smooth difference (a cubic)."""
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -101,14 +103,14 @@ def process(model: Model, points: range, chosen: Sequence[Choice], plan: Plan) -
     own = _checked(model, points, [chosen[point] for point in points], plan)
     rows = np.array([choice.integrated for choice in own], dtype=np.bool_)
     hard = np.array([choice.line for choice in own], dtype=np.bool_)
-    far = _probed(model, block, rows | hard)
+    far, rough = _probed(model, block, rows | hard)
     ways: list[tuple[_Stage, range]] = []
     need = {method: np.full(rows.shape, np.inf) for method in _COST}
     for some in runs(points, [(choice.out, choice.normal) for choice in own]):
         place = block.places(some)
         if (rows & ~block.plain)[place].any():
             sampler = _integrating(model, own[place.start], plan.level)
-            stage = _Stage(model, plan, block, "integrated", sampler, own[place.start].out, far)
+            stage = _Stage(model, plan, block, "integrated", sampler, own[place.start].out, far, rough)
             need["integrated"][place] = stage.pilot(some, (rows & ~block.plain)[place])
             ways.append((stage, some))
     hard = (hard | (rows & (need["integrated"] > _DEAR))) & ~block.plain
@@ -116,7 +118,7 @@ def process(model: Model, points: range, chosen: Sequence[Choice], plan: Plan) -
     along = {p: way for p, way in zip(points, lines, strict=True) if way is not None}
     for some in runs(points, [None if way is None else way.key for way in lines]):
         if some.start in along:
-            stage = _Stage(model, plan, block, "line", _lining(model, along), (), far)
+            stage = _Stage(model, plan, block, "line", _lining(model, along), (), far, rough)
             place = block.places(some)
             need["line"][place] = stage.pilot(some, hard[place])
             ways.append((stage, some))
@@ -162,12 +164,16 @@ def _checked(model: Model, points: range, own: list[Choice], plan: Plan) -> list
     ]
 
 
-def _probed(model: Model, block: Block, rows: Mask) -> Array:
-    """Largest difference to the linear model far out (Pb, m); rows that are refused there are left to plain."""
-    y, linear = probe(model, block.points)
-    far = np.abs(y - linear).max(axis=1)
-    block.plain[rows & ~np.isfinite(far)] = True
-    return np.where(rows & np.isfinite(far), far, 0.0)
+def _probed(model: Model, block: Block, rows: Mask) -> tuple[Array, Mask]:
+    """Largest difference to the linear model far out (Pb, m), and whether that is not smooth.
+
+    Rows that are refused there are left to plain trials.
+    """
+    far, rough = probe(model, block.points)
+    good = rows & np.isfinite(far + rough)
+    block.plain[rows & ~good] = True
+    u = model.u[block.points.start : block.points.stop]
+    return np.where(good, far, 0.0), good & (rough > _HALF * tolerance(u))
 
 
 def _integrating(model: Model, choice: Choice, level: float) -> Sampler:
@@ -199,14 +205,16 @@ class _Stage:
     out: tuple[int, ...]
     """Families integrated out."""
     far: Array
-    """What the probes saw, (Pb, m) of the block."""
+    """What the probes saw (Pb, m) of the block, and whether it was not smooth."""
+    rough: Mask
 
     def pilot(self, points: range, rows: Mask) -> Array:
         """Tiles (Pb, m) that rows need beyond the pilot: 0 where it sufficed, inf where plain is cheaper."""
         got = self._estimate(points, rows, Tiles(seed=self.plan.seed, size=FINE, count=FINE))
-        far = self.far[self.block.places(points)]
+        place = self.block.places(points)
+        far, rough = self.far[place], self.rough[place]
         delta = tolerance(self.model.u[points.start : points.stop])
-        wary = rows & (far > _HIDDEN * got.scatter) & (far > 0.5 * delta)
+        wary = rows & (rough | ((far > _HIDDEN * got.scatter) & (far > _HALF * delta)))
         need = np.where(rows, self._need(points, got), np.inf)
         good = rows & (need == 0.0) & ~wary
         self.block.store(self.model, points, good, got, self.method)

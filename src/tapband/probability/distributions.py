@@ -123,8 +123,9 @@ def log_coefficients(shape: Shape, top: float = 0.0) -> tuple[float, float, floa
         case Shape.RECTANGULAR:
             widths = (sqrt(3.0), 0.0)
         case _:
+            beta = top if shape is Shape.TRAPEZOIDAL else 0.0
             half = 0.5 * divisor_of(shape, top)
-            widths = (half * (1.0 + top), half * (1.0 - top))
+            widths = (half * (1.0 + beta), half * (1.0 - beta))
     four, six, eight = (sum(w**n for w in widths) * c for n, c in zip((4, 6, 8), sine, strict=True))
     return four, six, eight
 

@@ -174,7 +174,9 @@ class _Pair:
         determinant = self.f_high * self.rise - self.f_low * self.fall
         safe = np.where(determinant > 0.0, determinant, np.inf)
         extra = (..., *(None,) * (held.ndim - safe.ndim))
-        f_low, f_high, rise, fall = (v[extra] / safe[extra] for v in (self.f_low, self.f_high, self.rise, self.fall))
+        f_low, f_high, rise, fall = (
+            v[extra] / safe[extra] for v in (self.f_low, self.f_high, self.rise, self.fall)
+        )
         return tilt * f_high - held * fall, tilt * f_low - held * rise
 
     def spreads(self, curve: Curve, below: Seen, above: Seen) -> tuple[Array, Array]:

@@ -27,7 +27,8 @@ Mask = NDArray[np.bool_]
 def line(model: Model, points: range, rows: Mask, along: Sequence[Direction], tiles: Tiles) -> Trials:
     """Trials in which one direction a point is integrated out, numerically; directions of one key.
 
-    Moments are taken along the line by its Gauss rule, so that they are means of conditional means.
+    Moments are taken along the line by its Gauss rule, exactly for the polynomial through the nodes; what that
+    leaves of the trial itself is added, so that they are unbiased.
     """
     shape, top = along[0].shape, along[0].top
     nodes, weights = gauss_rule(shape, top)
@@ -45,10 +46,15 @@ def line(model: Model, points: range, rows: Mask, along: Sequence[Direction], ti
     away, away0 = values - y0, foot - y0
     linear = away0 + nodes[:, None, None, None] * np.where(good, slope, 0.0)
     left, weight = away - linear, weights[:, None, None, None]
+    powers = _combined(quartic, values - y0)
+    fitted = powers[4]
+    for coefficient in powers[3::-1]:
+        fitted = coefficient + eta[:, :1] * fitted
+    own = y - y0
     return Trials(
         smoothing=Line(
             base=NormalBase() if shape is Shape.NORMAL else ShapeBase(shape, top),
-            powers=_combined(quartic, values),
+            powers=np.concatenate([powers[:1] + y0, powers[1:]]),
             parabola=_combined(parabola, values),
             inside=1.1 * float(nodes[-1]),
             eta=eta[:, :1],
@@ -56,8 +62,8 @@ def line(model: Model, points: range, rows: Mask, along: Sequence[Direction], ti
             linear=foot,
             slope=np.abs(slope),
         ),
-        shift=(weight * left).sum(axis=0),
-        square=(weight * left * (away + linear)).sum(axis=0),
+        shift=(weight * left).sum(axis=0) + (own - fitted),
+        square=(weight * left * (away + linear)).sum(axis=0) + (own - fitted) * (own + fitted),
         controls=_beside_line(x, eta[:, :1], axes, along),
         scatter=np.sqrt((weight * left * left).sum(axis=0).mean(axis=-1)),
         refused=refused,

@@ -37,7 +37,7 @@ from tapband.probability.distributions import (
 Array = NDArray[np.float64]
 Rows = NDArray[np.intp]
 
-_LAST = (6.5, 9.0, 13.0, 20.0, 32.0, 64.0, 128.0, 256.0, 600.0)
+_LAST = (6.5, 9.0, 13.0, 20.0, 32.0, 64.0, 128.0, 256.0, 600.0, 2400.0)
 """Highest frequencies; a row takes the first at which its φ is below _DEAD."""
 _DEAD = 1e-8
 _REACH = (8.0, 12.0, 18.0, 27.0, 64.0, 256.0, 1024.0)
@@ -46,7 +46,7 @@ _PERIODS = (16.0, 20.0, 28.0, 40.0, 64.0, 100.0)
 """Periods of the midpoint rule; rows that need a longer one take panels (period inf)."""
 _BEYOND = 1e-9
 """Probability that may lie beyond the period."""
-_DAMPING = 0.0125
+_DAMPING = 7.5 / _LAST[-1]
 _SMALL = 1.5
 """Half-width times frequency up to which four terms of log φ do (the next is below 1e-4 of a dead φ)."""
 _NODES, _WEIGHTS = (np.asarray(v, dtype=np.float64) for v in np.polynomial.legendre.leggauss(16))

@@ -51,9 +51,11 @@ class Model:
         """From a problem."""
         families = tuple(problem.families)
         estimate = np.asarray(problem.estimate, dtype=np.float64)
-        # An output without an estimate may have no sensitivity either; it counts as unmoved, and is left out.
-        void = np.isnan(estimate)[..., None]
-        sensitivity = tuple(np.where(void, 0.0, s) if void.any() else s for s in problem.sensitivity)
+        # A derivative that does not exist (none of an output without an estimate does) counts as none at all: such
+        # an output is left out, or left to plain trials.
+        sensitivity = tuple(
+            s if np.isfinite(s).all() else np.where(np.isfinite(s), s, 0.0) for s in problem.sensitivity
+        )
         parts = np.zeros((*estimate.shape, len(families)))
         for f, columns in enumerate(sensitivity):
             parts[..., f] = (columns * columns).sum(axis=-1)

@@ -14,21 +14,43 @@ from tapband.probability.trials import Tiles, linear_values
 Array = NDArray[np.float64]
 
 
-def probe(model: Model, points: range, distance: float = 3.0) -> tuple[Array, Array]:
-    """y and l (Pb, 2m, m) at ± ``distance`` standard deviations along each output's own gradient.
+_NEAR, _FAR = 1.25, 3.8
+"""Standard deviations between near probes, and to the far ones."""
 
-    Bounded latents stop at their bounds. A cliff that few trials would meet shows here.
+
+def probe(model: Model, points: range) -> tuple[Array, Array]:
+    """What is left of the linear model far out, and how much of that a smooth function would not have (Pb, m).
+
+    Along each output's own gradient, at ±3.8 standard deviations: the largest difference, and the largest
+    departure from the polynomial of fourth degree through the differences at 0, ±1.25 and ±2.5. A cliff that few
+    trials would meet shows here. Bounded latents move less, so that they reach their bounds at the far end.
     """
     where = slice(points.start, points.stop)
+    steps = np.array([-_FAR, -2.0 * _NEAR, -_NEAR, _NEAR, 2.0 * _NEAR, _FAR])
     unit = np.where(model.live[where], model.u[where], np.inf)[..., None]
     draws: dict[int, Array] = {}
     for f, family in enumerate(model.families):
-        along = distance * model.sensitivity[f][where] / unit
-        both = np.concatenate([along, -along], axis=1)
+        along = model.sensitivity[f][where] / unit
+        reach = _FAR * np.abs(along).max(axis=-1, initial=0.0)[..., None]
         bound = half_width(family.shape, family.top)
-        draws[f] = np.clip(both, -bound, bound)
+        along = along * np.where(reach > bound, bound / np.where(reach > 0.0, reach, 1.0), 1.0)
+        draws[f] = np.concatenate([step * along for step in steps], axis=1)
     y = model.problem.evaluate(where, draws)
-    return y, linear_values(model, points, draws, y.shape[1])
+    outputs = model.estimate.shape[1]
+    left = y - linear_values(model, points, draws, y.shape[1])
+    # Output j along its own gradient alone is judged for smoothness, all of them for size.
+    own = left.reshape(len(points), steps.size, outputs, outputs)[
+        :, :, np.arange(outputs), np.arange(outputs)
+    ]
+    nodes = np.array([-2.0, -1.0, 0.0, 1.0, 2.0]) * _NEAR
+    vander = np.linalg.inv(np.vander(nodes, increasing=True))
+    rough = np.zeros((len(points), outputs))
+    for end, place in ((-_FAR, 0), (_FAR, -1)):
+        weights = np.vander(np.array([end]), 5, increasing=True)[0] @ vander
+        # At 0 nothing is left.
+        inner = sum(weights[k if k < 2 else k + 1] * own[:, k + 1] for k in range(4))
+        rough = np.maximum(rough, np.abs(own[:, place] - inner))
+    return np.abs(left).max(axis=1), rough
 
 
 def shape_error(model: Model, points: range, out: tuple[int, ...], tiles: Tiles, trials: int = 2) -> Array:
