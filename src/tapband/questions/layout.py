@@ -67,10 +67,7 @@ def layout_choice(
     basis: Basis, progress: Progress | None = None, iterations: int = ITERATIONS
 ) -> LayoutChoice:
     """The layout that the campaign asks for."""
-    wanted = basis.campaign.plan.layout
-    assert wanted is not None
-    if basis.campaign.plan.forecast is None:
-        raise QuestionError("layout: needs a [forecast] to place taps for; got none; add one")
+    wanted = require_layout(basis)
     limit, alpha = _limits(basis)
     flows = _flows(basis, alpha)
     end = _end(basis, wanted)
@@ -87,6 +84,18 @@ def layout_choice(
     layouts.append(("present", np.sort(basis.assembled.s[live])))
     names = tap_names(s, _fixed(basis, wanted))
     return LayoutChoice(s=s, names=names, x=x, y=y, judged=_judged(basis, judge, layouts))
+
+
+def require_layout(basis: Basis) -> Layout:
+    """The layout asked for; refuses one that cannot be."""
+    wanted = basis.campaign.plan.layout
+    assert wanted is not None
+    if basis.campaign.plan.forecast is None:
+        raise QuestionError("layout: needs a [forecast] to place taps for; got none; add one")
+    fewest = max(FEWEST, len(set(wanted.fixed)) + 4)
+    if wanted.taps < fewest:
+        raise QuestionError(f"layout.taps: must be at least {fewest} here; got {wanted.taps}; write more")
+    return wanted
 
 
 def root_spaced(count: int, end: tuple[float, float]) -> Array:
@@ -197,10 +206,6 @@ def _framed(
     contour = basis.assembled.contour
     places = sorted({float(tau_of(contour, np.array([s]))[0]) for _, s in _fixed(basis, wanted)} - set(end))
     inner = [p for p in places if end[0] < p < end[1]]
-    if wanted.taps < max(FEWEST, len(inner) + 4):
-        raise QuestionError(
-            f"layout.taps: must be at least {max(FEWEST, len(inner) + 4)} here; got {wanted.taps}; write more"
-        )
     anchor = np.array([end[0], *inner, end[1]])
     start = root_spaced(wanted.taps, end)
     best: tuple[float, Frame, Array] | None = None

@@ -16,7 +16,7 @@ from tapband.questions.basis import Basis, basis_of
 from tapband.questions.catalogue import Choices, choices_of
 from tapband.questions.choice import Selection, selected
 from tapband.questions.confirm import Confirmed, confirm
-from tapband.questions.layout import LayoutChoice, layout_choice
+from tapband.questions.layout import LayoutChoice, layout_choice, require_layout
 from tapband.questions.ranges import Ranges, ranges
 from tapband.questions.selection import Efficient, Search, frontier
 from tapband.questions.wiring_choice import WiringChoice, wiring_choice
@@ -61,6 +61,8 @@ def sized(campaign: Campaign, trials: str | None = None, progress: Progress | No
     """Size what the campaign asks for. ``trials`` as in :func:`confirm`; default the campaign's."""
     basis = basis_of(campaign)
     seen, plan = ranges(basis), campaign.plan
+    if plan.layout is not None:
+        require_layout(basis)  # before the work, not after it
     wiring = None if plan.wiring is None else wiring_choice(basis, _step(progress, "wiring"))
     declared = confirm(basis.campaign, basis.demands, trials)
     choices = choices_of(basis, seen) if plan.slots else None
