@@ -5,8 +5,8 @@ from __future__ import annotations
 from dataclasses import replace
 
 import numpy as np
-from campaigns import campaign, size, source
 
+from campaigns import campaign, size, source
 from tapband.experiment.screening import ABOVE, FULL, JUMP, LEFT_OUT, VACUUM
 from tapband.nouns.campaign import Campaign
 from tapband.nouns.source import COMMON, INDEPENDENT
