@@ -31,9 +31,7 @@ def spacing_half_widths(equation: Equation, cp: Array, mach: Array, alpha: Array
         results.append(moved_nodes(equation, nodes, mach))
     to_five = turn(equation, alpha)
     terms = rule.node_weights[1:].reshape(9, -1).T
-    rows = [
-        to_five @ each_row(part, terms).reshape(-1, 3, 3).swapaxes(1, 2) for part in results
-    ]
+    rows = [to_five @ each_row(part, terms).reshape(-1, 3, 3).swapaxes(1, 2) for part in results]
     return np.concatenate(rows, axis=1)
 
 

@@ -78,7 +78,9 @@ def jacobian(
     """Derivatives for P points: cp (P, n) zero at dead taps, alpha (P,) [rad], channels and shifts (P,)."""
     live = equation.quadrature.live
     slopes = stream_slopes(equation, channels, shifts)
-    cp_slope = np.where(live, each_row(cp, equation.quadrature.slope.T) + equation.quadrature.slope_constant, 0.0)
+    cp_slope = np.where(
+        live, each_row(cp, equation.quadrature.slope.T) + equation.quadrature.slope_constant, 0.0
+    )
     blocks = [_measured(equation, cp, stream.mach)]
     if equation.compressibility != "none":
         scaled = equation.on_coefficients

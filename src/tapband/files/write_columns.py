@@ -127,7 +127,10 @@ def coded(series: pd.Series) -> tuple[list[int], list[Cell]] | None:
     """
     import pandas as pd
 
-    if series.dtype.kind in "fiub" or pd.api.types.infer_dtype(series, skipna=True) not in ("string", "empty"):
+    if series.dtype.kind in "fiub" or pd.api.types.infer_dtype(series, skipna=True) not in (
+        "string",
+        "empty",
+    ):
         return None
     codes, names = pd.factorize(series.astype(object))
     return codes.tolist(), [*names.tolist(), None]

@@ -48,7 +48,9 @@ def _text(cell: Cell) -> str:
 
 def _quoted(text: str) -> str:
     """The text as one CSV field (RFC 4180, 2.5-2.7)."""
-    return '"' + text.replace('"', '""') + '"' if any(c in text for c in ',"') or text != text.strip() else text
+    return (
+        '"' + text.replace('"', '""') + '"' if any(c in text for c in ',"') or text != text.strip() else text
+    )
 
 
 def write_csv(path: Path, name: str, frame: pd.DataFrame) -> None:

@@ -19,7 +19,10 @@ from tapband.nouns.source import Source
 Array = NDArray[np.float64]
 
 STATIC, TOTAL, VACUUM, COEFFICIENT = (
-    "relative to static", "relative to total", "relative to vacuum", "pressure coefficient",
+    "relative to static",
+    "relative to total",
+    "relative to vacuum",
+    "pressure coefficient",
 )
 """What tap readings are relative to; anything else is the name of an absolute reference column."""
 

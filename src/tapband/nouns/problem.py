@@ -80,4 +80,3 @@ class Problem(Protocol):
         """As :meth:`evaluate`, and for each linear family in ``out`` (not drawn: integrated out) the variance
         Σ_k(∂y/∂ξ_k)² it adds, (Pb, T, m), exact for the outputs marked affine."""
         ...
-
