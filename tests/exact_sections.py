@@ -157,6 +157,7 @@ def section(mu: complex, n: float = 2.0) -> KarmanTrefftz:
     )
 
 
+@lru_cache(maxsize=64)
 def section_of(thickness: float, camber: float = 0.0, trailing_edge_angle: float = 10.0) -> KarmanTrefftz:
     """A section of given thickness [chords], about this camber [chords] and trailing-edge angle [deg]."""
     n = 2.0 - trailing_edge_angle / 180.0
