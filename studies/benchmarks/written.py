@@ -72,3 +72,21 @@ def _source(name: str, acts_on: str, standard: str, across_taps: str, across_poi
         f'\n[[source]]\nname = "{name}"\nacts_on = "{acts_on}"\nstandard = "{standard}"\n{taps}'
         f'across_points = "{across_points}"\n'
     )
+
+
+def write_samples(folder: Path, samples: int, taps: int = 60) -> Path:
+    """One point with so many rows, each tap with noise of its own; the campaign file's path is returned."""
+    path = write(folder, 1, taps)
+    table = path.with_name("points.csv")
+    head, row = table.read_text().splitlines()
+    start = row.split(",")[:-taps]
+    mean = np.array(row.split(",")[-taps:], dtype=np.float64)
+    rng = np.random.default_rng(1)
+    with table.open("w") as out:
+        out.write(head + "\n")
+        for _ in range(0, samples, 1_000):
+            readings = mean + rng.normal(0.0, 5.0, (1_000, taps))
+            out.writelines(
+                ",".join([*start, *(f"{value:.2f}" for value in line)]) + "\n" for line in readings.tolist()
+            )
+    return path
