@@ -60,7 +60,7 @@ def section(text: str, head: str) -> str:
 @pytest.fixture(scope="module")
 def said_and_written(starter: Path, tmp_path_factory: pytest.TempPathFactory) -> tuple[str, Path]:
     """What sizing the starter campaign prints and writes, with a small layout and few trials."""
-    campaign = edited(starter, "planned", ("taps = 31", "taps = 11"))
+    campaign = edited(starter, "planned", ("taps = 31", "taps = 11"), ('fixed = ["N00"]', "fixed = []"))
     out = tmp_path_factory.mktemp("plan") / "plan"
     printed = StringIO()
     with redirect_stdout(printed):
@@ -79,7 +79,8 @@ def test_size_writes_every_table_with_its_columns(written: Path) -> None:
         assert frame.columns.tolist()[: len(columns)] == columns, name
         assert len(frame) > 0, name
     frontier = pd.read_csv(written / "frontier.csv")
-    assert frontier.columns.tolist() == ["cost", "worst_ratio", "pressure scanner", "inclinometer"]
+    slots = ["pressure scanner", "inclinometer"]
+    assert frontier.columns.tolist() == ["cost", "worst_ratio", *slots, "linearised ratio"]
     assert (written / "report.html").stat().st_size > 5000
 
 

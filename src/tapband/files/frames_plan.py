@@ -10,9 +10,9 @@ from numpy.typing import NDArray
 
 from tapband.nouns.errors import QuestionError
 from tapband.questions.averaging import Averaging
+from tapband.questions.choice import FrontierSet
 from tapband.questions.layout import LayoutChoice
 from tapband.questions.planned import Comparison, Scores, comparison, scores, why_not_compared
-from tapband.questions.selection import Efficient
 from tapband.questions.sizing import Sized
 from tapband.questions.targets import Demands
 from tapband.questions.wiring_choice import WiringChoice
@@ -186,7 +186,7 @@ def frontier_table(sized: Sized) -> pd.DataFrame:
     assert sized.choices is not None
     choices, found = sized.choices, sized.frontier
 
-    def option(one: Efficient, slot: int) -> str:
+    def option(one: FrontierSet, slot: int) -> str:
         return choices.options[one.chosen[slot]].name
 
     columns: dict[str, object] = {
@@ -196,6 +196,7 @@ def frontier_table(sized: Sized) -> pd.DataFrame:
     for i, slot in enumerate(choices.slots):
         name = f"slot {slot.name}" if slot.name in columns else slot.name
         columns[name] = [option(one, i) for one in found]
+    columns["linearised ratio"] = np.array([one.linear for one in found], dtype=np.float64)
     return pd.DataFrame(columns)
 
 

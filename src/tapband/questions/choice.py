@@ -7,6 +7,7 @@ at the confirmed choice is then tried on the whole catalogue, and what that find
 
 from __future__ import annotations
 
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass, field
 
 import numpy as np
@@ -19,6 +20,8 @@ from tapband.questions.targets import ROUNDING
 
 Array = NDArray[np.float64]
 
+CONFIRMED = 60
+"""Efficient choices that are confirmed by Monte Carlo."""
 ROUNDS = 12
 """Choices that Monte Carlo refuses before the search is given up, and said so."""
 
@@ -41,6 +44,50 @@ class Selection:
     def binding(self) -> int | None:
         """The demand nearest to its target, or furthest past it."""
         return int(np.argmax(self.ratio)) if self.ratio.size else None
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class FrontierSet:
+    """An efficient choice: its cost, and the worst ratio by the headline and by the linearised interval."""
+
+    chosen: Chosen
+    cost: float
+    worst: float
+    linear: float
+
+
+def headline_frontier(
+    choices: Choices,
+    found: Sequence[Efficient],
+    selection: Selection,
+    trials: str | None = None,
+    progress: Callable[[int, int], None] | None = None,
+) -> tuple[FrontierSet, ...]:
+    """The efficient choices by the headline interval, cheapest first.
+
+    ``found`` are those by the linearised interval; the selected one joins them. Of more than ``CONFIRMED``
+    those nearest to their targets are confirmed; the others keep the linearised ratio.
+    """
+    catalogue = choices.catalogue
+    sets = {one.chosen: one.cost for one in found}
+    if selection.choice is not None:
+        sets.setdefault(selection.choice.chosen, selection.choice.cost)
+    linear = {chosen: catalogue.worst(chosen) for chosen in sets}
+    near = sorted(sets, key=lambda chosen: abs(np.log(max(linear[chosen], 1e-9))))[:CONFIRMED]
+    worst = dict(linear)
+    for k, chosen in enumerate(near):
+        seen = confirm(choices.campaign(chosen), choices.basis.demands, trials)
+        if np.all(np.isfinite(seen.headline)):
+            worst[chosen] = float(np.max(seen.headline / catalogue.limit, initial=0.0))
+        if progress is not None:
+            progress(k + 1, len(near))
+    kept: list[FrontierSet] = []
+    for chosen in sorted(sets, key=lambda one: (sets[one], worst[one])):
+        if not kept or worst[chosen] < kept[-1].worst * (1.0 - SAME):
+            kept.append(
+                FrontierSet(chosen=chosen, cost=sets[chosen], worst=worst[chosen], linear=linear[chosen])
+            )
+    return tuple(kept)
 
 
 def selected(choices: Choices, trials: str | None = None) -> Selection:

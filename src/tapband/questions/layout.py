@@ -35,6 +35,8 @@ ANGLES = 9
 ITERATIONS, FIRST_LOOK = 60, 8
 LADDER = (0.4, 0.5, 0.65, 0.8, 1.0, 1.25, 1.6, 2.0)
 """Numbers of taps looked at, in parts of the number asked for."""
+LADDER_SHARE = 8
+"""Steps for the number asked for, over those for each other number."""
 FEWEST = 7
 
 
@@ -80,7 +82,7 @@ def layout_choice(
     x, y = contour.point(s)
     live = basis.assembled.nominal.live.any(axis=0)
     layouts = [("found", s), *((name, arc_length(contour, row)) for name, row in plain.items())]
-    layouts += _ladder(basis, wanted, end, tau_of(contour, s))
+    layouts += _ladder(judge, wanted, end, tau_of(contour, s), iterations // LADDER_SHARE)
     layouts.append(("present", np.sort(basis.assembled.s[live])))
     names = tap_names(s, _fixed(basis, wanted))
     return LayoutChoice(s=s, names=names, x=x, y=y, judged=_judged(basis, judge, layouts))
@@ -245,16 +247,24 @@ def _judged(basis: Basis, judge: Judge, layouts: Sequence[tuple[str, Array]]) ->
     return tuple(found)
 
 
-def _ladder(basis: Basis, wanted: Layout, end: tuple[float, float], found: Array) -> list[tuple[str, Array]]:
-    """Other numbers of taps, spread as those found, and in the plain layouts."""
-    contour = basis.assembled.contour
+def _ladder(
+    judge: Judge, wanted: Layout, end: tuple[float, float], found: Array, iterations: int
+) -> list[tuple[str, Array]]:
+    """Other numbers of taps: found in a few steps from the better of the spread found and √x, and plain ones.
+
+    A number that the smallest spacing leaves no room for is left out.
+    """
+    contour = judge.flows[0].contour
     part = np.linspace(0.0, 1.0, found.size)
-    result = []
+    result: list[tuple[str, Array]] = []
     for count in sorted({max(FEWEST, round(k * wanted.taps)) for k in LADDER} - {wanted.taps}):
-        spread = np.interp(np.linspace(0.0, 1.0, count), part, found)
-        rows = {"found": spread, **{name: row(count, end) for name, row in PLAIN.items()}}
-        for name, tau in rows.items():
-            s = arc_length(contour, tau)
-            if np.min(np.diff(s)) >= wanted.smallest_spacing or name != "found":
-                result.append((name, s))
+        plain = {name: row(count, end) for name, row in PLAIN.items()}
+        starts = [np.interp(np.linspace(0.0, 1.0, count), part, found), plain["root"]]
+        start = min(starts, key=judge.score)
+        frame = Frame(count=count, anchor=np.array(end), at=np.array([0, count - 1]))
+        tau = searched(judge, frame, start, wanted.smallest_spacing, iterations) if iterations else start
+        s = arc_length(contour, tau)
+        if s[-1] - s[0] > 1.05 * count * wanted.smallest_spacing:
+            result.append(("found", apart(contour, s, frame.at, wanted.smallest_spacing)))
+        result += [(name, arc_length(contour, row)) for name, row in plain.items()]
     return result

@@ -14,11 +14,11 @@ from tapband.questions.allowances import Allowance, allowances
 from tapband.questions.averaging import Averaging, averaging
 from tapband.questions.basis import Basis, basis_of
 from tapband.questions.catalogue import Choices, choices_of
-from tapband.questions.choice import Selection, selected
+from tapband.questions.choice import FrontierSet, Selection, headline_frontier, selected
 from tapband.questions.confirm import Confirmed, confirm
 from tapband.questions.layout import LayoutChoice, layout_choice, require_layout
 from tapband.questions.ranges import Ranges, ranges
-from tapband.questions.selection import Efficient, Search, frontier
+from tapband.questions.selection import Search, frontier
 from tapband.questions.wiring_choice import WiringChoice, wiring_choice
 
 Array = NDArray[np.float64]
@@ -38,7 +38,7 @@ class Sized:
     allocation: Allocation
     choices: Choices | None
     selection: Selection | None
-    frontier: tuple[Efficient, ...]
+    frontier: tuple[FrontierSet, ...]
     frontier_complete: bool
     wiring: WiringChoice | None
     layout: LayoutChoice | None
@@ -67,10 +67,12 @@ def sized(campaign: Campaign, trials: str | None = None, progress: Progress | No
     declared = confirm(basis.campaign, basis.demands, trials)
     choices = choices_of(basis, seen) if plan.slots else None
     selection = None if choices is None else selected(choices, trials)
-    efficient: tuple[Efficient, ...] = ()
+    efficient: tuple[FrontierSet, ...] = ()
     complete = True
-    if choices is not None:
-        efficient, complete = frontier(Search(catalogue=choices.catalogue), _step(progress, "frontier"))
+    if choices is not None and selection is not None:
+        by_linear, complete = frontier(Search(catalogue=choices.catalogue), _step(progress, "frontier"))
+        confirming = _step(progress, "confirming the frontier")
+        efficient = headline_frontier(choices, by_linear, selection, trials, confirming)
     alone = allowances(basis, declared, trials, _step(progress, "allowances"))
     return Sized(
         basis=basis,

@@ -10,7 +10,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from tapband.files.write_text import one_line
-from tapband.report.drawing import COLOURS, INK, axes, styled
+from tapband.report.drawing import COLOURS, INK, MARKERS, axes, styled
 from tapband.report.figure_files import figure_of, save
 
 if TYPE_CHECKING:
@@ -67,7 +67,46 @@ def allowances(table: pd.DataFrame, ax: Axes | None = None) -> Axes:
     return ax
 
 
-DRAWN: Mapping[str, Callable[..., Axes]] = {"frontier": frontier, "ranges": ranges, "allowances": allowances}
+@styled
+def layouts(table: pd.DataFrame, ax: Axes | None = None) -> Axes:
+    """Widest interval and worst true error over the target against the number of taps, by layout."""
+    ax = axes(ax)
+    for i, name in enumerate(("found", "root", "cosine")):
+        rows = table[table["layout"] == name].sort_values("taps")
+        look = {"color": COLOURS[i], "marker": MARKERS[i], "label": SPACED[name]}
+        ax.semilogy(rows["taps"], rows["worst_ratio"], linestyle="-", **look)
+        ax.semilogy(rows["taps"], rows["rms_error_ratio"], linestyle=":", **{**look, "label": None})
+    ax.axhline(1.0, color=INK, linestyle="--", linewidth=0.9)
+    ax.set(xlabel="taps [1]", ylabel="over its target [1]")
+    ax.set_title("solid: widest interval; dotted: worst true rms error")
+    ax.yaxis.set_major_formatter("{x:g}")
+    ax.legend(loc="best")
+    return ax
+
+
+SPACED = {"found": "places found", "root": "√x spacing", "cosine": "cosine spacing"}
+
+
+@styled
+def wirings(table: pd.DataFrame, ax: Axes | None = None) -> Axes:
+    """The widest interval over its target with each wiring; the one found is last."""
+    ax = axes(ax)
+    ratio, place = np.asarray(table["worst_ratio"], dtype=float), np.arange(len(table))[::-1]
+    ax.barh(place, ratio, color=COLOURS[0], height=0.6)
+    for y, value in zip(place, ratio, strict=True):
+        ax.text(value, y, f"  {value:.4g}", va="center", color=INK)
+    ax.set_yticks(place, [one_line(str(name)) for name in table["wiring"]])
+    ax.set(
+        xlabel="widest linearised interval over its target [1]",
+        xlim=(0.0, 1.12 * max(1.0, float(ratio.max()))),
+    )
+    ax.grid(visible=False, axis="y")
+    return ax
+
+
+DRAWN: Mapping[str, Callable[..., Axes]] = {
+    "frontier": frontier, "ranges": ranges, "allowances": allowances, "layouts": layouts, "wirings": wirings,
+}  # fmt: skip
 
 
 def plan_figure_jobs(tables: Mapping[str, pd.DataFrame], kind: str) -> dict[str, Callable[[Path], None]]:

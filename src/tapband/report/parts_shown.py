@@ -91,7 +91,8 @@ SHOWN: Mapping[str, tuple[str, str, Sequence[Column]]] = {
         (
             text("source"), with_unit("declared", "declared"), with_unit("allowed", "allowed"),
             number("headroom"), text("binding_point", "binds at"), text("binding_coefficient", "in"),
-            text("reason"),
+            with_unit("equal_contribution", "all together, equal"),
+            with_unit("least_cost", "all together, cheapest"), text("reason"),
         ),
     ),
     "options": (
@@ -108,6 +109,34 @@ SHOWN: Mapping[str, tuple[str, str, Sequence[Column]]] = {
         (text("slot"), text("option"), amount("cost")),
     ),
     "frontier": ("Cost against interval", "Every set that no cheaper one beats.", ()),
+    "wirings": (
+        "Wirings compared",
+        "The widest interval over its target with the taps wired so, linearised; as wired, where that fits.",
+        (
+            text("wiring"), number("worst_ratio", "widest over target", 4),
+            text("binding_coefficient", "in"), text("binding_point", "at"),
+        ),
+    ),
+    "layouts": (
+        "Layouts compared",
+        "By number of taps: the widest linearised interval, and the worst true root mean square error that taps "
+        "make in inviscid flow round this section, both over their targets.",
+        (
+            number("taps", "taps", 3), text("layout"), number("worst_ratio", "widest interval"),
+            number("rms_error_ratio", "worst error"),
+        ),
+    ),
+    "averaging": (
+        "Averaging",
+        "Standard uncertainty that the fluctuation leaves in one instant and in the mean of a record, taps swinging "
+        "independently; the shortest record that keeps the target; points at each of two conditions that show a "
+        "difference as large as the target, nine times in ten.",
+        (
+            text("point"), text("coefficient"), number("u_single", "u, instant", 2),
+            number("u_mean", "u, record", 2), number("record_needed", "record needed [s]"),
+            number("samples_needed", "independent samples", 4), number("repeats_needed", "points", 3),
+        ),
+    ),
     "wiring": (
         "Wiring",
         "The assignment of taps to modules with the smallest widest interval.",

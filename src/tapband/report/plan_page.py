@@ -12,7 +12,7 @@ from tapband.files.write_text import one_line
 from tapband.report import summary
 from tapband.report.parts import parts_of
 from tapband.report.parts_shown import SHOWN
-from tapband.report.plan_sketch import frontier_sketch, ranges_sketch
+from tapband.report.plan_sketch import frontier_sketch, layouts_sketch, ranges_sketch
 from tapband.report.render import WALLS, asset, lines_of, page_templates
 from tapband.report.rounding import significant
 
@@ -23,9 +23,9 @@ if TYPE_CHECKING:
 
 LAYOUT: Mapping[str, tuple[str, tuple[str, ...]]] = {
     "choices": ("What to buy", ("selection", "frontier", "options")),
-    "sources": ("How good each source must be", ("allowances", "allocation")),
+    "sources": ("How good each source must be", ("allowances",)),
     "seen": ("What the channels will see", ("ranges",)),
-    "places": ("Wiring and taps", ("wiring", "layout", "taps_needed")),
+    "places": ("Wiring and taps", ("wirings", "layouts", "wiring", "layout")),
     "time": ("How long to average", ("averaging",)),
     "held": ("Targets at every point", ("targets",)),
 }
@@ -48,7 +48,11 @@ def plan_report(
             notes=[one_line(note) for note in notes],
             undeclared=lines_of(meta.get("undeclared")),
             parts=parts_of(tables, LAYOUT, shown),
-            figures={"choices": _frontier(tables.get("frontier")), "seen": _ranges(tables.get("ranges"))},
+            figures={
+                "choices": _frontier(tables.get("frontier")),
+                "seen": _ranges(tables.get("ranges")),
+                "places": _layouts(tables.get("layouts")),
+            },
             facts=summary.facts(meta, campaign),
             cautions=lines_of(meta.get("cautions")) or [WALLS],
             inputs=list(campaign.inputs.items()),
@@ -87,3 +91,7 @@ def _frontier(frame: pd.DataFrame | None) -> Markup | None:
 
 def _ranges(frame: pd.DataFrame | None) -> Markup | None:
     return None if frame is None or frame.empty else ranges_sketch(frame)
+
+
+def _layouts(frame: pd.DataFrame | None) -> Markup | None:
+    return None if frame is None or frame.empty else layouts_sketch(frame)

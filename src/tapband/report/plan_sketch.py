@@ -15,6 +15,9 @@ if TYPE_CHECKING:
     import pandas as pd
 
 WIDTH, LEFT, RIGHT = 640, 64, 628
+SPACED = {"found": "found", "root": "√x", "cosine": "cosine"}
+FAR = 4.0
+"""Ratio past which a layout is no candidate."""
 LABELS = 28
 """Most taps whose names fit below the figure."""
 
@@ -60,6 +63,26 @@ def ranges_sketch(frame: pd.DataFrame) -> Markup:
     )
     said = ("tap", "pressure [kPa]; dashed: full scale")
     return _framed(290, (top, bottom), None, y, said, "What each tap will see against its full scale", body)
+
+
+def layouts_sketch(frame: pd.DataFrame) -> Markup:
+    """Widest interval over its target against the number of taps: as found, √x and cosine; far misses left out."""
+    top, bottom = 30, 230
+    rows = frame[frame["layout"].isin(SPACED) & (np.asarray(frame["worst_ratio"], dtype=float) <= FAR)]
+    taps, ratio = (np.asarray(rows[c], dtype=float) for c in ("taps", "worst_ratio"))
+    x, y = Scale(taps.tolist(), LEFT, RIGHT, 6), Scale([*ratio.tolist(), 0.0, 1.0], bottom, top, 5)
+    body = f'<path class="target" d="M{LEFT} {y(1.0):.1f}H{RIGHT}"/>'
+    for i, (name, label) in enumerate(SPACED.items()):
+        own = rows[rows["layout"] == name].sort_values("taps")
+        places = [(x(float(n)), y(float(r))) for n, r in zip(own["taps"], own["worst_ratio"], strict=True)]
+        line = "".join(f"{'ML'[k > 0]}{a:.1f} {b:.1f}" for k, (a, b) in enumerate(places))
+        marks = "".join(_dot(a, b, 3.5) for a, b in places)
+        body += f'<g class="s{i}"><path class="line" d="{line}"/><path class="mark" d="{marks}"/></g>'
+        if places:
+            a, b = places[0]
+            body += f'<text class="axis" x="{a + 8:.1f}" y="{b - 4:.1f}">{escape(label)}</text>'
+    names = ("taps", f"widest interval over its target; dashed: met; above {FAR:g} left out")
+    return _framed(270, (top, bottom), x, y, names, "Widest interval against the number of taps", body)
 
 
 def _known(low: np.ndarray, high: np.ndarray) -> list[tuple[int, tuple[float, float]]]:
