@@ -14,7 +14,7 @@ from numpy.typing import NDArray
 from tapband.probability.coverage import tolerance
 from tapband.probability.curve import FRACTIONS
 from tapband.probability.draws import FINE
-from tapband.probability.estimate import Estimate, averaged, estimated
+from tapband.probability.estimate import Estimate, Sketch, averaged
 from tapband.probability.line_trials import line
 from tapband.probability.model import Model
 from tapband.probability.outcome import NAMES
@@ -46,6 +46,8 @@ _COST = {"integrated": 3.0, "line": 9.0}
 _PLAIN_ENDS = 28.5
 """(2 √(0.025 · 0.975)/φ(1.96))²: plain trials times (δ/u)² for the ends of a normal 95 % interval."""
 _PLAIN_LEAST = 1e5
+_POOR = 1.5
+"""Excess by the outlook beyond which a pilot is not carried to its ends."""
 _MARGIN = 1.4
 """Trials beyond those that an estimate asks for, so that the next rarely asks again."""
 _ROUNDS = 6
@@ -210,16 +212,21 @@ class _Stage:
 
     def pilot(self, points: range, rows: Mask) -> Array:
         """Tiles (Pb, m) that rows need beyond the pilot: 0 where it sufficed, inf where plain is cheaper."""
-        got = self._estimate(points, rows, Tiles(seed=self.plan.seed, size=FINE, count=FINE))
+        sketch = self._sketch(points, rows, Tiles(seed=self.plan.seed, size=FINE, count=FINE))
         place = self.block.places(points)
         far, rough = self.far[place], self.rough[place]
         delta = tolerance(self.model.u[points.start : points.stop])
-        wary = rows & (rough | ((far > _HIDDEN * got.scatter) & (far > _HALF * delta)))
-        need = np.where(rows, self._need(points, got), np.inf)
-        good = rows & (need == 0.0) & ~wary
-        self.block.store(self.model, points, good, got, self.method)
-        least = np.where(wary, _WARY, 1.0) if self.plan.fixed is None else 0.0
-        return np.where(good, 0.0, np.maximum(need, least))
+        wary = rows & (rough | ((far > _HIDDEN * sketch.trials.scatter) & (far > _HALF * delta)))
+        # Ends are not worth finding where their outlook is poor; each row decides for itself.
+        poor = wary | (sketch.excess > _POOR)
+        need = self._need(points, FINE, sketch.excess, sketch.trials.refused | sketch.lost)
+        if self.plan.fixed is None and np.any(rows & ~poor):
+            got = sketch.estimate()
+            excess = got.excess(self.model.u[points.start : points.stop])
+            need = np.where(poor, need, self._need(points, FINE, excess, got.failed))
+            self.block.store(self.model, points, rows & ~poor & (need == 0.0), got, self.method)
+        least = np.where(wary, _WARY, np.where(poor, 1.0, 0.0)) if self.plan.fixed is None else 0.0
+        return np.where(rows, np.maximum(need, least), np.inf)
 
     def finish(self, points: range, rows: Mask, tiles: Array) -> None:
         """Fresh trials until ``rows`` are good enough, starting from the numbers of ``tiles`` (Pb, m)."""
@@ -233,7 +240,8 @@ class _Stage:
             for some in _together(points, need):
                 inside = slice(some.start - points.start, some.stop - points.start)
                 got = self._batches(some, pending[inside], int(need[inside][0]) * TILE)
-                more = np.where(pending[inside], self._need(some, got), 0.0)
+                excess = got.excess(self.model.u[some.start : some.stop])
+                more = np.where(pending[inside], self._need(some, got.trials, excess, got.failed), 0.0)
                 good = pending[inside] & (more == 0.0)
                 self.block.store(self.model, some, good, got, self.method)
                 self.block.plain[self.block.places(some)] |= pending[inside] & np.isinf(more)
@@ -243,21 +251,20 @@ class _Stage:
                 return
         self.block.plain[self.block.places(points)] |= pending
 
-    def _need(self, points: range, got: Estimate) -> Array:
-        """Tiles (Pb, m) that rows need by an estimate: 0 where it suffices, inf where plain is cheaper.
+    def _need(self, points: range, trials: int, excess: Array, failed: Mask) -> Array:
+        """Tiles (Pb, m) that rows need, judged by some trials: 0 where these suffice, inf where plain is cheaper.
 
         Where the number of trials is fixed, any that do not fail are better spent here than plainly.
         """
         u = self.model.u[points.start : points.stop]
-        excess = got.excess(u)
-        tiles = _MARGIN * got.trials * excess * excess / TILE
-        tiles = np.where(got.failed, np.inf, np.maximum(tiles, 1e-9))
+        tiles = _MARGIN * trials * excess * excess / TILE
+        tiles = np.where(failed, np.inf, np.maximum(tiles, 1e-9))
         if self.plan.fixed is not None:
             return tiles
         ratio = u / np.where(u > 0.0, tolerance(u), 1.0)
         plain = np.maximum(_PLAIN_ENDS * ratio * ratio, _PLAIN_LEAST)
         dear = ~(tiles * (TILE * _COST[self.method]) < plain) | (tiles > LADDER[-1])
-        return np.where(~got.failed & (excess < 1.0), 0.0, np.where(dear, np.inf, tiles))
+        return np.where(~failed & (excess < 1.0), 0.0, np.where(dear, np.inf, tiles))
 
     def _fixed(self, points: range, pending: Mask, count: int) -> None:
         """The same number of trials for all rows that are left."""
@@ -272,12 +279,12 @@ class _Stage:
         for start in range(0, count, BATCH):
             size = min(BATCH, count - start)
             tiles = Tiles(seed=self.plan.seed, size=TILE, count=size, first=start // TILE)
-            parts.append(self._estimate(points, rows, tiles))
+            parts.append(self._sketch(points, rows, tiles).estimate())
         return averaged(parts)
 
-    def _estimate(self, points: range, rows: Mask, tiles: Tiles) -> Estimate:
+    def _sketch(self, points: range, rows: Mask, tiles: Tiles) -> Sketch:
         trials = self.sampler(points, rows, tiles)
-        return estimated(self.model, points, rows, self.out, trials, self.plan.level)
+        return Sketch.of(self.model, points, rows, self.out, trials, self.plan.level)
 
 
 def _rungs(tiles: Array) -> Counts:

@@ -81,10 +81,11 @@ class Side:
     pdf: Array
 
     @classmethod
-    def sampled(cls, curve: Curve, t: Array) -> Side:
+    def sampled(cls, curve: Curve, t: Array, middle: tuple[Array, Array] | None = None) -> Side:
+        """Averaged at nodes t (5, Pb, m); ``middle``: what the smoothing says at t[2], where that is known."""
         cdf, pdf = np.empty_like(t), np.empty_like(t)
         for k in _SAMPLED:
-            d, e = curve.smoothing.at(t[k])
+            d, e = curve.smoothing.at(t[k]) if middle is None or k != 2 else middle
             cdf[k], pdf[k] = curve.over.mean(d), curve.over.mean(e)
         for k in range(1, len(t), 2):
             cdf[k], pdf[k] = _between(t[k - 1 : k + 2], cdf[k - 1 : k + 2 : 2], pdf[k - 1 : k + 2 : 2])

@@ -15,6 +15,7 @@ Array = NDArray[np.float64]
 _SHORTEST = 32
 """Probabilities tried for the shortest interval."""
 _STEPS = 8
+_SHORT_STEPS = 3
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -36,15 +37,49 @@ class Ends:
     """False where the search failed: the output is too unlike its linear model."""
 
 
-def solve(curve: Curve, shift: Array) -> Ends:
-    """All ends; the search starts ``shift`` (Pb, m) from those of the linear model."""
-    frame = curve.frame
-    alpha = 1.0 - frame.level
-    # Nodes need not be at these quantiles exactly.
-    nodes = np.stack([frame.law.quantile(1.0 - f * alpha, float(-ndtri(f * alpha)), 0.05) for f in FRACTIONS])
-    nodes = frame.u * nodes.reshape(len(FRACTIONS), *frame.u.shape)
-    left = Side.sampled(curve, frame.origin + shift - nodes)
-    right = Side.sampled(curve, frame.origin + shift + nodes[::-1])
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Start:
+    """Where a search begins: nodes (5, Pb, m) of both tails, and what trials say at the middle ones."""
+
+    curve: Curve
+    left: Array
+    right: Array
+    low: tuple[Array, Array]
+    high: tuple[Array, Array]
+
+    @classmethod
+    def of(cls, curve: Curve, shift: Array) -> Start:
+        """``shift`` (Pb, m) from the ends of the linear model."""
+        frame = curve.frame
+        alpha = 1.0 - frame.level
+        # Nodes need not be at these quantiles exactly.
+        nodes = np.stack(
+            [frame.law.quantile(1.0 - f * alpha, float(-ndtri(f * alpha)), 0.05) for f in FRACTIONS]
+        )
+        nodes = frame.u * nodes.reshape(len(FRACTIONS), *frame.u.shape)
+        left, right = frame.origin + shift - nodes, frame.origin + shift + nodes[::-1]
+        middle = FRACTIONS.index(0.5)
+        low, high = curve.smoothing.at(left[middle]), curve.smoothing.at(right[middle])
+        return cls(curve=curve, left=left, right=right, low=low, high=high)
+
+    def outlook(self) -> tuple[Array, Array, Array]:
+        """Numerical standard deviations of low and high before either is found, and their doubt (Pb, m)."""
+        sds, doubts = [], []
+        middle = FRACTIONS.index(0.5)
+        for t, (d, e) in ((self.left[middle], self.low), (self.right[middle], self.high)):
+            sd, doubt = self.curve.over.spread(d)
+            density = self.curve.frame.linear(t)[1] + self.curve.over.mean(e)
+            floor = 1e-3 * self.curve.frame.level * (1.0 - self.curve.frame.level) / self.curve.frame.u
+            sds.append(sd / np.maximum(density, floor))
+            doubts.append(doubt)
+        return sds[0], sds[1], np.maximum(*doubts)
+
+
+def solve(start: Start) -> Ends:
+    """All ends."""
+    curve, alpha = start.curve, 1.0 - start.curve.frame.level
+    left = Side.sampled(curve, start.left, start.low)
+    right = Side.sampled(curve, start.right, start.high)
     low = _end(curve, left, 0.5 * alpha)
     high = _end(curve, right, 1.0 - 0.5 * alpha)
     left, right = _followed(curve, left, right, low.t, high.t)
@@ -120,7 +155,7 @@ def _shortest(curve: Curve, left: Side, right: Side) -> tuple[Array, Array, Arra
     moving = np.ones(u.shape, dtype=np.bool_)
     below, above = curve.at(low), curve.at(high)
     sds = _Pair(f_low=below.pdf, f_high=above.pdf, rise=rise, fall=fall).spreads(curve, below, above)
-    for _ in range(_STEPS):
+    for _ in range(_SHORT_STEPS):
         system = _Pair(f_low=below.pdf, f_high=above.pdf, rise=rise, fall=fall)
         steps = system.moved(above.cdf - below.cdf - level, above.pdf - below.pdf)
         left_by, right_by = (np.where(moving, np.clip(step, -0.3 * u, 0.3 * u), 0.0) for step in steps)

@@ -23,7 +23,6 @@ Array = NDArray[np.float64]
 
 
 _ROOT = sqrt(2.0 * pi)
-_FLAT = 1e-300
 
 
 class Smoothing(Protocol):
@@ -62,12 +61,14 @@ class ShapeBase:
     def at(self, x: Array) -> tuple[Array, Array]:
         """Closed forms; *Source* JCGM 101:2008, 6.4.2-6.4.6."""
         half = half_width(self.shape, self.top)
-        z = np.clip(x / half, -1.0, 1.0)
         inside = np.abs(x) < half
+        if self.shape is Shape.RECTANGULAR:
+            return np.clip(0.5 + x * (0.5 / half), 0.0, 1.0), np.where(inside, 0.5 / half, 0.0)
+        z = np.clip(x / half, -1.0, 1.0)
         if self.shape is Shape.ARCSINE:
             density = 1.0 / (pi * half * np.sqrt(np.maximum(1.0 - z * z, 1e-12)))
             return 0.5 + np.arcsin(z) / pi, np.where(inside, density, 0.0)
-        beta = {Shape.RECTANGULAR: 1.0, Shape.TRIANGULAR: 0.0}.get(self.shape, self.top)
+        beta = self.top if self.shape is Shape.TRAPEZOIDAL else 0.0
         away = np.abs(z)
         flat = 2.0 * away / (1.0 + beta)
         slope = max(1.0 - beta, 1e-300)
@@ -181,39 +182,35 @@ class Line:
     def at(self, t: Array) -> tuple[Array, Array]:
         """See :class:`Smoothing`."""
         level = t[..., None]
-        near, far, opens_up, real = self._roots(level)
+        near, far, opens_up, root = self._roots(level)
         near_cdf, near_density = self.base.at(near)
         far_cdf, far_density = self.base.at(far)
         between = (self.eta > np.minimum(near, far)) & (self.eta <= np.maximum(near, far))
         mass = np.abs(near_cdf - far_cdf)
+        real = root > 0.0
         upper = np.where(real, np.where(opens_up, mass, 1.0 - mass), ~opens_up)
         inside = np.where(real, between == opens_up, ~opens_up)
         repair = (self.y <= level).astype(np.float64) - inside
-        steep = np.abs(self._slope(near)), np.abs(self._slope(far))
-        density = near_density / np.maximum(steep[0], _FLAT) + far_density / np.maximum(steep[1], _FLAT)
+        density = np.where(real, (near_density + far_density) / np.where(real, root, 1.0), 0.0)
         lower, lower_density = self.base.at((level - self.linear) / self.slope)
-        return upper - lower + repair, np.where(real, density, 0.0) - lower_density / self.slope
+        return upper - lower + repair, density - lower_density / self.slope
 
-    def _roots(self, level: Array) -> tuple[Array, Array, NDArray[np.bool_], NDArray[np.bool_]]:
-        """Roots of the parabola, the near one refined; whether y is below t between them; whether there are any."""
+    def _roots(self, level: Array) -> tuple[Array, Array, NDArray[np.bool_], Array]:
+        """Roots of the parabola, the near one refined; whether y is below t between them; the slope at either.
+
+        Where there are none the slope is 0.
+        """
         a, b, c = self.parabola
         rise = level - a
-        discriminant = b * b + 4.0 * c * rise
-        real = discriminant > 0.0
-        sum_ = b + np.copysign(np.sqrt(np.where(real, discriminant, 1.0)), b)
+        root = np.sqrt(np.maximum(b * b + 4.0 * c * rise, 0.0))
+        sum_ = b + np.copysign(np.where(root > 0.0, root, 1.0), b)
         near = 2.0 * rise / sum_
         flat = np.abs(c) < 1e-14 * np.abs(b)
         far = np.where(flat, -np.copysign(np.inf, c * sum_), -sum_ / np.where(flat, 1.0, 2.0 * c))
-        root = near
-        p = self.powers
-        for _ in range(3):
-            value = p[0] + root * (p[1] + root * (p[2] + root * (p[3] + root * p[4])))
-            slope = p[1] + root * (2.0 * p[2] + root * (3.0 * p[3] + root * (4.0 * p[4])))
-            root = root - (value - level) / np.where(slope == 0.0, np.inf, slope)
-        close = (np.abs(root) < self.inside) & (np.abs(root - near) < 0.5) & (np.abs(near) < self.inside)
-        return np.where(close, root, near), far, c >= 0.0, real
-
-    def _slope(self, eta: Array) -> Array:
-        """Slope of the parabola; at its far root possibly infinite."""
-        slope: Array = self.parabola[1] + 2.0 * self.parabola[2] * np.clip(eta, -1e3, 1e3)
-        return slope
+        p, fine = self.powers, near
+        for _ in range(2):
+            value = p[0] + fine * (p[1] + fine * (p[2] + fine * (p[3] + fine * p[4])))
+            slope = p[1] + fine * (2.0 * p[2] + fine * (3.0 * p[3] + fine * (4.0 * p[4])))
+            fine = fine - (value - level) / np.where(slope == 0.0, np.inf, slope)
+        close = (np.abs(fine) < self.inside) & (np.abs(fine - near) < 0.5) & (np.abs(near) < self.inside)
+        return np.where(close, fine, near), far, c >= 0.0, root
