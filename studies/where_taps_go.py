@@ -35,7 +35,7 @@ from tapband.nouns.plan import Forecast, Layout, Plan, Target
 from tapband.nouns.source import COMMON, INDEPENDENT
 from tapband.probability.linearised import propagate
 from tapband.questions.basis import basis_of
-from tapband.questions.layout import layout_choice
+from tapband.questions.layout import places
 from tapband.reduction import assemble
 
 Array = NDArray[np.float64]
@@ -84,16 +84,16 @@ def planned() -> Campaign:
 def find(draws: int = 400, angles: Sequence[float] = BETWEEN, iterations: int = 60) -> Found:
     """Places, and what they make of exact flows."""
     basis = basis_of(planned())
-    found = layout_choice(basis, iterations=iterations)
-    root, part = np.sqrt(REARMOST), np.linspace(-1.0, 1.0, TAPS)
+    s, _ = places(basis, iterations)
+    root, part = float(np.sqrt(REARMOST)), np.linspace(-1.0, 1.0, TAPS)
     tau = {
-        "found": tau_of(basis.assembled.contour, found.s),
+        "found": tau_of(basis.assembled.contour, s),
         "√x": root * part,
         "cosine": root * np.sin(0.5 * np.pi * part),
     }
     error, held = {}, {}
-    for name, places in tau.items():
-        parts = [_simulated(_section(*shape), places, angles, draws) for shape in OTHERS]
+    for name, row in tau.items():
+        parts = [_simulated(_section(*shape), row, angles, draws) for shape in OTHERS]
         error[name] = np.array([rms for rms, _ in parts])
         held[name] = np.mean([share for _, share in parts], axis=0)
     return Found(angles=tuple(angles), tau=tau, error=error, held=held)
@@ -132,9 +132,14 @@ def _simulated(
 
 def _displaced(section: KarmanTrefftz, taps: TapPlaces, shift: Array) -> Array:
     """θ of holes displaced along the contour (draws, n) [chords]; arc length falls where θ grows."""
-    theta = np.linspace(-section.beta, 2.0 * np.pi - section.beta, 4001)
-    s = section.arc_length(theta)
+    theta, s = _table(section)
     return np.interp(-(taps.s + shift), -s, theta)
+
+
+@lru_cache
+def _table(section: KarmanTrefftz) -> tuple[Array, Array]:
+    theta = np.linspace(-section.beta, 2.0 * np.pi - section.beta, 2001)
+    return theta, section.arc_length(theta)
 
 
 def conclude(found: Found) -> None:

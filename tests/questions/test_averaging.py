@@ -6,7 +6,7 @@ import numpy as np
 import pytest
 from scipy.special import ndtri
 
-from plans import forecast, planned, targets
+from plans import forecast, instruments, planned, targets
 from tapband import face
 from tapband.questions.averaging import averaging, mean_variance, repeats_needed
 from tapband.questions.basis import basis_of, expanded_of
@@ -58,11 +58,14 @@ def test_the_record_needed_lands_on_the_target() -> None:
 
 
 def test_averaging_is_left_out_without_a_fluctuation() -> None:
-    assert "averaging" not in face.size(planned()).tables
+    basis = basis_of(planned())
+    assert averaging(basis, np.ones(len(basis.demands.limit))) is None
 
 
 def test_averaging_table_gives_records_samples_and_repeats() -> None:
-    plan = face.size(planned(ahead=forecast(fluctuation=0.02, time_scale=0.05, record=10.0)))
+    plan = face.size(
+        planned(instruments()[3:4], ahead=forecast(fluctuation=0.02, time_scale=0.05, record=10.0))
+    )
     table = plan.tables["averaging"]
     assert table["effective_samples"].iloc[0] == pytest.approx(1.0 / mean_variance(10.0, 0.05))
     assert (table["u_mean"] < table["u_single"]).all()

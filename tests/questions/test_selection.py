@@ -20,6 +20,7 @@ from tapband.reduction import assemble
 
 # Ratios and costs agree to the rounding of sums of squares; the search calls two within 1e-7 the same.
 SAME = 1e-6
+FEW = [one for one in instruments() if one.name in ("module zero", "port zero", "angle setting")]
 
 
 def random_catalogue(seed: int, slots: int = 0, options: int = 0, demands: int = 0) -> Catalogue:
@@ -143,7 +144,7 @@ def test_cheapest_by_the_headline_interval_among_all_choices_of_a_campaign() -> 
 
 def test_an_option_whose_full_scale_the_readings_pass_is_not_eligible() -> None:
     slot = scanner_slot(costs=(9000.0, 6000.0, 2500.0, 1.0))
-    plan = face.size(planned(slots=(slot, angle_slot())))
+    plan = face.size(planned(FEW, slots=(slot, angle_slot())))
     options = plan.tables["options"].set_index("option")
     assert options.loc["1500 Pa", "eligible"] == "no"
     assert "past the full scale of 1500 Pa" in options.loc["1500 Pa", "reason"]
@@ -152,7 +153,7 @@ def test_an_option_whose_full_scale_the_readings_pass_is_not_eligible() -> None:
 
 
 def test_infeasible_targets_say_the_smallest_ratio_and_what_binds() -> None:
-    plan = face.size(planned(slots=(scanner_slot(), angle_slot()), wanted=targets(cl=0.002)))
+    plan = face.size(planned(FEW, slots=(scanner_slot(), angle_slot()), wanted=targets(cl=0.002)))
     assert plan.exit_status == 1
     assert plan.tables["selection"].empty
     said = "\n".join(plan.notes)
@@ -165,7 +166,7 @@ def test_infeasible_targets_say_the_smallest_ratio_and_what_binds() -> None:
 def test_a_slot_without_an_eligible_option_is_named() -> None:
     slot = scanner_slot()
     only = replace(slot, options=slot.options[-1:])
-    plan = face.size(planned(slots=(only,)))
+    plan = face.size(planned(FEW, slots=(only,)))
     assert plan.exit_status == 1
     assert any('no option of slot "scanner" holds the readings' in note for note in plan.notes)
 
@@ -180,9 +181,3 @@ def test_few_degrees_of_freedom_count_against_an_option() -> None:
     found = Search(catalogue=catalogue).cheapest()
     assert found is not None
     assert found.chosen == (1,)
-
-
-def test_no_slots_need_no_selection() -> None:
-    plan = face.size(planned(instruments()))
-    assert "selection" not in plan.tables
-    assert plan.exit_status == 0

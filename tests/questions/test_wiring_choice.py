@@ -77,10 +77,9 @@ def test_found_wiring_is_the_best_of_those_shown_and_fits_its_ports() -> None:
     assert by_name["interleaved"] < 0.2 * by_name["blocks"]
 
 
-@pytest.mark.parametrize("taps", [7, 9])
-def test_found_wiring_of_two_modules_is_within_a_fiftieth_of_the_best_there_is(taps: int) -> None:
+def test_found_wiring_of_two_modules_is_within_a_fiftieth_of_the_best_there_is() -> None:
     # Steps of one exchange may end short of the optimum; 2 % is this test's own choice.
-    half = taps // 2 + 1
+    taps, half = 9, 5
     basis = basis_of(wired(taps, 2, half))
     choice = wiring_choice(basis)
     best = np.inf
@@ -116,7 +115,7 @@ def test_without_a_shared_source_every_wiring_is_alike() -> None:
 
 
 def test_wiring_table_names_every_tap_and_only_modules_there_are() -> None:
-    plan = face.size(planned(wiring=Wiring(modules=3, ports=16)))
+    plan = face.size(planned(zeros(), wiring=Wiring(modules=3, ports=16)))
     table = plan.tables["wiring"]
     assert table.columns.tolist() == ["tap", "module"]
     assert table["tap"].tolist() == list(plan.campaign.taps.names)

@@ -66,26 +66,32 @@ class LayoutChoice:
 
 
 def layout_choice(
-    basis: Basis, progress: Progress | None = None, iterations: int = ITERATIONS
+    basis: Basis, progress: Progress | None = None, iterations: int | None = None
 ) -> LayoutChoice:
-    """The layout that the campaign asks for."""
-    wanted = require_layout(basis)
+    """The layout that the campaign asks for, and what others and other numbers of taps would do."""
+    steps = ITERATIONS if iterations is None else iterations
+    s, judge = places(basis, steps, progress)
+    wanted, contour, end = require_layout(basis), basis.assembled.contour, _end(basis)
+    live = basis.assembled.nominal.live.any(axis=0)
+    plain = ((name, arc_length(contour, row(wanted.taps, end))) for name, row in PLAIN.items())
+    layouts = [("found", s), *plain]
+    layouts += _ladder(judge, wanted, end, tau_of(contour, s), steps // LADDER_SHARE)
+    layouts.append(("present", np.sort(basis.assembled.s[live])))
+    x, y = contour.point(s)
+    names = tap_names(s, _fixed(basis))
+    return LayoutChoice(s=s, names=names, x=x, y=y, judged=_judged(basis, judge, layouts))
+
+
+def places(basis: Basis, iterations: int, progress: Progress | None = None) -> tuple[Array, Judge]:
+    """Rising arc lengths (n,) [chords] of the layout asked for, and what judged it."""
+    wanted, end = require_layout(basis), _end(basis)
     limit, alpha = _limits(basis)
-    flows = _flows(basis, alpha)
-    end = _end(basis, wanted)
-    plain = {name: row(wanted.taps, end) for name, row in PLAIN.items()}
-    judge = Judge.of(flows, tap_errors(basis), limit, list(plain.values()))
+    references = [row(wanted.taps, end) for row in PLAIN.values()]
+    judge = Judge.of(_flows(basis, alpha), tap_errors(basis), limit, references)
     frame, start = _framed(basis, wanted, end, judge, iterations)
     tau = searched(judge, frame, start, wanted.smallest_spacing, iterations, progress)
     contour = basis.assembled.contour
-    s = apart(contour, arc_length(contour, tau), frame.at, wanted.smallest_spacing)
-    x, y = contour.point(s)
-    live = basis.assembled.nominal.live.any(axis=0)
-    layouts = [("found", s), *((name, arc_length(contour, row)) for name, row in plain.items())]
-    layouts += _ladder(judge, wanted, end, tau_of(contour, s), iterations // LADDER_SHARE)
-    layouts.append(("present", np.sort(basis.assembled.s[live])))
-    names = tap_names(s, _fixed(basis, wanted))
-    return LayoutChoice(s=s, names=names, x=x, y=y, judged=_judged(basis, judge, layouts))
+    return apart(contour, arc_length(contour, tau), frame.at, wanted.smallest_spacing), judge
 
 
 def require_layout(basis: Basis) -> Layout:
@@ -181,22 +187,21 @@ def _flows(basis: Basis, alpha: Array) -> list[TapFlow]:
     ]
 
 
-def _fixed(basis: Basis, wanted: Layout) -> list[tuple[str, float]]:
-    names = basis.campaign.taps.names
+def _fixed(basis: Basis) -> list[tuple[str, float]]:
+    """Fixed taps: name and arc length [chords]."""
+    wanted, names = require_layout(basis), basis.campaign.taps.names
     return [(name, float(basis.assembled.s[names.index(name)])) for name in wanted.fixed]
 
 
-def _end(basis: Basis, wanted: Layout) -> tuple[float, float]:
+def _end(basis: Basis) -> tuple[float, float]:
     """τ of the rear taps of the lower and upper surface; a fixed tap further aft takes the place."""
-    contour = basis.assembled.contour
+    contour, wanted = basis.assembled.contour, require_layout(basis)
     found = []
     for sign in (-1.0, 1.0):
         far = contour.s_upper if sign > 0.0 else contour.s_lower
         nose, edge = float(contour.x_of(0.0)), float(contour.x_of(far))
         share = min(1.0, (wanted.rearmost - nose) / (edge - nose))
-        taken = [
-            abs(float(tau_of(contour, np.array([s]))[0])) for _, s in _fixed(basis, wanted) if s * sign > 0.0
-        ]
+        taken = [abs(float(tau_of(contour, np.array([s]))[0])) for _, s in _fixed(basis) if s * sign > 0.0]
         found.append(sign * max([float(np.sqrt(share)), *taken]))
     return found[0], found[1]
 
@@ -206,7 +211,7 @@ def _framed(
 ) -> tuple[Frame, Array]:
     """What may not move, and a start; how many taps go on either side of fixed ones is tried out."""
     contour = basis.assembled.contour
-    places = sorted({float(tau_of(contour, np.array([s]))[0]) for _, s in _fixed(basis, wanted)} - set(end))
+    places = sorted({float(tau_of(contour, np.array([s]))[0]) for _, s in _fixed(basis)} - set(end))
     inner = [p for p in places if end[0] < p < end[1]]
     anchor = np.array([end[0], *inner, end[1]])
     start = root_spaced(wanted.taps, end)
