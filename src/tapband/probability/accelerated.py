@@ -29,7 +29,7 @@ from tapband.probability.strategy import Choice, choices
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
 
-POINTS = 32
+POINTS = 64
 """Most points done together."""
 
 

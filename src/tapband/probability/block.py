@@ -19,7 +19,7 @@ from tapband.probability.line_trials import line
 from tapband.probability.model import Model
 from tapband.probability.outcome import NAMES
 from tapband.probability.plain import Plan
-from tapband.probability.probes import probe, shape_error
+from tapband.probability.probes import probe, shape_error, shape_weight
 from tapband.probability.smoothing import TableBase
 from tapband.probability.strategy import Choice, Direction, direction, fallback
 from tapband.probability.trials import Tiles, Trials, integrated
@@ -156,10 +156,13 @@ def _checked(model: Model, points: range, own: list[Choice], plan: Plan) -> list
     if own[0].normal or not own[0].out:
         return own
     where = slice(points.start, points.stop)
-    error = shape_error(model, points, own[0].out, Tiles(seed=plan.seed, size=FINE, count=FINE))
     rows = np.array([choice.integrated for choice in own], dtype=np.bool_)
     # A twentieth of δ is a tenth of the numerical error that is tolerated.
-    good: Mask = ~rows | (error * model.u[where] < 0.05 * tolerance(model.u[where]))
+    room = np.where(rows, 0.05 * tolerance(model.u[where]) / np.where(rows, model.u[where], 1.0), np.inf)
+    good: Mask = shape_weight(model, points, own[0].out) < room
+    if not good.all():
+        error = shape_error(model, points, own[0].out, Tiles(seed=plan.seed, size=FINE, count=FINE))
+        good = good | (error < room)
     return [
         choice if fine.all() else fallback(model, point)
         for point, choice, fine in zip(points, own, good, strict=True)

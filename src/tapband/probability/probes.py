@@ -53,6 +53,22 @@ def probe(model: Model, points: range) -> tuple[Array, Array]:
     return np.abs(left).max(axis=1), rough
 
 
+_EDGEWORTH = 0.3
+"""An end z moves by κ4 (z³ − 3z)/24 (first Edgeworth term); this covers levels up to 0.999."""
+
+
+def shape_weight(model: Model, points: range, out: tuple[int, ...]) -> Array:
+    """How far (Pb, m) the shape of the law of ``out`` moves an end at all, in units of u."""
+    where = slice(points.start, points.stop)
+    unit = np.where(model.live[where], model.u[where], np.inf)
+    fourth = np.zeros(unit.shape)
+    for f in out:
+        square = model.sensitivity[f][where] ** 2
+        fourth += abs(_fourth(model, f)) * (square * square).sum(axis=-1)
+    weight: Array = _EDGEWORTH * fourth / unit**4
+    return weight
+
+
 def shape_error(model: Model, points: range, out: tuple[int, ...], tiles: Tiles, trials: int = 2) -> Array:
     """How far (Pb, m) the law of ``out`` may be from scaling as a whole, as a shift of an end in units of u.
 
@@ -75,8 +91,7 @@ def shape_error(model: Model, points: range, out: tuple[int, ...], tiles: Tiles,
     ratio = variance / np.where(live & (nominal > 0.0), nominal, 1.0)[:, None]
     there, here = (weight * slopes**4).sum(axis=-1), (weight * still**4).sum(axis=-1)[:, None] * ratio**2
     unit = np.where(live, model.u[where], np.inf)
-    # Edgeworth: an end z moves by κ4 (z³ − 3z)/24; 0.3 covers levels up to 0.999.
-    error: Array = 0.3 * np.abs(there - here).mean(axis=1) / unit**4
+    error: Array = _EDGEWORTH * np.abs(there - here).mean(axis=1) / unit**4
     return error
 
 
