@@ -118,6 +118,16 @@ class Results(Plots):
         return self._table("decisions")
 
     @property
+    def targets(self) -> pd.DataFrame:
+        """One row a target and point that it names: half-width, target, and whether it is met."""
+        return self._table("targets")
+
+    @property
+    def planned(self) -> pd.DataFrame:
+        """One row a point and coefficient: the forecast's expanded uncertainty and the one achieved."""
+        return self._table("planned")
+
+    @property
     def warnings(self) -> tuple[str, ...]:
         """Everything the reader should know before quoting a number."""
         return tuple(self.meta.get("warnings", ()))

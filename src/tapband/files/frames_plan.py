@@ -8,6 +8,7 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
+from tapband.nouns.campaign import COEFFICIENT
 from tapband.nouns.errors import QuestionError
 from tapband.questions.averaging import Averaging
 from tapband.questions.choice import FrontierSet
@@ -121,7 +122,7 @@ def allowance_table(sized: Sized) -> pd.DataFrame:
     def binding(values: Sequence[str], index: NDArray[np.int64]) -> list[str]:
         return ["" if a.demand is None else values[index[a.demand]] for a in allowed]
 
-    return pd.DataFrame(
+    table = pd.DataFrame(
         {
             "source": [a.source for a in allowed],
             "declared": declared,
@@ -139,6 +140,8 @@ def allowance_table(sized: Sized) -> pd.DataFrame:
             "reason": [a.reason for a in allowed],
         }
     )
+    table.attrs["units"] = {"equal_contribution": "by row", "least_cost": "by row"}
+    return table
 
 
 def selection_table(sized: Sized) -> pd.DataFrame:
@@ -205,7 +208,7 @@ def range_table(sized: Sized) -> pd.DataFrame:
     seen = sized.ranges
     used = np.flatnonzero(np.isfinite(seen.lowest))
     past = seen.utilisation[used] > 1.0
-    return pd.DataFrame(
+    table = pd.DataFrame(
         {
             "tap": [seen.names[i] for i in used],
             "lowest": seen.lowest[used],
@@ -219,6 +222,10 @@ def range_table(sized: Sized) -> pd.DataFrame:
             ),
         }
     )
+    unit = "1" if sized.basis.campaign.pressures == COEFFICIENT else "Pa"
+    ends = ("lowest", "highest", "expected_lowest", "expected_highest")
+    table.attrs["units"] = dict.fromkeys(ends, unit)
+    return table
 
 
 def wiring_tables(sized: Sized, choice: WiringChoice) -> tuple[pd.DataFrame, pd.DataFrame]:

@@ -49,10 +49,10 @@ def _headline(sized: Sized) -> str:
     missed = int(np.sum(~sized.met))
     ratio = sized.declared.headline / sized.basis.demands.limit
     worst = int(np.argmax(np.where(np.isfinite(ratio), ratio, np.inf)))
-    where = f"the nearest is {place(sized, worst)} with U {ratio[worst]:.4g} times its target"
+    where = f"{place(sized, worst)} with U {ratio[worst]:.4g} times its target"
     if not missed:
-        return f"As declared, every target is met; {where}."
-    return f"As declared, {missed} of {ratio.size} intervals are wider than their targets; {where}."
+        return f"As declared, every target is met; the nearest is {where}."
+    return f"As declared, targets are missed by {missed} of {ratio.size} intervals; the widest is {where}."
 
 
 def _selection(sized: Sized) -> list[str]:

@@ -65,6 +65,13 @@ class Plan:
         """The remarks, one a line."""
         return "\n".join([f"tapband plan: {self.meta.get('title', '')}", *self.notes])
 
+    def _repr_html_(self) -> str:
+        from markupsafe import escape
+
+        said = "".join(f"<li>{escape(note)}</li>" for note in self.notes)
+        table = self.tables["allowances"].to_html(index=False, escape=True)
+        return f"<p>{escape(str(self.meta.get('title', '')))}</p><ul>{said}</ul>{table}"
+
 
 def plan_of(sized: Sized, meta: Mapping[str, Any]) -> Plan:
     """The plan of what was sized; ``meta`` is completed with what it says."""
@@ -80,8 +87,3 @@ def plan_of(sized: Sized, meta: Mapping[str, Any]) -> Plan:
         campaign=sized.basis.campaign,
         sized=sized,
     )
-
-
-def missed(met: NDArray[np.bool_]) -> int:
-    """1 where a target is not met, else 0."""
-    return int(not bool(np.all(met)))
