@@ -7,15 +7,15 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
-import numpy as np
 from numpy.typing import NDArray
 
 from tapband.nouns.campaign import Campaign
 from tapband.nouns.errors import QuestionError
-from tapband.questions.sizing import Sized
 
 if TYPE_CHECKING:
     import pandas as pd
+
+    from tapband.questions.sizing import Sized
 
 
 @dataclass(frozen=True, kw_only=True, eq=False)
