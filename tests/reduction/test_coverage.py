@@ -19,7 +19,8 @@ def test_95_percent_intervals_hold_the_truth_with_41_taps_and_automatic_terms() 
 
 
 def test_automatic_terms_alone_hold_the_truth_of_exact_flows() -> None:
-    """100 flows without declared errors (the study: 350): 90 % of cl and cm, 85 % of pressure drag, U under 4 rms errors."""
+    """100 flows without declared errors (the study has more): 90 % of cl and cm, 85 % of pressure drag, and U
+    under four rms errors."""
     held, ratio = automatic_alone(taps=(25, 43))
     assert held["cl"] >= 0.90
     assert held["cm"] >= 0.90

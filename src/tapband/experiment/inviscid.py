@@ -14,8 +14,8 @@ thick as the base. The base bears the pressure of the ends, which pushes it forw
 h the pressure drag is −h Cp of the ends and not zero.
 
 *Source* the panel integrals follow from ∫ln r ds and ∫s ln r ds; Kuethe and Chow, *Foundations of
-Aerodynamics*, chapter 5, for linear vortex panels; Drela, Lecture Notes in Engineering 54 (1989), for the
-stream-function form and the base panel (both from memory).
+Aerodynamics*, chapter 5, for linear vortex panels; the stream-function form and the base panel are common
+practice (from memory).
 """
 
 from __future__ import annotations
