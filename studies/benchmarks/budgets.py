@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import sys
 from collections.abc import Sequence
+from dataclasses import replace
 from pathlib import Path
 
 import numpy as np
@@ -13,7 +14,7 @@ sys.path.insert(0, str(Path(__file__).parents[2] / "tests"))
 from campaigns import TWELVE, campaign, size, source
 from exact_sections import TapPlaces
 from tapband.nouns.campaign import Campaign
-from tapband.nouns.source import COMMON, INDEPENDENT, Scale, Shape, Source
+from tapband.nouns.source import COMMON, INDEPENDENT, Scale, Shape, Size, Source
 
 RECT = Shape.RECTANGULAR
 
@@ -48,6 +49,16 @@ def curved() -> tuple[Source, ...]:
         source("dynamic", "dynamic pressure", size(300.0, RECT), COMMON),
         source("angle", "angle", size(np.radians(0.3), RECT), COMMON),
     )
+
+
+def times(sources: Sequence[Source], factor: float) -> tuple[Source, ...]:
+    """All sizes times a factor."""
+    return tuple(replace(one, size=_times(one.size, factor)) for one in sources)
+
+
+def _times(whole: Size, factor: float) -> Size:
+    terms = (replace(term, lower=factor * term.lower, upper=factor * term.upper) for term in whole.terms)
+    return replace(whole, terms=tuple(terms))
 
 
 def polar(

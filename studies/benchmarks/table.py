@@ -37,7 +37,7 @@ def _trials() -> Iterator[Row]:
     for trials, said in ((1_000_000, "10⁶"), (10_000_000, "10⁷")):
         yield f"peak memory of {said} plain trials", f"{plain_trials.peak(trials):.0f} MB", "< 300 MB"
     for name, sources in accelerated.BUDGETS.items():
-        found = accelerated.compare(sources())
+        found = accelerated.compare(sources)
         what = f"accelerated over plain trials to the JCGM 101 tolerance, {name} budget"
         yield (
             what,

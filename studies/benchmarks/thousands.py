@@ -9,11 +9,11 @@ from __future__ import annotations
 
 import sys
 import tempfile
-from collections.abc import Callable, Sequence
-from dataclasses import dataclass
+from collections.abc import Callable
+from dataclasses import dataclass, replace
 from pathlib import Path
 
-from budgets import normal, polar
+from budgets import normal, polar, times
 from timing import Ran, exponent, program, python, seconds
 from written import write
 
@@ -63,17 +63,20 @@ def computation(points: int, threads: int = 2) -> Ran:
     )
 
 
-def growth(factor: int = 8, rounds: int = 3) -> dict[str, float]:
-    """Growth exponents over ``factor`` times as many points, taps, sources and plain trials."""
+def growth(factor: int = 8, rounds: int = 3, points: int = 64) -> dict[str, float]:
+    """Growth exponents over ``factor`` times as many points, taps, sources and plain trials.
+
+    With taps and sources the number of trials is held: how many are needed depends on what the errors are.
+    """
     one = assemble(polar(1)).problem
 
     def trials(n: int) -> Callable[[], object]:
         return lambda: run(one, 0.95, f"plain:{10_000 * n}", threads=1)
 
     works: dict[str, Callable[[int], Callable[[], object]]] = {
-        "points": lambda n: lambda: reduce_campaign(polar(64 * n), threads=1),
-        "taps": lambda n: lambda: reduce_campaign(polar(64, 30 * n), threads=1),
-        "sources": lambda n: lambda: reduce_campaign(polar(64, sources=many(4 * n)), threads=1),
+        "points": lambda n: lambda: reduce_campaign(polar(points * n), threads=1),
+        "taps": lambda n: lambda: reduce_campaign(polar(points, 30 * n), "256", threads=1),
+        "sources": lambda n: lambda: reduce_campaign(polar(points, sources=many(4 * n)), "256", threads=1),
         "trials": trials,
     }
     found = {}
@@ -88,16 +91,11 @@ def growth(factor: int = 8, rounds: int = 3) -> dict[str, float]:
     return found
 
 
-def many(count: int) -> Sequence[Source]:
-    """The budget cut into ``count`` sources, independent across taps in turn."""
+def many(count: int) -> tuple[Source, ...]:
+    """``count`` sources, independent across taps, that make the same budget whatever their number."""
     kinds = [source for source in normal() if source.across_taps == INDEPENDENT]
-    return [_named(kinds[i % len(kinds)], f"source {i}") for i in range(count)]
-
-
-def _named(source: Source, name: str) -> Source:
-    from dataclasses import replace
-
-    return replace(source, name=name, group=name)
+    parts = times([kinds[i % len(kinds)] for i in range(count)], (2.0 / count) ** 0.5)
+    return tuple(replace(one, name=f"source {i}", group=f"source {i}") for i, one in enumerate(parts))
 
 
 def main() -> None:

@@ -7,10 +7,10 @@ the ratios of neighbouring runs, so that what disturbs both disturbs neither. On
 from __future__ import annotations
 
 import os
-import resource
 import statistics
 import subprocess
 import sys
+import tempfile
 import time
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
@@ -62,22 +62,29 @@ def interleaved(
 def program(arguments: Sequence[str], *, one_thread: bool = True, ok: Sequence[int] = (0,)) -> Ran:
     """Run a program to its end, alone."""
     environment = {**os.environ, **(ONE_THREAD if one_thread else {})}
-    start = time.perf_counter()
-    process = subprocess.Popen(
-        list(arguments), env=environment, stdout=subprocess.PIPE, stderr=subprocess.PIPE, text=True
-    )
-    assert process.stdout is not None
-    assert process.stderr is not None
-    output, said = process.stdout.read(), process.stderr.read()
-    _, status, used = os.wait4(process.pid, 0)
-    process.returncode = os.waitstatus_to_exitcode(status)
-    assert process.returncode in ok, said
-    return Ran(
-        processor=used.ru_utime + used.ru_stime,
-        wall=time.perf_counter() - start,
-        peak=used.ru_maxrss / 1024.0,
-        output=output,
-    )
+    start, peak = time.perf_counter(), 0.0
+    with tempfile.TemporaryFile() as out, tempfile.TemporaryFile() as said:
+        process = subprocess.Popen(list(arguments), env=environment, stdout=out, stderr=said)
+        while (ended := os.wait4(process.pid, os.WNOHANG))[0] == 0:
+            peak = max(peak, _peak_of(process.pid))
+            time.sleep(0.005)
+        wall = time.perf_counter() - start
+        process.returncode = os.waitstatus_to_exitcode(ended[1])
+        out.seek(0)
+        said.seek(0)
+        assert process.returncode in ok, said.read().decode()
+        output = out.read().decode()
+    return Ran(processor=ended[2].ru_utime + ended[2].ru_stime, wall=wall, peak=peak, output=output)
+
+
+def _peak_of(pid: int) -> float:
+    """Peak memory of a running program [MB]; what wait4 tells would count the memory of this one too."""
+    try:
+        status = Path(f"/proc/{pid}/status").read_text()
+    except (FileNotFoundError, ProcessLookupError):
+        return 0.0
+    lines = (line.split() for line in status.splitlines())
+    return max((float(words[1]) / 1024.0 for words in lines if words and words[0] == "VmHWM:"), default=0.0)
 
 
 def python(code: str, *, one_thread: bool = True) -> Ran:
@@ -85,11 +92,6 @@ def python(code: str, *, one_thread: bool = True) -> Ran:
     paths = [str(TESTS), str(Path(__file__).parent)]
     head = f"import sys; sys.path[:0] = {paths!r}\n"
     return program([sys.executable, "-c", head + code], one_thread=one_thread)
-
-
-def peak_here() -> float:
-    """Peak memory of this process so far [MB]."""
-    return resource.getrusage(resource.RUSAGE_SELF).ru_maxrss / 1024.0
 
 
 def exponent(sizes: Sequence[float], times: Sequence[float]) -> float:
