@@ -16,6 +16,8 @@ from tapband.reduction.response import Response
 
 Array = NDArray[np.float64]
 Indices = NDArray[np.int64]
+CACHED = 65_536
+"""Numbers of one array over points, trials and taps that are worked on at once: 0.5 MB, several of them in cache."""
 OPTIONAL = tuple(f.name for f in fields(Inputs) if f.name not in ("reading", "alpha", "channels"))
 
 
@@ -76,7 +78,7 @@ class CampaignProblem:
         """y (Pb, T, m) of a block of points; see :class:`Problem`."""
         trials = max(d.shape[1] for d in draws.values())
         y = np.empty((len(range(*points.indices(len(self.alpha)))), trials, len(self.outputs)))
-        for equation, rows, where in self._blocks(points):
+        for equation, rows, where in self._blocks(points, trials):
             with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
                 y[where] = evaluate(equation, self._inputs(rows, where, draws))
         return y
@@ -87,7 +89,7 @@ class CampaignProblem:
         size = len(range(*points.indices(len(self.alpha))))
         y = np.empty((size, trials, len(self.outputs)))
         variance = {f: np.empty((size, trials, len(self.outputs))) for f in out}
-        for equation, rows, where in self._blocks(points):
+        for equation, rows, where in self._blocks(points, trials):
             inputs = self._inputs(rows, where, draws)
             with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
                 y[where] = evaluate(equation, inputs)
@@ -102,13 +104,14 @@ class CampaignProblem:
         equation = next(s.equation for s in self.sets if point in s.points)
         return equation, self._inputs(rows, np.array([0]), {})
 
-    def _blocks(self, points: slice) -> Iterator[tuple[Equation, Indices, Indices]]:
-        """Equation, point indices, and their places in the block, a live set at a time."""
+    def _blocks(self, points: slice, trials: int) -> Iterator[tuple[Equation, Indices, Indices]]:
+        """Equation, point indices, and their places in the block, a few points of a live set at a time."""
         start, stop, _ = points.indices(len(self.alpha))
+        few = max(1, CACHED // (trials * self.reading.shape[1]))
         for one in self.sets:
             low, high = np.searchsorted(one.points, [start, stop])
-            if high > low:
-                rows = one.points[low:high]
+            for first in range(low, high, few):
+                rows = one.points[first : min(first + few, high)]
                 yield one.equation, rows, rows - start
 
     def _inputs(self, rows: Indices, where: Indices, draws: Draws) -> Inputs:
