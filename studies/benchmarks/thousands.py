@@ -52,12 +52,12 @@ def command(points: int, taps: int = 60) -> Command:
     return Command(command=ran, imports=imports)
 
 
-def computation(points: int, threads: int = 2) -> Ran:
+def computation(points: int) -> Ran:
     """Both propagators of so many points, in a program of its own."""
     return python(
         "from budgets import polar\n"
         "from tapband.reduction import reduce_campaign\n"
-        f"reduced = reduce_campaign(polar({points}), threads={threads})\n"
+        f"reduced = reduce_campaign(polar({points}))\n"
         "assert reduced.montecarlo.reached.all()\n",
         one_thread=False,
     )

@@ -17,6 +17,7 @@ from tapband.probability.linearised import Linearised, coverage_factor, propagat
 from tapband.probability.montecarlo import MonteCarlo, run
 from tapband.reduction.assemble import Assembled, assemble
 from tapband.reduction.cluster import run_on
+from tapband.reduction.processes import run_apart, workers_for
 
 if TYPE_CHECKING:
     from distributed import Client
@@ -82,7 +83,10 @@ def reduce_campaign(
     threads: int | None = None,
     client: Client | None = None,
 ) -> Reduced:
-    """The main job: every coefficient of every point, by both propagators."""
+    """The main job: every coefficient of every point, by both propagators.
+
+    ``threads`` None: as many as there are processors, and processes where the points are many. Neither changes a row.
+    """
     intervals = campaign.intervals
     intervals = replace(
         intervals,
@@ -93,10 +97,13 @@ def reduce_campaign(
     assembled = assemble(campaign)
     linear = propagate(assembled.problem, intervals.level)
     problem, plan = assembled.problem, (intervals.level, intervals.trials, intervals.seed)
-    if client is None:
-        drawn = run(problem, *plan, threads=threads, progress=progress)
-    else:
+    workers = workers_for(len(problem.alpha)) if threads is None else 0
+    if client is not None:
         drawn = run_on(client, problem, *plan, progress=progress)
+    elif workers:
+        drawn = run_apart(problem, plan, workers, progress)
+    else:
+        drawn = run(problem, *plan, threads=threads, progress=progress)
     return finish(campaign, assembled, linear, drawn)
 
 
